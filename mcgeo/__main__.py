@@ -1,0 +1,5 @@
+"""``python -m mcgeo``."""
+
+from mcgeo.cli import main
+
+raise SystemExit(main())

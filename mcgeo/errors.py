@@ -1,0 +1,29 @@
+"""The family of errors a user may meet; each message says what to do next."""
+
+
+class McgeoError(Exception):
+    """Base of all errors meant for the user; ``exit_code`` is what the command line returns."""
+
+    exit_code = 2
+
+
+class ConfigError(McgeoError):
+    """One or more faults of a configuration, each a line ``file:line:column: key: what is wrong, what is allowed``.
+
+    Parameters
+    ----------
+    faults : list of str
+        One complete line per fault, in the order of the file.
+    """
+
+    def __init__(self, faults: list[str]) -> None:
+        super().__init__("\n".join(faults))
+        self.faults = faults
+
+
+class GeometryError(McgeoError):
+    """A cell, metric or geometry outside the range that works; the message names the range."""
+
+
+class StorageError(McgeoError):
+    """A result file that cannot be read, written, or that belongs to another configuration."""
