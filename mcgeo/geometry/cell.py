@@ -161,3 +161,14 @@ class Cell:
         images = folded[..., None, :] + shifts
         nearest = np.argmin(np.sum(images**2, axis=-1), axis=-1)
         return np.asarray(np.take_along_axis(images, nearest[..., None, None], axis=-2)[..., 0, :])
+
+
+def lattice_points(vectors: NDArray[np.float64], largest: float) -> NDArray[np.float64]:
+    """All non-zero points, up to the length ``largest``, of the lattice spanned by the rows of ``vectors``."""
+    area = abs(np.linalg.det(vectors))
+    # The distance between lattice lines spanned by one vector is the area over its length.
+    reach = [math.ceil(largest * np.hypot(*vectors[1 - k]) / area) for k in (0, 1)]
+    n1, n2 = np.meshgrid(np.arange(-reach[0], reach[0] + 1), np.arange(-reach[1], reach[1] + 1))
+    integers = np.stack([n1.ravel(), n2.ravel()], axis=1)
+    points = integers[np.any(integers != 0, axis=1)] @ vectors
+    return np.asarray(points[np.sum(points**2, axis=-1) <= largest**2])

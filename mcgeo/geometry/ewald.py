@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import erfc
 
-from mcgeo.geometry.cell import Cell
+from mcgeo.geometry.cell import Cell, lattice_points
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 
 # erfc(6.2) is 2e-18: both sums are cut where their terms are below the rounding of the total.
@@ -21,14 +21,8 @@ _CUT = 6.2
 
 
 def _lattice_lengths(vectors: NDArray[np.float64], largest: float) -> NDArray[np.float64]:
-    """Lengths of all non-zero lattice vectors up to ``largest``; rows of ``vectors`` span a reduced lattice."""
-    area = abs(np.linalg.det(vectors))
-    # The distance between lattice lines spanned by one vector is the area over its length.
-    reach = [math.ceil(largest * np.hypot(*vectors[1 - k]) / area) for k in (0, 1)]
-    n1, n2 = np.meshgrid(np.arange(-reach[0], reach[0] + 1), np.arange(-reach[1], reach[1] + 1))
-    points = np.stack([n1.ravel(), n2.ravel()], axis=1) @ vectors
-    lengths = np.hypot(points[:, 0], points[:, 1])
-    return np.asarray(lengths[(lengths > 0.0) & (lengths <= largest)])
+    points = lattice_points(vectors, largest)
+    return np.asarray(np.hypot(points[:, 0], points[:, 1]))
 
 
 def madelung_self_energy(cell: Cell, dielectric_metric: UnimodularMetric = ISOTROPIC) -> float:
