@@ -10,8 +10,6 @@ from __future__ import annotations
 import math
 from typing import Any
 
-import numpy as np
-
 from mcgeo.kernels._jit import kernel
 from mcgeo.kernels.lanes import (
     bits_from_float,
@@ -125,7 +123,3 @@ def next_uniform(s0: Any, s1: Any, s2: Any, s3: Any) -> Any:
     uniform = float_from_integer(shift_right(result, 11)) * (1.0 / 9007199254740992.0)
     return uniform, s0, s1, s2, s3
 
-
-def generator_words(entropy: np.random.SeedSequence) -> np.ndarray:
-    """The four non-zero words that start one lane's generator, shape (4,), from a walker's seed sequence."""
-    return entropy.generate_state(4, dtype=np.uint64)

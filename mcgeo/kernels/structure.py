@@ -52,10 +52,35 @@ def wave_tables(waves: np.ndarray, tau_real: float) -> WaveTables:
     return WaveTables(offset, reach, plus, minus)
 
 
-def wave_workspace(tables: WaveTables, n_electrons: int) -> np.ndarray:
-    """Scratch of `add_structure_factor`: powers of exp(i pi b) and one row of exp(2 pi i (n1 a + c b))."""
+class WaveSums(NamedTuple):
+    """Accumulators of eight walkers.
+
+    Attributes
+    ----------
+    total : ndarray, shape (n_waves, 8)
+        Sum of |rho_q|^2.
+    scalar : ndarray, shape (1, 8)
+        Sum over the waves of ``weights`` |rho_q|^2.
+    weights : ndarray, shape (n_waves,)
+    work : ndarray
+        Scratch: powers of exp(i pi b) and one row of exp(2 pi i (n1 a + c b)).
+    """
+
+    total: np.ndarray
+    scalar: np.ndarray
+    weights: np.ndarray
+    work: np.ndarray
+
+
+def wave_sums(tables: WaveTables, weights: np.ndarray, n_electrons: int) -> WaveSums:
+    """Empty accumulators; ``weights`` of shape (n_waves,) belong to the scalar."""
     n_powers = 2 * int(tables.reach.max()) + 1
-    return np.empty(((n_powers + 1) * n_electrons * 2, LANES))
+    return WaveSums(
+        np.zeros((len(weights), LANES)),
+        np.zeros((1, LANES)),
+        np.ascontiguousarray(weights, dtype=float),
+        np.empty(((n_powers + 1) * n_electrons * 2, LANES)),
+    )
 
 
 @kernel
@@ -72,27 +97,27 @@ def _fill_powers(b: np.ndarray, n_powers: int, work: np.ndarray) -> None:
 
 
 @kernel
-def _add_square(target: np.ndarray, place: int, real: Any, imag: Any, weight: float) -> None:
+def _add_square(waves: Any, place: int, real: Any, imag: Any) -> None:
     if place >= 0:
-        store(target, place, load(target, place) + (real * real + imag * imag) * weight)
+        square = real * real + imag * imag
+        store(waves.total, place, load(waves.total, place) + square)
+        store(waves.scalar, 0, load(waves.scalar, 0) + square * waves.weights[place])
 
 
 @kernel
-def add_structure_factor(
-    tables: Any, a: np.ndarray, b: np.ndarray, work: np.ndarray, total: np.ndarray, weight: float
-) -> None:
-    """Add ``weight`` |rho_q|^2 of the present configuration to ``total``.
+def add_structure_factor(tables: Any, a: np.ndarray, b: np.ndarray, waves: Any) -> None:
+    """Add |rho_q|^2 of the present configuration to ``waves.total``, and its weighted sum to ``waves.scalar``.
 
     Parameters
     ----------
+    tables : WaveTables
     a, b : ndarray, shape (n_electrons, 8)
         Positions in units of the cell's vectors.
-    work : ndarray
-        From `wave_workspace`.
-    total : ndarray, shape (n_waves, 8)
+    waves : WaveSums
         Updated.
     """
     n = a.shape[0]
+    work = waves.work
     n_powers = work.shape[0] // (2 * n) - 1
     row = 2 * n_powers * n
     _fill_powers(b, n_powers, work)
@@ -114,8 +139,8 @@ def add_structure_factor(
                 cc, ss, cs, sc = cc + c * x, ss + s * y, cs + c * y, sc + s * x
                 x, y = load(work, second + 2 * j), load(work, second + 2 * j + 1)
                 dd, tt, dt, td = dd + c * x, tt + s * y, dt + c * y, td + s * x
-            _add_square(total, tables.plus[n1, k], cc - ss, sc + cs, weight)
-            _add_square(total, tables.minus[n1, k], cc + ss, sc - cs, weight)
+            _add_square(waves, tables.plus[n1, k], cc - ss, sc + cs)
+            _add_square(waves, tables.minus[n1, k], cc + ss, sc - cs)
             if k + 1 < tables.reach[n1]:
-                _add_square(total, tables.plus[n1, k + 1], dd - tt, td + dt, weight)
-                _add_square(total, tables.minus[n1, k + 1], dd + tt, td - dt, weight)
+                _add_square(waves, tables.plus[n1, k + 1], dd - tt, td + dt)
+                _add_square(waves, tables.minus[n1, k + 1], dd + tt, td - dt)

@@ -1,0 +1,95 @@
+"""The life of a chain: start, equilibrate, tune, freeze, produce block by block."""
+
+from __future__ import annotations
+
+import threading
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from mcgeo.sampling.measurement import BlockRecord, TorusMeasurement, merged
+from mcgeo.sampling.tuning import tuned_step
+from mcgeo.sampling.walkers import WalkerArrays, arrays_of, for_each_group, groups_of, start_walkers
+from mcgeo.states.base import TrialState, WalkerGroup
+
+
+@dataclass(frozen=True)
+class Schedule:
+    """How long a chain runs.
+
+    Attributes
+    ----------
+    n_walkers, n_blocks : int
+    measurements_per_block, sweeps_between : int
+        A block is ``measurements_per_block`` times ``sweeps_between`` sweeps.
+    equilibration : int
+        Sweeps before production; the step is tuned in their second half.
+    step : float or None
+        Fixed side of the square proposal (l_B); tuned when None.
+    seed, threads : int
+    """
+
+    n_walkers: int
+    n_blocks: int
+    measurements_per_block: int
+    sweeps_between: int
+    equilibration: int
+    step: float | None
+    seed: int
+    threads: int
+
+    @property
+    def sweeps_per_walker(self) -> int:
+        """Sweeps of production."""
+        return self.n_blocks * self.measurements_per_block * self.sweeps_between
+
+
+@dataclass(frozen=True)
+class ChainState:
+    """All that is needed to continue: walkers at the end of a block, the frozen step, the number of blocks done."""
+
+    walkers: WalkerArrays
+    step: float
+    blocks_done: int
+
+
+_LEAST_TUNING_SWEEPS = 8
+
+
+def equilibrated(state: TrialState, schedule: Schedule) -> ChainState:
+    """Walkers in equilibrium and a frozen step."""
+    groups = groups_of(state, start_walkers(state, schedule.n_walkers, schedule.seed))
+    first = schedule.step or min(state.first_step, state.frame.isotropic.side)
+    half = schedule.equilibration // 2
+
+    def advance(step: float, n_sweeps: int) -> Callable[[WalkerGroup], None]:
+        return lambda group: group.advance(step, n_sweeps)
+
+    for_each_group(advance(first, half), groups, schedule.threads)
+    step = schedule.step
+    if step is None:
+        sweeps = max(_LEAST_TUNING_SWEEPS, half // 16)
+        step, _ = tuned_step(state, groups, sweeps, schedule.threads)
+    for_each_group(advance(step, half), groups, schedule.threads)
+    return ChainState(arrays_of(groups), step, 0)
+
+
+def next_block(
+    measurement: TorusMeasurement, schedule: Schedule, state: ChainState, stop: threading.Event
+) -> tuple[ChainState, BlockRecord]:
+    """One more block: the new state to continue from, and what was measured.
+
+    Raises
+    ------
+    Interrupted
+        When ``stop`` was set before the block ended; ``state`` is still good.
+    """
+    groups = groups_of(measurement.state, state.walkers)
+
+    def run(group: WalkerGroup) -> BlockRecord:
+        return measurement.block(
+            group, state.step, schedule.measurements_per_block, schedule.sweeps_between, stop
+        )
+
+    records = for_each_group(run, groups, schedule.threads)
+    after = ChainState(arrays_of(groups), state.step, state.blocks_done + 1)
+    return after, merged(records, schedule.n_walkers)

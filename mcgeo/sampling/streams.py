@@ -1,0 +1,21 @@
+"""Random streams, addressed and not handed on: results do not depend on threads, workers or their order."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+
+def walker_sequence(seed: int, walker: int, point: int = 0) -> np.random.SeedSequence:
+    """Seed sequence of one walker of one sweep point."""
+    return np.random.SeedSequence(seed, spawn_key=(point, walker))
+
+
+def generator_words(sequence: np.random.SeedSequence) -> NDArray[np.uint64]:
+    """The four words that start a walker's generator inside the kernels, shape (4,)."""
+    return sequence.generate_state(4, dtype=np.uint64)
+
+
+def start_generator(sequence: np.random.SeedSequence) -> np.random.Generator:
+    """Generator for a walker's first positions, independent of the stream of its moves."""
+    return np.random.Generator(np.random.PCG64(sequence.spawn(1)[0]))

@@ -1,0 +1,38 @@
+"""The step is tuned in its own phase and then frozen: a chain that still adapts has no fixed distribution."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from mcgeo.kernels.lanes import LANES
+from mcgeo.sampling.walkers import for_each_group
+from mcgeo.states.base import TrialState, WalkerGroup
+
+_ROUNDS = 16
+_GAIN = 2.0
+
+
+def tuned_step(
+    state: TrialState, groups: Sequence[WalkerGroup], sweeps_per_round: int, threads: int
+) -> tuple[float, float]:
+    """Side of the square proposal at which the state's best acceptance is met, and the acceptance of the last round.
+
+    The logarithm of the step follows the excess of acceptance with a gain that falls from round to round (Robbins and
+    Monro, Ann. Math. Stat. 22, 400 (1951)). The step never exceeds the cell's side: a larger one only wraps.
+    """
+    largest = state.frame.isotropic.side
+    step = min(state.first_step, largest)
+    acceptance = 0.0
+    for turn in range(_ROUNDS):
+        before = sum(float(group.accepted.sum()) for group in groups)
+
+        def advance(group: WalkerGroup, step: float = step) -> None:
+            group.advance(step, sweeps_per_round)
+
+        for_each_group(advance, groups, threads)
+        proposals = len(groups) * LANES * state.n_electrons * state.proposals_per_sweep * sweeps_per_round
+        acceptance = (sum(float(group.accepted.sum()) for group in groups) - before) / proposals
+        gain = _GAIN / math.sqrt(1.0 + turn)
+        step = min(largest, step * math.exp(gain * (acceptance - state.best_acceptance)))
+    return step, acceptance

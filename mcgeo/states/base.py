@@ -1,0 +1,84 @@
+"""What a trial state supplies; nothing else in the program knows which state it is."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mcgeo.geometry.frame import TorusFrame
+
+Array = NDArray[np.float64]
+
+FERMIONS = "fermions"
+BOSONS = "bosons"
+
+
+class WalkerGroup(Protocol):
+    """Eight walkers side by side with all that their kernel keeps between moves.
+
+    ``a``, ``b`` (shape (n_electrons, 8), fractions of the isotropic cell), ``words`` (shape (4, 8), the generators)
+    are all that is needed to continue; everything else is made again by `refresh`.
+    """
+
+    a: Array
+    b: Array
+    words: NDArray[np.uint64]
+    accepted: Array
+
+    def refresh(self) -> None:
+        """Make all stored intermediate values anew from the positions."""
+
+    def advance(self, step: float, n_sweeps: int) -> None:
+        """Make ``n_sweeps`` sweeps with square proposals of side ``step``; adds to ``accepted``, shape (1, 8)."""
+
+    def drift(self) -> float:
+        """Largest relative error that the stored values have gathered since the last `refresh`."""
+
+
+class TrialState(Protocol):
+    """A lowest-level trial state on a torus, isotropic in its own metric.
+
+    Attributes
+    ----------
+    kind : str
+        Its key in the configuration.
+    label : str
+        Words for reports and figures.
+    filling : Fraction
+    statistics : str
+        ``fermions`` or ``bosons``.
+    n_electrons : int
+    frame : TorusFrame
+    shift : int or None
+        s in S(q) = q^2/2 + (s - 2) q^4/8 + ..., None for a gapless liquid (no q^4 rule).
+    first_occupied : int
+        Pair occupations n_m vanish exactly for m below this.
+    proposals_per_sweep : int
+        Proposals per electron and sweep.
+    best_acceptance, first_step : float
+        Where to tune the step to, and where to start (l_B).
+    sweeps_per_measurement : int
+        Default distance of two measurements.
+    """
+
+    kind: str
+    label: str
+    filling: Fraction
+    statistics: str
+    n_electrons: int
+    frame: TorusFrame
+    shift: int | None
+    first_occupied: int
+    proposals_per_sweep: int
+    best_acceptance: float
+    first_step: float
+    sweeps_per_measurement: int
+
+    def group(self, a: Array, b: Array, words: NDArray[np.uint64]) -> WalkerGroup:
+        """Eight walkers at the given fractions; the arrays are taken over."""
+
+    def log_weight(self, a: Array, b: Array) -> Array:
+        """log |Psi|^2 up to a constant for fractions of shape (n_electrons, 8), recomputed from scratch; shape (8,)."""
