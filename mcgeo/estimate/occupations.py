@@ -1,0 +1,186 @@
+"""Pair occupations: the one object that sampling hands to variation.
+
+In its own metric a lowest-level liquid of filling nu has, with e = -1 and odd m for fermions, e = +1 and even m for bosons,
+
+    S(q) - 1 = e nu exp(-q^2/2) + 4 nu sum_m c_m L_m(q^2) exp(-q^2),
+    g(r) = sum_m (2/m!) (r^2/4)^m exp(-r^2/4) n_m,      n_m = 1 + c_m >= 0, n_m -> 1 at large m
+
+(Girvin, Phys. Rev. B 30, 558 (1984); Girvin, MacDonald and Platzman, Phys. Rev. B 33, 2481 (1986), section IV; the boson form by
+the same steps). S(q) = q^2/2 + (s - 2) q^4/8 + ..., with the shift s of an incompressible liquid, gives term by term
+
+    sum c = -(1/nu + e)/4,   sum (m+1) c = -(1/nu + e)/8,   sum (m+1)(m+2) c = (s - 2)/(8 nu) - e/8.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import lsq_linear
+from scipy.special import eval_laguerre
+
+from mcgeo.estimate.statistics import Estimate, mean_estimate
+from mcgeo.states.base import FERMIONS, TrialState
+
+Array = NDArray[np.float64]
+
+_FIT_RANGE = 6.0
+_ERROR_FLOOR = 0.02
+_LARGEST_M = 45
+# Weight of the sum rules against the data while the bounds in force are looked for; they hold exactly afterwards.
+_RULE_WEIGHT = 1e5
+
+
+def sum_rules(filling: Fraction, statistics: str, shift: int | None) -> tuple[Array, Array]:
+    """Powers and values of the sum rules.
+
+    Returns
+    -------
+    order : ndarray, shape (n_rules,)
+        0, 1 (and 2 when the shift is known) for the weights 1, (m+1), (m+1)(m+2).
+    value : ndarray, shape (n_rules,)
+    """
+    nu = float(filling)
+    e = -1.0 if statistics == FERMIONS else 1.0
+    values = [-(1.0 / nu + e) / 4.0, -(1.0 / nu + e) / 8.0]
+    if shift is not None:
+        values.append((shift - 2.0) / (8.0 * nu) - e / 8.0)
+    return np.arange(len(values)), np.array(values)
+
+
+def _rule_matrix(order: Array, m: NDArray[np.int64]) -> Array:
+    weights = np.stack([np.ones(len(m)), m + 1.0, (m + 1.0) * (m + 2.0)])
+    return np.asarray(weights[order])
+
+
+@dataclass(frozen=True, eq=False)
+class PairOccupations:
+    """c_m of a liquid with their block samples.
+
+    Attributes
+    ----------
+    label : str
+    filling : Fraction
+    statistics : str
+    m : ndarray of int64, shape (n_m,)
+        Relative angular momenta of one parity, from the lowest.
+    samples : ndarray, shape (n_samples, n_m)
+        Independent samples of c_m; every one obeys the sum rules. Errors of all that follows come from them.
+    """
+
+    label: str
+    filling: Fraction
+    statistics: str
+    m: NDArray[np.int64]
+    samples: Array
+
+    @property
+    def coefficients(self) -> Array:
+        """Mean c_m, shape (n_m,)."""
+        return np.asarray(self.samples.mean(axis=0))
+
+    @property
+    def statistics_sign(self) -> float:
+        """e: -1 for fermions, +1 for bosons."""
+        return -1.0 if self.statistics == FERMIONS else 1.0
+
+    def occupation(self, index: int) -> Estimate:
+        """n_m = 1 + c_m."""
+        c = mean_estimate(self.samples[:, index])
+        return Estimate(1.0 + c.value, c.error, c.autocorrelation_time, c.effective_samples)
+
+    def basis(self, norm: Array) -> Array:
+        """4 nu L_m(q^2) exp(-q^2/2) for |q| of shape (n_q,): shape (n_m, n_q)."""
+        x = np.asarray(norm, dtype=float) ** 2
+        return np.asarray(4.0 * float(self.filling) * eval_laguerre(self.m[:, None], x) * np.exp(-0.5 * x))
+
+    def guiding_centre_structure(self, norm: Array) -> Array:
+        """Mean Sbar(q) for |q| (in the liquid's metric) of shape (n_q,)."""
+        limit = 1.0 + self.statistics_sign * float(self.filling)
+        return np.asarray(limit + self.coefficients @ self.basis(norm))
+
+
+def largest_m(state: TrialState) -> int:
+    """Largest relative angular momentum fitted: its pair distance 2 sqrt(m) stays inside the cell, 45 at most."""
+    start = state.first_occupied
+    inside = int((state.frame.isotropic.largest_radius) ** 2 / 4.0)
+    m = min(_LARGEST_M, max(inside, start + 8))
+    return m - (m - start) % 2
+
+
+def fit_occupations(state: TrialState, norm: Array, samples: Array) -> PairOccupations:
+    """Constrained weighted least squares of S(q) on |q| < 6.
+
+    Minimises sum_q [(S - fit)/sigma]^2 + sum_m (0.3 (m/10)^1.5 c_m)^2 under the sum rules and n_m >= 0, with c_m = -1 below
+    the state's first occupied m. sigma is (S + 0.02)/sqrt(n_eff): |rho_q|^2 is nearly exponentially distributed. The
+    penalty reads as a prior of width 3 at m = 10 and 0.4 at m = 40 and fixes what data in a finite cell leave open. Once it
+    is known which bounds are in force the solution is linear in S(q), and the samples of c_m are that linear map of the
+    samples of S(q).
+
+    Parameters
+    ----------
+    state : TrialState
+    norm : ndarray, shape (n_waves,)
+        |q| in the state's metric.
+    samples : ndarray, shape (n_samples, n_waves)
+        Independent samples of S(q).
+    """
+    parity = 1 if state.statistics == FERMIONS else 0
+    m = np.arange(parity, largest_m(state) + 1, 2)
+    empty = PairOccupations(state.label, state.filling, state.statistics, m, np.zeros((1, len(m))))
+    inside = norm < _FIT_RANGE
+    q = norm[inside]
+    data = samples[:, inside]
+    mean = data.mean(axis=0)
+    basis = empty.basis(q).T * np.exp(-0.5 * q**2)[:, None]
+    offset = 1.0 + empty.statistics_sign * float(state.filling) * np.exp(-0.5 * q**2)
+    scatter = data.std(axis=0, ddof=1) / np.sqrt(len(data))
+    n_eff = 1.0 / np.median((scatter / (mean + _ERROR_FLOOR)) ** 2)
+    weight = np.sqrt(n_eff) / (mean + _ERROR_FLOOR)
+    order, values = sum_rules(state.filling, state.statistics, state.shift)
+    rules = _rule_matrix(order, m)
+    penalty = 0.3 * (m / 10.0) ** 1.5
+    pinned = m < state.first_occupied
+    pinned |= _bounds_in_force(basis * weight[:, None], (mean - offset) * weight, rules, values, penalty, pinned)
+    response, constant = _linear_solution(basis, weight, rules, values, penalty, pinned)
+    coefficients = (data - offset) @ response.T + constant
+    return PairOccupations(state.label, state.filling, state.statistics, m, coefficients)
+
+
+def _bounds_in_force(
+    design: Array, target: Array, rules: Array, values: Array, penalty: Array, pinned: NDArray[np.bool_]
+) -> NDArray[np.bool_]:
+    """Which n_m >= 0 are met with equality; a bounded fit with the rules as heavy rows."""
+    free = ~pinned
+    scale = _RULE_WEIGHT / np.linalg.norm(rules, axis=1)
+    rows = np.concatenate([design[:, free], np.diag(penalty[free]), rules[:, free] * scale[:, None]])
+    right = np.concatenate(
+        [target + design[:, pinned].sum(axis=1), np.zeros(free.sum()), (values + rules[:, pinned].sum(axis=1)) * scale]
+    )
+    solution = lsq_linear(rows, right, bounds=(-1.0, np.inf), method="bvls", tol=1e-14)
+    result = np.zeros(len(pinned), dtype=bool)
+    result[np.flatnonzero(free)[solution.active_mask < 0]] = True
+    return result
+
+
+def _linear_solution(
+    basis: Array, weight: Array, rules: Array, values: Array, penalty: Array, pinned: NDArray[np.bool_]
+) -> tuple[Array, Array]:
+    """c = response @ (S - offset) + constant with c_m = -1 where pinned and the rules exact (Lagrange multipliers)."""
+    free = ~pinned
+    x, c = basis[:, free], rules[:, free]
+    n_free, n_rules = int(free.sum()), len(values)
+    normal = (x * weight[:, None] ** 2).T @ x + np.diag(penalty[free] ** 2)
+    system = np.block([[normal, c.T], [c, np.zeros((n_rules, n_rules))]])
+    # Scaling by the diagonal keeps the system well conditioned: the normal matrix spans many decades.
+    scale = np.concatenate([1.0 / np.sqrt(np.diag(normal)), np.ones(n_rules)])
+    inverse = np.linalg.inv(system * scale[:, None] * scale) * scale[:, None] * scale
+    on_data = inverse[:n_free, :n_free] @ (x * weight[:, None] ** 2).T
+    fixed = -basis[:, pinned].sum(axis=1)
+    response = np.zeros((len(pinned), len(weight)))
+    response[free] = on_data
+    constant = np.where(pinned, -1.0, 0.0)
+    constant[free] = inverse[:n_free, n_free:] @ (values + rules[:, pinned].sum(axis=1)) - on_data @ fixed
+    return response, constant
