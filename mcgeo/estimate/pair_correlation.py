@@ -1,0 +1,124 @@
+"""Pair correlation: on the plane from S(q), along the radius, and counted directly.
+
+On a torus of N electrons g(r) = 1 + (1/N) sum_q (S(q) - 1) exp(iq.r), the term q = 0 being -1: the cell's mean of g is
+1 - 1/N, the chance of another electron. In the thermodynamic limit g -> 1 at large r.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import eval_laguerre, gammaln, j0
+
+from mcgeo.estimate.occupations import PairOccupations
+from mcgeo.estimate.statistics import jackknife_error, jackknife_means
+from mcgeo.estimate.structure_factor import Curve
+from mcgeo.estimate.torus_energy import soft_window
+from mcgeo.geometry.frame import TorusFrame
+from mcgeo.geometry.metric import UnimodularMetric
+
+Array = NDArray[np.float64]
+
+_RADIAL_NODES = 200
+_N_ANGLES = 96
+
+
+def torus_pair_correlation(
+    frame: TorusFrame, q_max: float, n_electrons: int, samples: Array, positions: Array
+) -> tuple[Array, Array]:
+    """g at lab positions from the waves of the half-plane.
+
+    Parameters
+    ----------
+    samples : ndarray, shape (n_samples, n_waves)
+        Independent samples of S(q).
+    positions : ndarray, shape (n, 2)
+
+    Returns
+    -------
+    value, error : ndarray, shape (n,)
+    """
+    waves = frame.waves(q_max)
+    window = soft_window(np.sqrt(frame.metric.wavevector_norm_sq(waves.vectors)), q_max)
+    kernel = 2.0 * window[:, None] * np.cos(waves.vectors @ np.asarray(positions).T) / n_electrons
+    mean = 1.0 - 1.0 / n_electrons + (samples.mean(axis=0) - 1.0) @ kernel
+    return np.asarray(mean), jackknife_error((jackknife_means(samples) - 1.0) @ kernel)
+
+
+def radial_pair_correlation(
+    frame: TorusFrame, q_max: float, n_electrons: int, samples: Array, radii: Array
+) -> Curve:
+    """g averaged over directions at |r|_g, in the liquid's own metric: exp(iq.r) becomes J_0(|q|_g |r|_g)."""
+    norm = np.sqrt(frame.metric.wavevector_norm_sq(frame.waves(q_max).vectors))
+    kernel = 2.0 * soft_window(norm, q_max)[:, None] * j0(norm[:, None] * radii) / n_electrons
+    mean = 1.0 - 1.0 / n_electrons + (samples.mean(axis=0) - 1.0) @ kernel
+    return Curve(radii, np.asarray(mean), jackknife_error((jackknife_means(samples) - 1.0) @ kernel))
+
+
+def counted_pair_correlation(
+    frame: TorusFrame, n_electrons: int, width: float, counts: Array, n_configurations: int
+) -> Curve:
+    """g from pair counts, bin by bin; an empty bin is 0 with error 0.
+
+    Parameters
+    ----------
+    width : float
+        Bin width in l_B, in the liquid's metric.
+    counts : ndarray, shape (n_samples, n_bins)
+        Pairs counted in each independent sample of ``n_configurations`` configurations.
+
+    Notes
+    -----
+    A bin of area a holds (N^2/2) (a/A) g pairs per configuration, normalised as `torus_pair_correlation`.
+    """
+    edges = width * np.arange(counts.shape[1] + 1)
+    ring = math.pi * np.diff(edges**2)
+    expected = n_configurations * 0.5 * n_electrons**2 * ring / frame.isotropic.area
+    samples = counts / expected
+    centre = np.sqrt(0.5 * (edges[1:] ** 2 + edges[:-1] ** 2))
+    return Curve(centre, samples.mean(axis=0), jackknife_error(jackknife_means(samples)))
+
+
+def bulk_radial_pair_correlation(occupations: PairOccupations, radii: Array) -> Curve:
+    """g(r) = sum_m (2/m!) (r^2/4)^m exp(-r^2/4) n_m of the infinite liquid in its own metric."""
+    m = occupations.m.astype(float)[:, None]
+    x = np.asarray(radii, dtype=float) ** 2 / 4.0
+    with np.errstate(divide="ignore"):
+        log_weight = np.where(m > 0, m * np.log(x), 0.0) - x - gammaln(m + 1.0)
+    basis = 2.0 * np.exp(log_weight)
+    uncorrelated = 1.0 + occupations.statistics_sign * np.exp(-2.0 * x)
+    samples = occupations.samples @ basis
+    return Curve(radii, uncorrelated + samples.mean(axis=0), jackknife_error(jackknife_means(samples)))
+
+
+def bulk_pair_correlation_map(
+    occupations: PairOccupations,
+    hole_metric: UnimodularMetric,
+    orbit_metric: UnimodularMetric,
+    level: int,
+    x: Array,
+    y: Array,
+) -> Array:
+    """g(x, y) of the electrons of the infinite liquid, hole and orbit of different shapes; shape (len(y), len(x)).
+
+    The electron's own orbit is folded in: S(q) - 1 = F_n(q; g_L)^2 (Sbar(|q|_g) - 1) for q != 0, and
+    g(r) = 1 + (2 pi/nu) int d^2q/(2 pi)^2 (S(q) - 1) cos(q.r).
+    """
+    # In the orbit's coordinates q = S_L p the form factor is isotropic and cuts the integral at |p| = 9.
+    nodes, weights = np.polynomial.legendre.leggauss(_RADIAL_NODES)
+    p = 4.5 * (nodes + 1.0)
+    phi = math.pi * (np.arange(_N_ANGLES) + 0.5) / _N_ANGLES
+    q = p[:, None, None] * (np.stack([np.cos(phi), np.sin(phi)], axis=-1) @ orbit_metric.linear_map.T)
+    form_factor = np.exp(-0.5 * p**2) * eval_laguerre(level, 0.5 * p**2) ** 2
+    norm = np.sqrt(hole_metric.wavevector_norm_sq(q))
+    structure = occupations.guiding_centre_structure(norm.ravel()).reshape(norm.shape) - 1.0
+    measure = (4.5 * weights * p * form_factor)[:, None] * structure
+    # (2 pi/nu)/(2 pi)^2 times the angular step 2 pi/n.
+    measure /= float(occupations.filling) * _N_ANGLES
+    # cos(q.r) = cos(qx x) cos(qy y) - sin sin: the map is two matrix products.
+    qx, qy, weight = q[..., 0].ravel(), q[..., 1].ravel(), measure.ravel()
+    even = (np.cos(np.outer(y, qy)) * weight) @ np.cos(np.outer(qx, x))
+    odd = (np.sin(np.outer(y, qy)) * weight) @ np.sin(np.outer(qx, x))
+    return np.asarray(1.0 + even - odd)
