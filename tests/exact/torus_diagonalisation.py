@@ -64,8 +64,8 @@ class TorusState:
 
         Sbar(q) - 1 = (2/N) <sum_{i<j} cos q.(R_i - R_j)>. Its mean over the N_phi^2 - 1 nonzero residues of
         q is -(N-1)/(N_phi-1) for fermions and (N-1)/(N_phi+1) for bosons, because the operators of one pair
-        add up to N_phi times its exchange. Where both m1 and m2 are multiples of N_phi the operators are phases and
-        Sbar = N.
+        add up to N_phi times its exchange. Where both m1 and m2 are multiples of N_phi the operators are
+        phases and Sbar = N.
 
         Parameters
         ----------

@@ -98,8 +98,8 @@ def test_conjugate_at_two_thirds(n_flux: int, n_holes: int) -> None:
     q = waves(lattice, nonzero_residues(n_flux))
     assert 2.0 * electrons.structure_factor(q) == pytest.approx(holes.structure_factor(q), abs=1e-12)
 
-    # The interactions of electrons and of holes differ by a constant, so the conjugate must be the ground state
-    # of the electrons.
+    # The interactions of electrons and of holes differ by a constant, so the conjugate must be the electrons'
+    # ground state.
     n_electrons = n_flux - n_holes
     ground, excited = lowest_states(lattice, n_flux, n_electrons, pseudopotential(metric, 1), n_states=2)
     assert ground.sector.momentum == electrons.sector.momentum
