@@ -1,0 +1,169 @@
+"""The configuration of a run: one YAML file in, immutable and validated groups of keys out."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterable, Mapping
+from typing import Any
+
+from pydantic import Field, ValidationError, ValidationInfo, field_validator, model_validator
+from pydantic_core import PydanticCustomError
+
+from mcgeo.errors import ConfigError
+from mcgeo.runs.config_faults import Remark, explain, show
+from mcgeo.runs.config_types import Group
+from mcgeo.runs.geometry_config import CellConfig, GeometryConfig, NamedCellConfig
+from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
+from mcgeo.runs.sampling_config import SamplingConfig
+from mcgeo.runs.state_config import StateConfig
+from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
+
+
+class Config(Group):
+    """Everything a run is told."""
+
+    state: StateConfig = Field(description="Liquid that is sampled.")
+    geometry: GeometryConfig = Field(default=GeometryConfig(), description="Surface the particles live on.")
+    cell: CellConfig | None = Field(
+        default=None,
+        description="Cell of the torus, by its shape or by tau; null: hexagonal, or none on the disk.",
+    )
+    sampling: SamplingConfig = Field(default=SamplingConfig(), description="How the walkers run.")
+    problem: ProblemConfig = Field(default=ProblemConfig(), description="Mass, interaction and level.")
+    scan: ScanConfig = Field(
+        default=ScanConfig(), description="Hole metrics at which the energy is tabulated."
+    )
+
+    @field_validator("cell")
+    @classmethod
+    def _hexagonal_torus(cls, cell: CellConfig | None, info: ValidationInfo) -> CellConfig | None:
+        geometry = info.data.get("geometry")
+        if cell is None and geometry is not None and geometry.kind == "torus":
+            return NamedCellConfig(shape="hexagonal")
+        return cell
+
+    @model_validator(mode="after")
+    def _fits_together(self) -> Config:
+        remarks = contradictions(self.model_dump(exclude_unset=True))
+        if remarks:
+            listed = "; ".join(f"{dotted(remark.path)}: {remark.message}" for remark in remarks)
+            raise PydanticCustomError("contradiction", "{listed}", {"listed": listed})
+        return self
+
+
+def contradictions(given: Mapping[str, Any]) -> list[Remark]:
+    """What of the given keys does not go together across groups, be the rest valid or not."""
+    state, geometry = (
+        given[key] if isinstance(given.get(key), Mapping) else {} for key in ("state", "geometry")
+    )
+    if geometry.get("kind") != "disk":
+        return []
+    remarks = []
+    if given.get("cell") is not None:
+        remarks.append(
+            Remark(("cell",), "a disk has no cell; remove it, or use the geometry torus", at_key=True)
+        )
+    if state.get("kind") == "fermi_sea":
+        remarks.append(Remark(("state", "kind"), "must be laughlin or moore_read on a disk, not fermi_sea"))
+    if state.get("conjugate") is True:
+        remarks.append(
+            Remark(("state", "conjugate"), "must be false on a disk; the conjugate needs the torus")
+        )
+    if state.get("kind") == "moore_read" and "sector" in state:
+        remarks.append(Remark(("state", "sector"), "a disk has no sectors; remove it", at_key=True))
+    return remarks
+
+
+def load_config(path: str | os.PathLike[str]) -> Config:
+    """Read and validate a YAML file.
+
+    Raises
+    ------
+    ConfigError
+        With every fault, one line ``file:line:column: key.path: what is wrong, what is allowed`` each, in the
+        order of the file.
+    """
+    source, faults = parse_yaml(path)
+    config, remarks = _validate(source.data)
+    faults += [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks]
+    if config is None or faults:
+        raise ConfigError([fault.line(source.path) for fault in sorted(faults, key=lambda fault: fault.mark)])
+    return config
+
+
+def _validate(data: Mapping[str, Any]) -> tuple[Config | None, list[Remark]]:
+    try:
+        return Config.model_validate(data), []
+    except ValidationError as error:
+        # The model looks for contradictions only when all groups are valid; here they are wanted in any case.
+        across = contradictions(data) if isinstance(data, Mapping) else []
+        return None, explain(error, json_schema()) + across
+
+
+def resolved(config: Config) -> dict[str, Any]:
+    """The configuration as plain JSON-able data, every default filled in and fractions as text.
+
+    On the disk the keys that only a torus has are left out.
+    """
+    data = config.model_dump(mode="json", by_alias=True)
+    if config.geometry.kind == "disk":
+        del data["cell"]
+        data["state"].pop("sector", None)
+    return data
+
+
+def config_from_resolved(data: Mapping[str, Any]) -> Config:
+    """The configuration of which `resolved` gave ``data``.
+
+    Raises
+    ------
+    ConfigError
+        With one line ``key.path: what is wrong`` per fault, if the data are not of a valid configuration.
+    """
+    config, remarks = _validate(data)
+    if config is None:
+        raise ConfigError(
+            [f"{dotted(remark.path) or 'configuration'}: {remark.message}" for remark in remarks]
+        )
+    return config
+
+
+def state_identity(config: Config) -> dict[str, Any]:
+    """The part of the resolved configuration that determines a sampling: state, geometry, cell and sampling.
+
+    The number of threads is left out, because results do not depend on it.
+    """
+    data = resolved(config)
+    identity: dict[str, Any] = {
+        key: data[key] for key in ("state", "geometry", "cell", "sampling") if key in data
+    }
+    del identity["sampling"]["threads"]
+    return identity
+
+
+def differing_keys(
+    resolved_a: Mapping[str, Any], resolved_b: Mapping[str, Any], sections: Iterable[str]
+) -> list[str]:
+    """Keys of the given top-level groups with different values, as ``sampling.walkers: 32 and 64``."""
+    lines = []
+    for section in sections:
+        a, b = (
+            _leaves(data[section], section) if section in data else {} for data in (resolved_a, resolved_b)
+        )
+        for key in dict.fromkeys([*a, *b]):
+            first, second = (show(leaves[key]) if key in leaves else "not given" for leaves in (a, b))
+            if a.get(key) != b.get(key) or (key in a) != (key in b):
+                lines.append(f"{key}: {first} and {second}")
+    return lines
+
+
+def _leaves(value: Any, name: str) -> dict[str, Any]:
+    if not isinstance(value, Mapping):
+        return {name: value}
+    return {key: leaf for child in value for key, leaf in _leaves(value[child], f"{name}.{child}").items()}
+
+
+def json_schema() -> dict[str, Any]:
+    """JSON schema of the YAML file, for editors."""
+    schema = Config.model_json_schema(by_alias=True)
+    return {"$schema": "https://json-schema.org/draft/2020-12/schema", **schema}

@@ -1,0 +1,62 @@
+"""Keys of ``sampling``: how long and how the walkers run."""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+from pydantic import Field, ValidationInfo, field_validator
+
+from mcgeo.runs.config_types import Count, Group, Positive, Real, WholeNumber, rule
+
+
+class SamplingConfig(Group):
+    """Walkers, their length and what is kept of them."""
+
+    walkers: Count = Field(default=32, description="Independent walkers [1].")
+    sweeps: Count = Field(
+        default=20_000, description="Production sweeps of each walker, one move per particle each [1]."
+    )
+    equilibration: Annotated[int, WholeNumber(0)] = Field(
+        default=500, description="Sweeps of each walker before production [1]."
+    )
+    blocks: Annotated[int, WholeNumber(2)] = Field(
+        default=16, description="Block means kept of each walker [1]."
+    )
+    measure_every: Count | None = Field(
+        default=None,
+        description="Sweeps from one measurement to the next; null: chosen from the number of particles [1].",
+    )
+    step: Positive | None = Field(
+        default=None, description="Side of the square a move is drawn from; null: tuned [l_B]."
+    )
+    seed: Annotated[int, WholeNumber(0)] | None = Field(
+        default=1, description="Seed of all random numbers; null: drawn once and recorded [1]."
+    )
+    threads: Count | None = Field(
+        default=None,
+        description="Threads; null: the cores this process may use. Results do not depend on it [1].",
+    )
+    q_max: Annotated[Real, Field(ge=4.0, le=12.0)] = Field(
+        default=8.0, description="Largest wavevector, in the state's metric, of the structure factor [1/l_B]."
+    )
+
+    @field_validator("blocks")
+    @classmethod
+    def _no_empty_block(cls, blocks: int, info: ValidationInfo) -> int:
+        sweeps = info.data.get("sweeps", blocks)
+        if blocks > sweeps:
+            raise rule(f"must not exceed sweeps, which is {sweeps}, but is {blocks}")
+        return blocks
+
+    @field_validator("measure_every")
+    @classmethod
+    def _each_block_measured(cls, measure_every: int | None, info: ValidationInfo) -> int | None:
+        if measure_every is None or not {"sweeps", "blocks"} <= info.data.keys():
+            return measure_every
+        longest = info.data["sweeps"] // info.data["blocks"]
+        if measure_every > longest:
+            raise rule(
+                f"must be at most sweeps/blocks = {longest}, so that every block holds a measurement, "
+                f"not {measure_every}"
+            )
+        return measure_every
