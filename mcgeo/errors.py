@@ -27,3 +27,11 @@ class GeometryError(McgeoError):
 
 class StorageError(McgeoError):
     """A result file that cannot be read, written, or that belongs to another configuration."""
+
+
+class RunInterrupted(McgeoError):
+    """A run stopped by a signal; exit code 128 + the signal's number."""
+
+    def __init__(self, message: str, signal_number: int) -> None:
+        super().__init__(message)
+        self.exit_code = 128 + signal_number

@@ -9,6 +9,9 @@ from scipy.special import eval_laguerre
 from mcgeo.geometry.metric import UnimodularMetric
 
 
+LOWEST = 0
+
+
 def form_factor_sq(
     wavevectors: NDArray[np.float64], level: int, orbit_metric: UnimodularMetric
 ) -> NDArray[np.float64]:

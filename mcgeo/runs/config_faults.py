@@ -7,6 +7,7 @@ every message about a field names its range.
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Mapping
 from difflib import get_close_matches
 from typing import Any, NamedTuple
@@ -127,7 +128,8 @@ def _wrong(schema: Schema, value: object, root: Schema) -> str:
 
 
 def _suggestion(word: str, known: list[str]) -> str:
-    close = get_close_matches(word.lower(), known, n=1)
+    # Without a letter it is a fraction, and the nearest other fraction is no spelling of it.
+    close = get_close_matches(word.lower(), known, n=1) if re.search("[a-zA-Z]", word) else []
     return f" (did you mean '{close[0]}'?)" if close else ""
 
 

@@ -68,10 +68,11 @@ class YamlSource(NamedTuple):
 
 def dotted(path: Path) -> str:
     """Key path in words of the file: ``scan.stretch.from``, ``state.points[3]``."""
-    steps = (
-        f"[{key}]" if isinstance(key, int) else f".{key if key.isprintable() else repr(key)}" for key in path
-    )
-    return "".join(steps).removeprefix(".")
+    return "".join(f"[{key}]" if isinstance(key, int) else f".{_name(key)}" for key in path).removeprefix(".")
+
+
+def _name(key: str) -> str:
+    return key if key and key.isprintable() else repr(key)
 
 
 class _Builder:

@@ -26,6 +26,8 @@ class Schedule:
     step : float or None
         Fixed side of the square proposal (l_B); tuned when None.
     seed, threads : int
+    component : int
+        Which of the states that make up a liquid; it addresses the random streams.
     """
 
     n_walkers: int
@@ -36,6 +38,7 @@ class Schedule:
     step: float | None
     seed: int
     threads: int
+    component: int = 0
 
     @property
     def sweeps_per_walker(self) -> int:
@@ -57,7 +60,7 @@ _LEAST_TUNING_SWEEPS = 8
 
 def equilibrated(state: TrialState, schedule: Schedule) -> ChainState:
     """Walkers in equilibrium and a frozen step."""
-    groups = groups_of(state, start_walkers(state, schedule.n_walkers, schedule.seed))
+    groups = groups_of(state, start_walkers(state, schedule.n_walkers, schedule.seed, schedule.component))
     first = schedule.step or min(state.first_step, state.frame.isotropic.side)
     half = schedule.equilibration // 2
 

@@ -6,9 +6,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 
-def walker_sequence(seed: int, walker: int, point: int = 0) -> np.random.SeedSequence:
-    """Seed sequence of one walker of one sweep point."""
-    return np.random.SeedSequence(seed, spawn_key=(point, walker))
+def walker_sequence(seed: int, walker: int, component: int = 0) -> np.random.SeedSequence:
+    """Seed sequence of one walker of one component of a liquid."""
+    return np.random.SeedSequence(seed, spawn_key=(component, walker))
 
 
 def generator_words(sequence: np.random.SeedSequence) -> NDArray[np.uint64]:

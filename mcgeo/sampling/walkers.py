@@ -33,7 +33,7 @@ class WalkerArrays:
     words: NDArray[np.uint64]
 
 
-def start_walkers(state: TrialState, n_walkers: int, seed: int, point: int = 0) -> WalkerArrays:
+def start_walkers(state: TrialState, n_walkers: int, seed: int, component: int = 0) -> WalkerArrays:
     """Walkers at uniformly random positions, one stream each; the last group is filled up with walkers not counted."""
     n_groups = -(-n_walkers // LANES)
     a = np.empty((n_groups, state.n_electrons, LANES))
@@ -41,7 +41,7 @@ def start_walkers(state: TrialState, n_walkers: int, seed: int, point: int = 0) 
     words = np.empty((n_groups, 4, LANES), dtype=np.uint64)
     for walker in range(n_groups * LANES):
         group, lane = divmod(walker, LANES)
-        sequence = walker_sequence(seed, walker, point)
+        sequence = walker_sequence(seed, walker, component)
         words[group, :, lane] = generator_words(sequence)
         a[group, :, lane], b[group, :, lane] = start_generator(sequence).random((2, state.n_electrons)) - 0.5
     return WalkerArrays(a, b, words)

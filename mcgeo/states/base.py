@@ -62,6 +62,8 @@ class TrialState(Protocol):
         Where to tune the step to, and where to start (l_B).
     sweeps_per_measurement : int
         Default distance of two measurements.
+    cost_per_pair : float
+        Rough time of a proposal per other electron, in units of a Laughlin pair factor.
     """
 
     kind: str
@@ -76,6 +78,7 @@ class TrialState(Protocol):
     best_acceptance: float
     first_step: float
     sweeps_per_measurement: int
+    cost_per_pair: float
 
     def group(self, a: Array, b: Array, words: NDArray[np.uint64]) -> WalkerGroup:
         """Eight walkers at the given fractions; the arrays are taken over."""

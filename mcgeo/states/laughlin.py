@@ -75,6 +75,7 @@ class Laughlin:
     proposals_per_sweep: int = _PROPOSALS_PER_VISIT
     best_acceptance: float = 0.38
     sweeps_per_measurement: int = 4
+    cost_per_pair: float = 1.0
     _tables: LaughlinTorusTables = field(init=False, repr=False)
 
     def __post_init__(self) -> None:

@@ -1,0 +1,104 @@
+"""The command line: results on standard output, everything else on standard error.
+
+Imports of the numerical libraries wait until a command needs them, so that ``--help`` answers at once.
+"""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+
+from mcgeo import __version__
+from mcgeo.errors import McgeoError
+
+_EXIT_CODES = """exit codes:
+  0 done, 2 usage or configuration, 3 finished but not converged,
+  130 or 143 interrupted (whole blocks are kept), 1 a bug
+"""
+
+
+def build_parser() -> argparse.ArgumentParser:
+    """All commands and options."""
+    parser = argparse.ArgumentParser(
+        prog="mcgeo",
+        description="The shape of the correlation hole of anisotropic fractional quantum Hall liquids.",
+        epilog=_EXIT_CODES,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("--version", action="version", version=f"mcgeo {__version__}")
+    commands = parser.add_subparsers(dest="command", required=True, metavar="COMMAND")
+
+    sample = _command(commands, "sample", "run the walkers, write one result file", "mcgeo sample well.yaml")
+    _add_run_options(sample)
+    scan = _command(
+        commands, "scan", "energy over the metric, its minimum, stiffness and response", "mcgeo scan well.yaml --json"
+    )
+    _add_run_options(scan)
+    scan.add_argument("--liquid", type=Path, metavar="FILE", help="take this sampled liquid instead of sampling")
+
+    plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
+    plot.add_argument("what", choices=["hole", "energy", "structure", "correlation", "occupations", "trace"])
+    plot.add_argument("file", type=Path, metavar="FILE", help="result file, or a folder that holds one")
+    plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file, not the stored ones")
+    plot.add_argument("--out", type=Path, metavar="DIR", help="where figures go (default: beside the file)")
+    plot.add_argument("--format", action="append", choices=["pdf", "svg", "png"], help="repeatable (default: pdf, png)")
+
+    check = _command(commands, "check", "validate a configuration, show the plan and its cost", "mcgeo check well.yaml")
+    check.add_argument("config", type=Path, metavar="CONFIG")
+    check.add_argument("--json", action="store_true", help="one JSON object on standard output")
+
+    info = _command(commands, "info", "versions and machine, to go with a report", "mcgeo info")
+    info.add_argument("--json", action="store_true", help="one JSON object on standard output")
+    _command(commands, "schema", "JSON schema of the configuration, for editors", "mcgeo schema > mcgeo.schema.json")
+    return parser
+
+
+def _command(
+    commands: argparse._SubParsersAction[argparse.ArgumentParser], name: str, summary: str, example: str
+) -> argparse.ArgumentParser:
+    return commands.add_parser(
+        name,
+        help=summary,
+        description=f"{summary[0].upper()}{summary[1:]}.",
+        epilog=f"example:\n  {example}\n\n{_EXIT_CODES}",
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+
+
+def _positive(text: str) -> int:
+    value = int(text)
+    if value < 1:
+        raise argparse.ArgumentTypeError(f"must be at least 1, not {value}")
+    return value
+
+
+def _add_run_options(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("config", type=Path, metavar="CONFIG", help="YAML configuration, or a result file")
+    parser.add_argument("--out", type=Path, metavar="DIR", help="folder of the results (default: NAME_results here)")
+    parser.add_argument("--threads", type=_positive, metavar="N", help="threads (default: all cores allowed)")
+    parser.add_argument("--overwrite", action="store_true", help="replace a liquid of another configuration")
+    parser.add_argument("--json", action="store_true", help="one JSON object on standard output")
+    parser.add_argument("-q", "--quiet", action="store_true", help="no progress on standard error")
+
+
+def main(argv: Sequence[str] | None = None) -> int:
+    """Run one command and return its exit code."""
+    arguments = build_parser().parse_args(argv)
+    from mcgeo import commands
+
+    try:
+        text, code = getattr(commands, f"run_{arguments.command}")(arguments)
+    except McgeoError as fault:
+        print(fault, file=sys.stderr)
+        return fault.exit_code
+    except KeyboardInterrupt:
+        print("interrupted", file=sys.stderr)
+        return 130
+    try:
+        print(text, flush=True)
+    except BrokenPipeError:
+        # The reader has gone; point standard output elsewhere so that the interpreter's own flush is quiet.
+        sys.stdout = None  # type: ignore[assignment]
+    return int(code)

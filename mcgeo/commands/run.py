@@ -1,0 +1,82 @@
+"""``sample`` and ``scan``."""
+
+from __future__ import annotations
+
+import argparse
+import json
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+from mcgeo.report.tables import json_ready, write_csv, write_json
+from mcgeo.report.text import sample_text, scan_text
+from mcgeo.runs.config import Config, config_from_resolved, load_config
+from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.sample import sample
+from mcgeo.runs.sample_summary import sample_summary
+from mcgeo.runs.scan import scan, scan_summary
+from mcgeo.runs.storage import RESULT_SUFFIX, read_liquid
+
+CONVERGED_CODE, NOT_CONVERGED_CODE = 0, 3
+
+Answer = tuple[str, int]
+
+
+def as_json(summary: Mapping[str, Any]) -> str:
+    """One JSON object; numbers without meaning are null."""
+    return json.dumps(json_ready(summary), indent=2, allow_nan=False)
+
+
+def default_folder(config: Path) -> Path:
+    """NAME_results in the working folder for NAME.yaml; a result file's own folder."""
+    return config.parent if config.suffix == RESULT_SUFFIX else Path(f"{config.stem}_results")
+
+
+def _exit_code(summary: Mapping[str, Any]) -> int:
+    return CONVERGED_CODE if summary["diagnostics"]["verdict"] == "converged" else NOT_CONVERGED_CODE
+
+
+def _config(path: Path, threads: int | None) -> Config:
+    config = config_from_resolved(read_liquid(path).resolved) if path.suffix == RESULT_SUFFIX else load_config(path)
+    if threads is None:
+        return config
+    return config.model_copy(update={"sampling": config.sampling.model_copy(update={"threads": threads})})
+
+
+def run_sample(arguments: argparse.Namespace) -> Answer:
+    """``mcgeo sample``."""
+    config = _config(arguments.config, arguments.threads)
+    folder = arguments.out or default_folder(arguments.config)
+    liquid = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+    summary = sample_summary(liquid)
+    write_json(folder / "sample.json", summary)
+    return as_json(summary) if arguments.json else sample_text(summary), _exit_code(summary)
+
+
+def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:
+    if arguments.liquid is not None:
+        return read_liquid(arguments.liquid)
+    if arguments.config.suffix == RESULT_SUFFIX:
+        return read_liquid(arguments.config)
+    return sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+
+
+def run_scan(arguments: argparse.Namespace) -> Answer:
+    """``mcgeo scan``: samples first when the liquid is missing."""
+    config = _config(arguments.config, arguments.threads)
+    folder = arguments.out or default_folder(arguments.config)
+    liquid = _liquid_of(arguments, config, folder)
+    keys = config.model_dump(mode="json", by_alias=True)
+    found = scan(liquid, keys["problem"], keys["scan"])
+    summary = scan_summary(liquid, keys["problem"], found)
+    write_json(folder / "scan.json", summary)
+    curve = found.curve
+    columns = {
+        "stretch": curve.stretch,
+        "energy [e^2/(4 pi eps l_B) per electron]": curve.energy,
+        "energy error": curve.error,
+        "error of the difference to the minimum": curve.difference_error,
+    }
+    comment = f"{liquid.states[0].label}, energy against the hole's stretch at {summary['curve'][0]['angle_degrees']:g} degrees"
+    write_csv(folder / "curve.csv", columns, comment)
+    return as_json(summary) if arguments.json else scan_text(summary), _exit_code(summary)

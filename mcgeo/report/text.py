@@ -1,0 +1,93 @@
+"""Results as lines of text."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from typing import Any
+
+from mcgeo.estimate.statistics import Estimate
+from mcgeo.report.numbers import value_with_error
+
+ENERGY_UNIT = "e^2/(4 pi eps l_B)"
+
+_VERDICTS = {
+    "stable": "stable: the hole follows the anisotropy less than in proportion",
+    "soft": "soft: the response is above one, the hole exaggerates a weak anisotropy of the mass",
+    "unstable": "unstable: the isotropic hole is no minimum, or there is none within the range searched",
+}
+_HEALTH = {
+    "converged": "converged",
+    "short": "short: too few independent samples; raise sampling.sweeps or sampling.walkers",
+    "mixing": "mixing: the walkers disagree; raise sampling.equilibration and sampling.sweeps",
+    "stuck": "stuck: hardly a move is accepted; lower sampling.step or leave it out to have it tuned",
+}
+
+
+def _pair(keys: Mapping[str, Any], name: str) -> str:
+    error = keys.get(f"{name}_error")
+    return value_with_error(Estimate(keys[name], math.inf if error is None else error))
+
+
+def _estimate(keys: Mapping[str, float]) -> str:
+    return value_with_error(Estimate(keys["value"], keys["error"]))
+
+
+def _lines(rows: list[tuple[str, str]]) -> str:
+    width = max(len(name) for name, _ in rows)
+    return "\n".join(f"{name.ljust(width)}  {text}" for name, text in rows)
+
+
+def _health_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
+    return [
+        ("acceptance", f"{keys['acceptance']:.3f}"),
+        ("autocorrelation time", f"{keys['autocorrelation_time']:.1f} sweeps"),
+        ("independent energies", f"{keys['effective_samples']:.3g}"),
+        ("verdict on the run", _HEALTH[keys["verdict"]]),
+    ]
+
+
+def sample_text(summary: Mapping[str, Any]) -> str:
+    """Lines for `mcgeo.runs.sample_summary.sample_summary`; energies per electron."""
+    state = summary["state"]
+    rows = [
+        ("state", f"{state['label']}, {state['electrons']} electrons"),
+        ("interaction", summary["interaction"]),
+        ("energy, this cell", f"{_estimate(summary['energy_torus'])} {ENERGY_UNIT}"),
+        ("energy, infinite liquid", f"{_estimate(summary['energy_plane'])} {ENERGY_UNIT}"),
+        ("moves per second", f"{summary['moves_per_second']:.3g}"),
+        *_health_rows(summary["diagnostics"]),
+    ]
+    return _lines(rows)
+
+
+def scan_text(summary: Mapping[str, Any]) -> str:
+    """Lines for `mcgeo.runs.scan.scan_summary`; energies per electron."""
+    state, problem, best = summary["state"], summary["problem"], summary["optimum"]
+    level = problem["level"]
+    rows = [
+        ("state", f"{state['label']}, {state['electrons']} electrons"),
+        ("interaction", f"{problem['interaction_name']}, level {level}"),
+        (
+            "mass orbit",
+            f"stretch {problem['mass_stretch']:.5g} at {problem['mass_angle_degrees']:.4g} degrees, "
+            f"aspect ratio {problem['orbit_aspect_ratio']:.5g}",
+        ),
+        ("hole: stretch", f"{_pair(best, 'stretch')}"),
+        ("hole: angle", f"{value_with_error(Estimate(best['angle_degrees'], best['angle_error']))} degrees"),
+        ("hole: aspect ratio", _pair(best, "aspect_ratio")),
+        ("energy", f"{_pair(best, 'energy')} {ENERGY_UNIT}"),
+        ("gain over isotropic hole", _pair(best, "gain_isotropic")),
+        ("gain over hole like mass", _pair(best, "gain_mass")),
+        ("stiffness along, across", _stiffness(best)),
+        ("response to weak mass", _pair(best, "response")),
+        ("verdict on the shape", _VERDICTS[best["shape_verdict"]]),
+        *_health_rows(summary["diagnostics"]),
+    ]
+    return _lines(rows)
+
+
+def _stiffness(best: Mapping[str, Any]) -> str:
+    """Diagonal of the stiffness in the directions of the lab's flat coordinates."""
+    pairs = [Estimate(best["stiffness"][k][k], best["stiffness_error"][k][k]) for k in (0, 1)]
+    return ", ".join(value_with_error(pair) for pair in pairs)

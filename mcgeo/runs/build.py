@@ -1,0 +1,106 @@
+"""From a validated configuration to the objects of physics."""
+
+from __future__ import annotations
+
+import math
+import os
+from collections.abc import Mapping
+from fractions import Fraction
+from typing import Any
+
+from mcgeo.geometry.cell import Cell
+from mcgeo.geometry.frame import TorusFrame
+from mcgeo.geometry.metric import UnimodularMetric
+from mcgeo.problem.interaction import INTERACTIONS, Interaction
+from mcgeo.problem.mass import mass_metric_from_axes, mass_metric_from_ratio, mass_metric_from_tensor
+from mcgeo.problem.problem import Problem
+from mcgeo.sampling.chain import Schedule
+from mcgeo.states.base import TrialState
+from mcgeo.states.registry import TORUS_STATES
+
+Keys = Mapping[str, Any]
+
+
+def metric_from(keys: Keys) -> UnimodularMetric:
+    """Metric of ``stretch`` and ``angle_degrees``."""
+    return UnimodularMetric(keys["stretch"], math.radians(keys["angle_degrees"]))
+
+
+def filling_of(state: Keys) -> Fraction:
+    """Filling of the sampled state (not of its conjugate)."""
+    return Fraction(1, state["exponent"]) if "exponent" in state else Fraction(state["filling"])
+
+
+def torus_frame(resolved: Keys) -> TorusFrame:
+    """Frame of the lab cell with the state's metric.
+
+    Raises
+    ------
+    GeometryError
+        If the cell cannot be built.
+    """
+    state, cell = resolved["state"], resolved["cell"]
+    n_flux = state["electrons"] / filling_of(state)
+    if "tau" in cell:
+        lab = Cell.from_tau(complex(*cell["tau"]), int(n_flux))
+    else:
+        lab = Cell.from_shape(cell["shape"], int(n_flux))
+    return TorusFrame.of(lab, metric_from(state["metric"]))
+
+
+def torus_states(resolved: Keys) -> list[TrialState]:
+    """The states whose average is the liquid.
+
+    Raises
+    ------
+    GeometryError
+        If the cell does not suit the state.
+    """
+    state = resolved["state"]
+    return TORUS_STATES[state["kind"]](state, torus_frame(resolved))
+
+
+def interaction_from(keys: Keys) -> Interaction:
+    """Interaction of ``kind`` with its parameters."""
+    parameters = {key: value for key, value in keys.items() if key != "kind"}
+    made: Interaction = INTERACTIONS[keys["kind"]](**parameters)
+    return made
+
+
+def mass_metric(keys: Keys) -> UnimodularMetric:
+    """Mass metric from any of the three ways to write a mass."""
+    if "tensor" in keys:
+        return mass_metric_from_tensor(keys["tensor"])
+    angle = math.radians(keys["angle_degrees"])
+    if "along_axes" in keys:
+        first, second = keys["along_axes"]
+        return mass_metric_from_axes((first, second), angle)
+    return mass_metric_from_ratio(keys["ratio"], angle)
+
+
+def problem_from(keys: Keys) -> Problem:
+    """The projected problem."""
+    return Problem(mass_metric(keys["mass"]), interaction_from(keys["interaction"]), keys["level"])
+
+
+def available_threads() -> int:
+    """Cores this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def schedule_from(resolved: Keys, state: TrialState, component: int = 0) -> Schedule:
+    """Schedule of the sampling; sweeps are rounded up to whole blocks of whole measurements."""
+    keys = resolved["sampling"]
+    per_block = -(-keys["sweeps"] // keys["blocks"])
+    between = keys["measure_every"] or min(state.sweeps_per_measurement, per_block)
+    return Schedule(
+        n_walkers=keys["walkers"],
+        n_blocks=keys["blocks"],
+        measurements_per_block=-(-per_block // between),
+        sweeps_between=between,
+        equilibration=keys["equilibration"],
+        step=keys["step"],
+        seed=keys["seed"],
+        threads=keys["threads"] or available_threads(),
+        component=component,
+    )

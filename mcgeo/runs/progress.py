@@ -1,0 +1,49 @@
+"""Progress on standard error: a bar on a terminal, a plain line now and then in a batch log."""
+
+from __future__ import annotations
+
+import sys
+import time
+from types import TracebackType
+
+from tqdm import tqdm
+
+_SECONDS_BETWEEN_LINES = 30.0
+
+
+def say(message: str) -> None:
+    """One line on standard error."""
+    print(message, file=sys.stderr, flush=True)
+
+
+class Progress:
+    """Counts the blocks of a run; a context manager."""
+
+    def __init__(self, total: int, done: int = 0, quiet: bool = False) -> None:
+        self._total, self._done = total, done
+        self._started = self._last_line = time.monotonic()
+        self._first = done
+        self._quiet = quiet
+        terminal = sys.stderr.isatty() and not quiet
+        self._bar = tqdm(total=total, initial=done, unit="block", file=sys.stderr) if terminal else None
+
+    def __enter__(self) -> Progress:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, value: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        if self._bar is not None:
+            self._bar.close()
+
+    def step(self, note: str) -> None:
+        """One block more; ``note`` tells how it went."""
+        self._done += 1
+        now = time.monotonic()
+        if self._bar is not None:
+            self._bar.set_postfix_str(note)
+            self._bar.update(1)
+        elif not self._quiet and (now - self._last_line > _SECONDS_BETWEEN_LINES or self._done == self._total):
+            self._last_line = now
+            left = (now - self._started) / (self._done - self._first) * (self._total - self._done)
+            say(f"block {self._done}/{self._total}, {note}, {left:.0f} s left")

@@ -1,0 +1,71 @@
+"""The numbers of one sampled liquid: what ``sample`` prints and hands on."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from mcgeo.estimate.statistics import mean_estimate
+from mcgeo.problem.landau_level import LOWEST
+from mcgeo.problem.problem import Problem
+from mcgeo.runs.build import interaction_from
+from mcgeo.runs.liquid import Liquid
+from mcgeo.variational.energy_surface import EnergySurface
+
+
+def state_summary(liquid: Liquid) -> dict[str, Any]:
+    """``state`` of the JSON output: its keys with the filling as text."""
+    keys = dict(liquid.resolved["state"])
+    state = liquid.states[0]
+    return {**keys, "filling": str(state.filling), "statistics": state.statistics, "label": state.label}
+
+
+def diagnostics_summary(liquid: Liquid) -> dict[str, Any]:
+    """``diagnostics`` of the JSON output."""
+    health = liquid.diagnostics
+    return {
+        "acceptance": health.acceptance,
+        "autocorrelation_time": health.autocorrelation_time,
+        "effective_samples": health.effective_samples,
+        "r_hat": health.r_hat,
+        "drift": float(liquid.blocks.drift.max()),
+        "verdict": health.verdict if liquid.complete else "short",
+    }
+
+
+def sample_summary(liquid: Liquid) -> dict[str, Any]:
+    """The JSON object of ``sample``.
+
+    ``energy_torus`` is the energy of the sampled state on its cell; ``energy_plane`` that of the infinite liquid from the pair
+    occupations, orbit and hole having the state's metric, in the lowest level, for the configured interaction.
+    """
+    interaction = interaction_from(liquid.resolved["problem"]["interaction"])
+    occupations = liquid.occupations
+    metric = liquid.frame.metric
+    surface = EnergySurface(occupations, Problem(metric, interaction, LOWEST))
+    schedule = liquid.schedule
+    blocks_done = liquid.blocks.structure.shape[0]
+    moves = (
+        len(liquid.states)
+        * schedule.n_walkers
+        * blocks_done
+        * schedule.measurements_per_block
+        * schedule.sweeps_between
+        * liquid.states[0].n_electrons
+        * liquid.states[0].proposals_per_sweep
+    )
+    return {
+        "state": state_summary(liquid),
+        "interaction": interaction.name,
+        "energy_torus": liquid.torus_energy(interaction).as_dict(),
+        "energy_plane": mean_estimate(surface.sample_energies(metric)).as_dict(),
+        "occupations": [
+            {"m": int(m), **occupations.occupation(index).as_dict()} for index, m in enumerate(occupations.m)
+        ],
+        "acceptance": liquid.diagnostics.acceptance,
+        "step": liquid.chains[0].step,
+        "seed": liquid.resolved["sampling"]["seed"],
+        "seconds": liquid.seconds,
+        "moves_per_second": moves / liquid.seconds,
+        "complete": liquid.complete,
+        "diagnostics": diagnostics_summary(liquid),
+    }

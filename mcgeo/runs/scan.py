@@ -1,0 +1,152 @@
+"""The energy over the metric of one liquid in one problem, its minimum, and what follows."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
+from mcgeo.geometry.metric import UnimodularMetric
+from mcgeo.problem.problem import Problem
+from mcgeo.runs.build import problem_from
+from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.sample_summary import diagnostics_summary, state_summary
+from mcgeo.variational.energy_surface import EnergySurface
+from mcgeo.variational.minimum import Minimum, find_minimum
+from mcgeo.variational.response import Response, mass_response, shape_verdict
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class EnergyCurve:
+    """E along one direction of the metric.
+
+    Attributes
+    ----------
+    stretch : ndarray, shape (n,)
+        Signed Q along ``angle``: negative means the same |Q| turned by a right angle.
+    angle : float
+        theta in radians.
+    energy, error : ndarray, shape (n,)
+    difference_error : ndarray, shape (n,)
+        Error of E(Q) - E(Q*): the errors along the curve are strongly correlated.
+    """
+
+    stretch: Array
+    angle: float
+    energy: Array
+    error: Array
+    difference_error: Array
+
+
+@dataclass(frozen=True, eq=False)
+class Scan:
+    """Everything one scan found."""
+
+    problem: Problem
+    minimum: Minimum
+    response: Response
+    verdict: str
+    curve: EnergyCurve
+
+
+def scan(liquid: Liquid, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
+    """Scan of a liquid.
+
+    Raises
+    ------
+    GeometryError
+        If the range of stretches goes farther from the mass metric than the quadrature resolves.
+    """
+    problem = problem_from(problem_keys)
+    surface = EnergySurface(liquid.occupations, problem)
+    minimum = find_minimum(surface)
+    response = mass_response(liquid.occupations, problem)
+    angle = scan_keys["angle_degrees"]
+    if angle is not None:
+        direction = math.radians(angle)
+    else:
+        direction = (minimum.metric if minimum.metric.stretch > 0.0 else problem.mass_metric).angle
+    span = scan_keys["stretch"]
+    stretches = np.linspace(span["from"], span["to"], span["points"])
+    return Scan(
+        problem, minimum, response, shape_verdict(problem, minimum, response),
+        _curve(surface, minimum, direction, stretches),
+    )  # fmt: skip
+
+
+def _curve(surface: EnergySurface, minimum: Minimum, angle: float, stretches: Array) -> EnergyCurve:
+    at_minimum = surface.sample_energies(minimum.metric)
+    samples = np.stack([surface.sample_energies(UnimodularMetric(q, angle)) for q in stretches], axis=-1)
+    return EnergyCurve(
+        stretches,
+        angle,
+        samples.mean(axis=0),
+        jackknife_error(jackknife_means(samples)),
+        jackknife_error(jackknife_means(samples - at_minimum[:, None])),
+    )
+
+
+def _pair(name: str, estimate: Estimate) -> dict[str, float]:
+    return {name: estimate.value, f"{name}_error": estimate.error}
+
+
+def problem_summary(problem: Problem, keys: Mapping[str, Any]) -> dict[str, Any]:
+    """``problem`` of the JSON output: its keys and the mass metric."""
+    return {
+        **keys,
+        "interaction_name": problem.interaction.name,
+        "mass_stretch": problem.mass_metric.stretch,
+        "mass_angle_degrees": problem.mass_metric.angle_degrees,
+        "orbit_aspect_ratio": problem.mass_metric.aspect_ratio,
+    }
+
+
+def optimum_summary(found: Scan) -> dict[str, Any]:
+    """``optimum`` of the JSON output; the error of an angle without meaning (a circle's) is infinite, null in JSON."""
+    m = found.minimum
+    return {
+        **_pair("stretch", m.stretch),
+        "angle_degrees": math.degrees(m.angle.value),
+        "angle_error": math.degrees(m.angle.error),
+        **_pair("aspect_ratio", m.aspect_ratio),
+        **_pair("energy", m.energy),
+        **_pair("gain_isotropic", m.gain_isotropic),
+        **_pair("gain_mass", m.gain_mass),
+        "stiffness": m.stiffness.tolist(),
+        "stiffness_error": m.stiffness_error.tolist(),
+        "isotropic_stiffness": found.response.isotropic_stiffness.value,
+        "isotropic_stiffness_error": found.response.isotropic_stiffness.error,
+        **_pair("response", found.response.response),
+        "interior": m.interior,
+        "shape_verdict": found.verdict,
+    }
+
+
+def scan_summary(liquid: Liquid, problem_keys: Mapping[str, Any], found: Scan) -> dict[str, Any]:
+    """The JSON object of ``scan``."""
+    curve = found.curve
+    return {
+        "state": state_summary(liquid),
+        "problem": problem_summary(found.problem, problem_keys),
+        "optimum": optimum_summary(found),
+        "curve": [
+            {
+                "stretch": float(q),
+                "angle_degrees": math.degrees(curve.angle),
+                "energy": float(e),
+                "energy_error": float(error),
+                "difference_error": float(difference),
+            }
+            for q, e, error, difference in zip(
+                curve.stretch, curve.energy, curve.error, curve.difference_error, strict=True
+            )
+        ],
+        "diagnostics": diagnostics_summary(liquid),
+    }
