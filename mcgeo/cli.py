@@ -6,6 +6,7 @@ Imports of the numerical libraries wait until a command needs them, so that ``--
 from __future__ import annotations
 
 import argparse
+import os
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -41,7 +42,7 @@ def build_parser() -> argparse.ArgumentParser:
     plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
     plot.add_argument("what", choices=["hole", "energy", "structure", "correlation", "occupations", "trace"])
     plot.add_argument("file", type=Path, metavar="FILE", help="result file, or a folder that holds one")
-    plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file, not the stored ones")
+    plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file instead")
     plot.add_argument("--out", type=Path, metavar="DIR", help="where figures go (default: beside the file)")
     plot.add_argument("--format", action="append", choices=["pdf", "svg", "png"], help="repeatable (default: pdf, png)")
 
@@ -100,5 +101,5 @@ def main(argv: Sequence[str] | None = None) -> int:
         print(text, flush=True)
     except BrokenPipeError:
         # The reader has gone; point standard output elsewhere so that the interpreter's own flush is quiet.
-        sys.stdout = None  # type: ignore[assignment]
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
     return int(code)

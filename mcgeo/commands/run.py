@@ -77,6 +77,7 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
         "energy error": curve.error,
         "error of the difference to the minimum": curve.difference_error,
     }
-    comment = f"{liquid.states[0].label}, energy against the hole's stretch at {summary['curve'][0]['angle_degrees']:g} degrees"
+    angle = summary["curve"][0]["angle_degrees"]
+    comment = f"{liquid.states[0].label}, energy against the hole's stretch at {angle:g} degrees"
     write_csv(folder / "curve.csv", columns, comment)
     return as_json(summary) if arguments.json else scan_text(summary), _exit_code(summary)

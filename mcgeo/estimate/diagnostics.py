@@ -43,7 +43,7 @@ class Diagnostics:
 
 
 def split_r_hat(chains: Array) -> float:
-    """Split R-hat of chains of shape (n_chains, n_steps): Gelman et al., Bayesian Data Analysis, 3rd ed., equation 11.4."""
+    """Split R-hat of chains, shape (n_chains, n_steps): Gelman et al., Bayesian Data Analysis, 3rd ed., eq. 11.4."""
     half = chains.shape[1] // 2
     if half < 2:
         return math.nan

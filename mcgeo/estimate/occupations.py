@@ -1,12 +1,14 @@
 """Pair occupations: the one object that sampling hands to variation.
 
-In its own metric a lowest-level liquid of filling nu has, with e = -1 and odd m for fermions, e = +1 and even m for bosons,
+In its own metric a lowest-level liquid of filling nu has, with e = -1 and odd m for fermions, e = +1 and even m for
+bosons,
 
     S(q) - 1 = e nu exp(-q^2/2) + 4 nu sum_m c_m L_m(q^2) exp(-q^2),
     g(r) = sum_m (2/m!) (r^2/4)^m exp(-r^2/4) n_m,      n_m = 1 + c_m >= 0, n_m -> 1 at large m
 
-(Girvin, Phys. Rev. B 30, 558 (1984); Girvin, MacDonald and Platzman, Phys. Rev. B 33, 2481 (1986), section IV; the boson form by
-the same steps). S(q) = q^2/2 + (s - 2) q^4/8 + ..., with the shift s of an incompressible liquid, gives term by term
+(Girvin, Phys. Rev. B 30, 558 (1984); Girvin, MacDonald and Platzman, Phys. Rev. B 33, 2481 (1986), section IV; the
+boson form by the same steps). S(q) = q^2/2 + (s - 2) q^4/8 + ..., with the shift s of an incompressible liquid, gives
+term by term
 
     sum c = -(1/nu + e)/4,   sum (m+1) c = -(1/nu + e)/8,   sum (m+1)(m+2) c = (s - 2)/(8 nu) - e/8.
 """
@@ -33,12 +35,12 @@ _LARGEST_M = 45
 _RULE_WEIGHT = 1e5
 
 
-def sum_rules(filling: Fraction, statistics: str, shift: int | None) -> tuple[Array, Array]:
+def sum_rules(filling: Fraction, statistics: str, shift: int | None) -> tuple[NDArray[np.intp], Array]:
     """Powers and values of the sum rules.
 
     Returns
     -------
-    order : ndarray, shape (n_rules,)
+    order : ndarray of int, shape (n_rules,)
         0, 1 (and 2 when the shift is known) for the weights 1, (m+1), (m+1)(m+2).
     value : ndarray, shape (n_rules,)
     """
@@ -50,7 +52,7 @@ def sum_rules(filling: Fraction, statistics: str, shift: int | None) -> tuple[Ar
     return np.arange(len(values)), np.array(values)
 
 
-def _rule_matrix(order: Array, m: NDArray[np.int64]) -> Array:
+def _rule_matrix(order: NDArray[np.intp], m: NDArray[np.int64]) -> Array:
     weights = np.stack([np.ones(len(m)), m + 1.0, (m + 1.0) * (m + 2.0)])
     return np.asarray(weights[order])
 
@@ -113,11 +115,11 @@ def largest_m(state: TrialState) -> int:
 def fit_occupations(state: TrialState, norm: Array, samples: Array) -> PairOccupations:
     """Constrained weighted least squares of S(q) on |q| < 6.
 
-    Minimises sum_q [(S - fit)/sigma]^2 + sum_m (0.3 (m/10)^1.5 c_m)^2 under the sum rules and n_m >= 0, with c_m = -1 below
-    the state's first occupied m. sigma is (S + 0.02)/sqrt(n_eff): |rho_q|^2 is nearly exponentially distributed. The
-    penalty reads as a prior of width 3 at m = 10 and 0.4 at m = 40 and fixes what data in a finite cell leave open. Once it
-    is known which bounds are in force the solution is linear in S(q), and the samples of c_m are that linear map of the
-    samples of S(q).
+    Minimises sum_q [(S - fit)/sigma]^2 + sum_m (0.3 (m/10)^1.5 c_m)^2 under the sum rules and n_m >= 0, with c_m = -1
+    below the state's first occupied m. sigma is (S + 0.02)/sqrt(n_eff): |rho_q|^2 is nearly exponentially
+    distributed. The penalty reads as a prior of width 3 at m = 10 and 0.4 at m = 40 and fixes what data in a finite
+    cell leave open. Once it is known which bounds are in force the solution is linear in S(q), and the samples of c_m
+    are that linear map of the samples of S(q).
 
     Parameters
     ----------

@@ -1,8 +1,8 @@
 """Energies of a torus straight from S(q): linear in S(q), so weights and a constant say it all.
 
-E = (1/2A) sum_{q != 0} V(q) (S(q) - 1) + xi/2 per electron, xi the Madelung self-energy of the cell. The sum over the half-plane
-counts each wave twice. Cutting it sharply would add noise; a soft window erfc(|q|_g - 6)/2 leaves a bias below 1e-5
-because a lowest-level S(q) - 1 falls as exp(-q^2/2).
+E = (1/2A) sum_{q != 0} V(q) (S(q) - 1) + xi/2 per electron, xi the Madelung self-energy of the cell. The sum over the
+half-plane counts each wave twice. Cutting it sharply would add noise; a soft window erfc(|q|_g - 6)/2 leaves a bias
+below 1e-5 because a lowest-level S(q) - 1 falls as exp(-q^2/2).
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
 """Madelung self-energy of a charge with its periodic images and a neutralising background.
 
 xi = lim_{r -> 0} [ (1/A) sum_{q != 0} V(q) e^{iq.r} - V(r) ] for V(r) = 1/sqrt(r.g_eps.r). The energy per electron of
-a torus carries xi/2. For the unit square xi sqrt(A) = 4 zeta(1/2) beta(1/2) = -3.900264920001956 (Bonsall and Maradudin,
-Phys. Rev. B 15, 1959 (1977); Ewald, Ann. Phys. 369, 253 (1921)).
+a torus carries xi/2. For the unit square xi sqrt(A) = 4 zeta(1/2) beta(1/2) = -3.900264920001956 (Bonsall and
+Maradudin, Phys. Rev. B 15, 1959 (1977); Ewald, Ann. Phys. 369, 253 (1921)).
 """
 
 from __future__ import annotations

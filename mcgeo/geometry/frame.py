@@ -47,7 +47,7 @@ class TorusFrame:
         imag = self.isotropic.tau.imag
         if imag > largest:
             raise GeometryError(
-                f"the cell is too elongated for this state: in the state's own metric its reduced Im(tau) is {imag:.4g}, "
+                f"the cell is too elongated for this state: its reduced Im(tau) in the state's metric is {imag:.4g}; "
                 f"at most {largest:g} works; choose a less extreme cell or metric"
             )
 

@@ -1,10 +1,10 @@
 """Eight walkers side by side: a vector type of eight lanes for compiled kernels.
 
 A kernel written with these values advances eight walkers at once, one per lane. ``load`` and ``store`` move row
-``i`` of a C-contiguous array of shape (n, 8); the operators + - * / & | ^ and comparisons act lane by lane. The compiler
-maps a value to one register where the processor has registers of 512 bits, and to two or four smaller ones
-where it has not: the same chain, only slower. With the compiler switched off (``NUMBA_DISABLE_JIT=1``) the same
-names act on NumPy arrays of shape (8,).
+``i`` of a C-contiguous array of shape (n, 8); the operators + - * / & | ^ and comparisons act lane by lane. The
+compiler maps a value to one register where the processor has registers of 512 bits, and to two or four smaller ones
+where it has not: the same chain, only slower. With the compiler switched off (``NUMBA_DISABLE_JIT=1``) the same names
+act on NumPy arrays of shape (8,).
 """
 
 from __future__ import annotations
@@ -60,7 +60,7 @@ if numba.config.DISABLE_JIT:
 
 else:
 
-    class _LaneType(types.Type):  # type: ignore[misc]
+    class _LaneType(types.Type):
         def __init__(self, name: str, element: Any) -> None:
             super().__init__(name=name)
             self.element = element
@@ -70,7 +70,7 @@ else:
     _MASK = _LaneType("mcgeo_mask_lanes", ir.IntType(1))
 
     @register_model(_LaneType)
-    class _LaneModel(models.PrimitiveModel):  # type: ignore[misc]
+    class _LaneModel(models.PrimitiveModel):
         def __init__(self, manager: Any, frontend: Any) -> None:
             super().__init__(manager, frontend, ir.VectorType(frontend.element, LANES))
 

@@ -1,8 +1,8 @@
 """Density waves rho_q = sum_j exp(-i q.r_j) of eight walkers at all wavevectors of a half-plane.
 
 In units of the cell, q.r = 2 pi (n1 a + n2 b). For each n1 the half-integer c nearest to n1 Re(tau) is split off,
-q.r = 2 pi [(n1 a + c b) + k b] with k = n2 - c, so that the disk |q| < q_max is nearly symmetric in k for every cell. The
-products of cosines and sines of the two parts are summed once and serve +k and -k together.
+q.r = 2 pi [(n1 a + c b) + k b] with k = n2 - c, so that the disk |q| < q_max is nearly symmetric in k for every cell.
+The products of cosines and sines of the two parts are summed once and serve +k and -k together.
 """
 
 from __future__ import annotations

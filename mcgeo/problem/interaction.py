@@ -1,7 +1,7 @@
 """Pair interactions as functions of the wavevector.
 
-V(q) is the two-dimensional Fourier transform of V(r), in e^2/(4 pi eps l_B) times l_B^2; V(r) = 1/r has V(q) = 2 pi/q. The
-uniform background removes q = 0. To add an interaction: one class with the three members below, one line in
+V(q) is the two-dimensional Fourier transform of V(r), in e^2/(4 pi eps l_B) times l_B^2; V(r) = 1/r has V(q) = 2
+pi/q. The uniform background removes q = 0. To add an interaction: one class with the three members below, one line in
 `INTERACTIONS`, one model in the configuration.
 """
 
@@ -85,7 +85,7 @@ class Gaussian:
             points = lattice_points(lattice.vectors, 9.0 * self.range)
             total = np.sum(np.exp(-0.5 * np.sum(points**2, axis=-1) / self.range**2)) / self.range**2
             return float(total - 2.0 * math.pi / cell.area)
-        waves = lattice_points(2.0 * math.pi * np.linalg.inv(lattice.vectors).T, 9.0 / self.range)
+        waves = lattice_points(np.asarray(2.0 * math.pi * np.linalg.inv(lattice.vectors).T), 9.0 / self.range)
         return float(np.sum(self.potential(waves)) / cell.area - 1.0 / self.range**2)
 
 

@@ -8,7 +8,6 @@ from scipy.special import eval_laguerre
 
 from mcgeo.geometry.metric import UnimodularMetric
 
-
 LOWEST = 0
 
 

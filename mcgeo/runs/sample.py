@@ -16,8 +16,8 @@ from mcgeo.runs.build import schedule_from, torus_frame, torus_states
 from mcgeo.runs.config import Config, differing_keys, resolved
 from mcgeo.runs.liquid import Blocks, Liquid
 from mcgeo.runs.progress import Progress, say
-from mcgeo.runs.storage import read_liquid, write_liquid
 from mcgeo.runs.signals import StopFlag, stop_on_signals
+from mcgeo.runs.storage import read_liquid, write_liquid
 from mcgeo.sampling.chain import equilibrated, next_block
 from mcgeo.sampling.measurement import BlockRecord, Interrupted, torus_measurement
 

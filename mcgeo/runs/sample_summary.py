@@ -35,8 +35,9 @@ def diagnostics_summary(liquid: Liquid) -> dict[str, Any]:
 def sample_summary(liquid: Liquid) -> dict[str, Any]:
     """The JSON object of ``sample``.
 
-    ``energy_torus`` is the energy of the sampled state on its cell; ``energy_plane`` that of the infinite liquid from the pair
-    occupations, orbit and hole having the state's metric, in the lowest level, for the configured interaction.
+    ``energy_torus`` is the energy of the sampled state on its cell; ``energy_plane`` that of the infinite liquid from
+    the pair occupations, orbit and hole having the state's metric, in the lowest level, for the configured
+    interaction.
     """
     interaction = interaction_from(liquid.resolved["problem"]["interaction"])
     occupations = liquid.occupations

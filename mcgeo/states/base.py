@@ -39,46 +39,59 @@ class WalkerGroup(Protocol):
 
 
 class TrialState(Protocol):
-    """A lowest-level trial state on a torus, isotropic in its own metric.
+    """A lowest-level trial state on a torus, isotropic in its own metric."""
 
-    Attributes
-    ----------
-    kind : str
-        Its key in the configuration.
-    label : str
-        Words for reports and figures.
-    filling : Fraction
-    statistics : str
-        ``fermions`` or ``bosons``.
-    n_electrons : int
-    frame : TorusFrame
-    shift : int or None
-        s in S(q) = q^2/2 + (s - 2) q^4/8 + ..., None for a gapless liquid (no q^4 rule).
-    first_occupied : int
-        Pair occupations n_m vanish exactly for m below this.
-    proposals_per_sweep : int
-        Proposals per electron and sweep.
-    best_acceptance, first_step : float
-        Where to tune the step to, and where to start (l_B).
-    sweeps_per_measurement : int
-        Default distance of two measurements.
-    cost_per_pair : float
-        Rough time of a proposal per other electron, in units of a Laughlin pair factor.
-    """
+    @property
+    def kind(self) -> str:
+        """Its key in the configuration."""
 
-    kind: str
-    label: str
-    filling: Fraction
-    statistics: str
-    n_electrons: int
-    frame: TorusFrame
-    shift: int | None
-    first_occupied: int
-    proposals_per_sweep: int
-    best_acceptance: float
-    first_step: float
-    sweeps_per_measurement: int
-    cost_per_pair: float
+    @property
+    def label(self) -> str:
+        """Words for reports and figures."""
+
+    @property
+    def filling(self) -> Fraction:
+        """Electrons per flux quantum."""
+
+    @property
+    def statistics(self) -> str:
+        """``fermions`` or ``bosons``."""
+
+    @property
+    def n_electrons(self) -> int:
+        """Number of electrons."""
+
+    @property
+    def frame(self) -> TorusFrame:
+        """Cell and metric."""
+
+    @property
+    def shift(self) -> int | None:
+        """s in S(q) = q^2/2 + (s - 2) q^4/8 + ..., None for a gapless liquid (no q^4 rule)."""
+
+    @property
+    def first_occupied(self) -> int:
+        """Pair occupations n_m vanish exactly for m below this."""
+
+    @property
+    def proposals_per_sweep(self) -> int:
+        """Proposals per electron and sweep."""
+
+    @property
+    def best_acceptance(self) -> float:
+        """Where to tune the step to."""
+
+    @property
+    def first_step(self) -> float:
+        """Where to start the tuning, side of the square proposal in l_B."""
+
+    @property
+    def sweeps_per_measurement(self) -> int:
+        """Default distance of two measurements."""
+
+    @property
+    def cost_per_pair(self) -> float:
+        """Rough time of a proposal per other electron, in units of a Laughlin pair factor."""
 
     def group(self, a: Array, b: Array, words: NDArray[np.uint64]) -> WalkerGroup:
         """Eight walkers at the given fractions; the arrays are taken over."""

@@ -1,7 +1,8 @@
 """Value, gradient and Hessian of an energy surface at a metric, for every block sample at once.
 
-Derivatives are taken in the flat (normal) coordinates (x, y) about the metric, g(x, y) = `UnimodularMetric.displaced`, by
-central differences of fourth order: error about h^4/30 of the sixth derivative, rounding about 1e-15/h^2.
+Derivatives are taken in the flat (normal) coordinates (x, y) about the metric, g(x, y) =
+`UnimodularMetric.displaced`, by central differences of fourth order: error about h^4/30 of the sixth derivative,
+rounding about 1e-15/h^2.
 """
 
 from __future__ import annotations

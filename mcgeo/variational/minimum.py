@@ -68,8 +68,8 @@ class Minimum:
 def find_minimum(surface: EnergySurface) -> Minimum:
     """Global search on rings about the orbit metric and the isotropic one, then Newton steps, then jackknife.
 
-    A replica's minimum is one Newton step from the mean's: exact to second order in deviations that are a small part of the
-    error. Angles of problems whose axes coincide are fixed by symmetry and come out without error.
+    A replica's minimum is one Newton step from the mean's: exact to second order in deviations that are a small part
+    of the error. Angles of problems whose axes coincide are fixed by symmetry and come out without error.
     """
     metric, interior = _polished(surface, _coarse_minimum(surface))
     expansion = local_expansion(surface, metric)

@@ -1,7 +1,8 @@
 """How far the hole follows a weak anisotropy of the mass, and what that says of the isotropic shape.
 
-For weak anisotropy E = K Q^2/2 - C Q Q_m cos(2 theta - 2 theta_m) + ..., so Q* = (C/K) Q_m: the response dQ*/dQ_m at zero is C/K. K is
-the stiffness of the isotropic hole in the isotropic problem. K <= 0 says that the isotropic hole is no minimum.
+For weak anisotropy E = K Q^2/2 - C Q Q_m cos(2 theta - 2 theta_m) + ..., so Q* = (C/K) Q_m: the response dQ*/dQ_m at
+zero is C/K. K is the stiffness of the isotropic hole in the isotropic problem. K <= 0 says that the isotropic hole is
+no minimum.
 """
 
 from __future__ import annotations
@@ -67,8 +68,9 @@ def mass_response(occupations: PairOccupations, problem: Problem) -> Response:
 def shape_verdict(problem: Problem, minimum: Minimum, response: Response) -> str:
     """`stable`, `soft` or `unstable`.
 
-    ``unstable``: no interior minimum, or the isotropic hole is no minimum of the isotropic problem (its stiffness is not positive, or
-    a symmetric problem has its minimum elsewhere). ``soft``: a response above one, the hole exaggerates the mass.
+    ``unstable``: no interior minimum, or the isotropic hole is no minimum of the isotropic problem (its stiffness is
+    not positive, or a symmetric problem has its minimum elsewhere). ``soft``: a response above one, the hole
+    exaggerates the mass.
     """
     elsewhere = problem.is_symmetric and minimum.metric.stretch > 0.0
     if not minimum.interior or elsewhere or response.isotropic_stiffness.value <= 0.0:
