@@ -119,4 +119,4 @@ def jackknife_error(replicas: ArrayLike) -> Array:
 def jackknife(function: Callable[[Array], Array | float], samples: Array) -> tuple[Array, Array]:
     """Value of ``function`` at the mean of the samples, and its jackknife error."""
     value = np.asarray(function(samples.mean(axis=0)))
-    return value, jackknife_error([function(mean) for mean in jackknife_means(samples)])
+    return value, jackknife_error(np.array([function(mean) for mean in jackknife_means(samples)]))

@@ -35,7 +35,7 @@ def madelung_self_energy(cell: Cell, dielectric_metric: UnimodularMetric = ISOTR
     area = lattice.area
     split = math.sqrt(math.pi / area)
     direct = _lattice_lengths(lattice.vectors, _CUT / split)
-    dual = _lattice_lengths(2.0 * math.pi * np.linalg.inv(lattice.vectors).T, 2.0 * split * _CUT)
+    dual = _lattice_lengths(np.asarray(2.0 * math.pi * np.linalg.inv(lattice.vectors).T), 2.0 * split * _CUT)
     near = np.sum(erfc(split * direct) / direct)
     far = 2.0 * math.pi / area * np.sum(erfc(dual / (2.0 * split)) / dual)
     return float(near + far - 2.0 * split / math.sqrt(math.pi) - 2.0 * math.sqrt(math.pi) / (split * area))

@@ -2,8 +2,8 @@
 
 With z = L1 (a + b tau), w = exp(2 pi i (a + b tau)) and q = exp(i pi tau), the pair factor of two electrons is
 
-    |s|^2 ~ |w_i - w_j|^2 |w_j - q^2 w_i|^2 |w_i - q^2 w_j|^2 |w_i|^-3 |w_j|^-3 exp(-2 pi Im(tau) (b_i - b_j)^2) x far
-    images,
+    |s|^2 ~ |w_i - w_j|^2 |w_j - q^2 w_i|^2 |w_i - q^2 w_j|^2 |w_i|^-3 |w_j|^-3
+            x exp(-2 pi Im(tau) (b_i - b_j)^2) x far images,
 
 the product form of theta_1 (Whittaker and Watson, A Course of Modern Analysis, section 21.3; DLMF 20.5.1) with its
 first three factors written out. The far images of all electrons at once follow from power sums P_k = sum_j w_j^k and

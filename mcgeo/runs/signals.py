@@ -17,7 +17,7 @@ class StopFlag(threading.Event):
 
 @contextmanager
 def stop_on_signals() -> Iterator[StopFlag]:
-    """A flag that the two signals set, for the time of the context; in another thread than the main one it stays unset."""
+    """A flag that the two signals set, within the context; in another thread than the main one it stays unset."""
     flag = StopFlag()
 
     def request(number: int, frame: FrameType | None) -> None:

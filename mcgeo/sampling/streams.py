@@ -13,7 +13,7 @@ def walker_sequence(seed: int, walker: int, component: int = 0) -> np.random.See
 
 def generator_words(sequence: np.random.SeedSequence) -> NDArray[np.uint64]:
     """The four words that start a walker's generator inside the kernels, shape (4,)."""
-    return sequence.generate_state(4, dtype=np.uint64)
+    return np.asarray(sequence.generate_state(4, dtype=np.uint64), dtype=np.uint64)
 
 
 def start_generator(sequence: np.random.SeedSequence) -> np.random.Generator:

@@ -1,13 +1,14 @@
 """Energy per electron over the metric of the hole.
 
-    E(g) = 1/2 int d^2q/(2 pi)^2 v(q) [Sbar(|q|_g) - 1],   v(q) = V(q) F_n(q; g_L)^2,  Sbar(k) - 1 = e nu + 4 nu sum_m
-    c_m L_m(k^2) exp(-k^2/2).
+    E(g) = 1/2 int d^2q/(2 pi)^2 v(q) [Sbar(|q|_g) - 1],   v(q) = V(q) F_n(q; g_L)^2,
+    Sbar(k) - 1 = e nu + 4 nu sum_m c_m L_m(k^2) exp(-k^2/2).
 
 The constant e nu gives a background that does not depend on g. For the rest put q = S k with S^T S = g, so that |q|_g
 = |k|: the correlations are then functions of |k| on one fixed radial grid, and a metric enters only through the
 weights
 
-    A(k) = k/(8 pi^2) int_0^{2 pi} dphi v(S k(phi)),       E = background + int dk A(k) delta(k),  delta = Sbar - 1 - e nu.
+    A(k) = k/(8 pi^2) int_0^{2 pi} dphi v(S k(phi)),
+    E = background + int dk A(k) delta(k),       delta = Sbar - 1 - e nu.
 
 One set of weights gives the energy of every block sample.
 """
