@@ -12,18 +12,6 @@ from mcgeo.errors import ConfigError
 from mcgeo.runs.yaml_source import MAX_BYTES, YamlSource, dotted, load_yaml, parse_yaml
 
 
-@pytest.fixture
-def write(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
-
-    def _write(content: str | bytes) -> str:
-        raw = content.encode() if isinstance(content, str) else content
-        (tmp_path / "run.yaml").write_bytes(raw)
-        return "run.yaml"
-
-    return _write
-
-
 def faults(path: str) -> list[str]:
     with pytest.raises(ConfigError) as caught:
         load_yaml(path)

@@ -1,0 +1,189 @@
+"""Random configurations, whole and damaged."""
+
+import copy
+import json
+import re
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from mcgeo.errors import ConfigError
+from mcgeo.runs.config import config_from_resolved, load_config, resolved
+
+angles = st.floats(-720, 720)
+metrics = st.fixed_dictionaries({}, optional={"stretch": st.floats(0, 5), "angle_degrees": angles})
+positive = st.floats(1e-6, 1e6)
+
+
+@st.composite
+def states(draw, disk):
+    kind = draw(st.sampled_from(["laughlin", "moore_read"] + ([] if disk else ["fermi_sea"])))
+    state = {"kind": kind, "electrons": 2 * draw(st.integers(1, 30)), "metric": draw(metrics)}
+    fermions = draw(st.booleans())
+    if kind == "laughlin":
+        state["exponent"] = draw(st.sampled_from([3, 5, 11] if fermions else [1, 2, 12]))
+    elif kind == "moore_read":
+        state["filling"] = "1/2" if fermions else draw(st.sampled_from([1, "1"]))
+        if not disk:
+            state["sector"] = draw(st.sampled_from(["all", 1, 2, 3]))
+    else:
+        state["filling"] = draw(st.sampled_from(["1/2", "1/4"]))
+        if draw(st.booleans()):
+            points = st.lists(
+                st.tuples(st.integers(-9, 9), st.integers(-9, 9)), min_size=2, max_size=9, unique=True
+            )
+            state["points"] = [list(point) for point in draw(points)]
+            state["electrons"] = len(state["points"])
+    state["conjugate"] = (fermions or kind == "fermi_sea") and not disk and draw(st.booleans())
+    return state
+
+
+@st.composite
+def samplings(draw):
+    sampling = draw(
+        st.fixed_dictionaries(
+            {"sweeps": st.integers(2, 10**6)},
+            optional={
+                "walkers": st.integers(1, 100),
+                "equilibration": st.integers(0, 100),
+                "step": st.none() | positive,
+                "seed": st.none() | st.integers(0, 2**128),
+                "threads": st.none() | st.integers(1, 64),
+                "q_max": st.floats(4, 12),
+            },
+        )
+    )
+    sampling["blocks"] = draw(st.integers(2, sampling["sweeps"]))
+    sampling["measure_every"] = draw(st.none() | st.integers(1, sampling["sweeps"] // sampling["blocks"]))
+    return sampling
+
+
+@st.composite
+def tensors(draw):
+    xx, yy, correlation = draw(positive), draw(positive), draw(st.floats(-0.9, 0.9))
+    xy = correlation * (xx * yy) ** 0.5
+    return [[xx, xy], [xy, yy]]
+
+
+masses = st.one_of(
+    st.fixed_dictionaries({"ratio": positive}, optional={"angle_degrees": angles}),
+    st.fixed_dictionaries({"along_axes": st.lists(positive, min_size=2, max_size=2)}),
+    st.fixed_dictionaries({"tensor": tensors()}),
+)
+interactions = st.just({"kind": "coulomb"}) | st.fixed_dictionaries(
+    {"kind": st.just("gaussian"), "range": positive}
+)
+problems = st.fixed_dictionaries(
+    {}, optional={"mass": masses, "interaction": interactions, "level": st.integers(0, 1)}
+)
+
+
+@st.composite
+def scans(draw):
+    start = draw(st.floats(-6, 5))
+    stretch = {
+        "from": start,
+        "to": draw(st.floats(start, 6, exclude_min=True)),
+        "points": draw(st.integers(3, 99)),
+    }
+    return {"stretch": stretch, "angle_degrees": draw(st.none() | angles)}
+
+
+@st.composite
+def configurations(draw):
+    disk = draw(st.booleans())
+    data = {"state": draw(states(disk)), "sampling": draw(samplings())}
+    if disk:
+        data["geometry"] = {"kind": "disk"}
+    elif draw(st.booleans()):
+        cells = st.fixed_dictionaries({"tau": st.tuples(st.floats(-3, 3), positive).map(list)})
+        data["cell"] = draw(cells | st.just({"shape": "square"}))
+    for name, group in (("problem", problems), ("scan", scans())):
+        if draw(st.booleans()):
+            data[name] = draw(group)
+    return data
+
+
+@settings(max_examples=200, deadline=None)
+@given(configurations())
+def test_valid_configurations_survive_resolving(tmp_path_factory, data):
+    path = tmp_path_factory.getbasetemp() / "valid.yaml"
+    path.write_text(json.dumps(data), encoding="utf-8")
+    config = load_config(path)
+    plain = resolved(config)
+    assert json.loads(json.dumps(plain, allow_nan=False)) == plain
+    again = config_from_resolved(plain)
+    assert again == config
+    assert resolved(again) == plain
+    path.write_text(json.dumps(plain), encoding="utf-8")
+    assert load_config(path) == config
+
+
+junk = st.one_of(
+    st.none(),
+    st.booleans(),
+    st.integers(-3, 3),
+    st.integers(),
+    st.floats(),
+    st.text(max_size=5),
+    st.sampled_from(["1", "1e3", "1/3", "all", "disk", "laughlin", "\ud800", "a\nb"]),
+    st.lists(st.integers(0, 2), max_size=3),
+    st.dictionaries(
+        st.sampled_from(["kind", "tau", "ratio", "laughlin", "x"]), st.integers(0, 2), max_size=2
+    ),
+)
+
+
+def _nodes(value):
+    children = (
+        value.items() if isinstance(value, dict) else enumerate(value) if isinstance(value, list) else ()
+    )
+    for key, child in children:
+        yield value, key
+        yield from _nodes(child)
+
+
+@st.composite
+def damaged(draw):
+    data = copy.deepcopy(draw(configurations()))
+    for _ in range(draw(st.integers(1, 4))):
+        places = list(_nodes(data))
+        if not places:
+            break
+        parent, key = draw(st.sampled_from(places))
+        action = draw(st.sampled_from(["replace", "remove", "add"]))
+        if action == "replace":
+            parent[key] = draw(junk)
+        elif action == "remove":
+            del parent[key]
+        elif isinstance(parent, dict):
+            parent[
+                draw(st.sampled_from(["kind", "tau", "ratio", "sector", "laughlin", "from_", "a b", ""]))
+            ] = draw(junk)
+    return data
+
+
+@settings(max_examples=400, deadline=None)
+@given(damaged())
+def test_damaged_configurations_are_read_or_refused_in_plain_words(tmp_path_factory, data):
+    path = tmp_path_factory.getbasetemp() / "damaged.yaml"
+    text = json.dumps(data).replace("-Infinity", "-.inf").replace("Infinity", ".inf").replace("NaN", ".nan")
+    path.write_text(text, encoding="utf-8")
+    try:
+        config = load_config(path)
+    except ConfigError as error:
+        assert error.faults
+        columns = []
+        for line in error.faults:
+            match = re.fullmatch(rf"{re.escape(str(path))}:1:([1-9]\d*): \S.*: \S.*", line)
+            assert match, line
+            assert "pydantic" not in line
+            assert "Input should" not in line
+            assert line.encode("utf-8")
+            columns.append(int(match[1]))
+        assert columns == sorted(columns)
+        with pytest.raises(ConfigError):
+            config_from_resolved(data)
+    else:
+        assert config_from_resolved(resolved(config)) == config
