@@ -1,6 +1,167 @@
-"""``plot``."""
+"""``plot``: one figure, with its numbers, from a result file alone."""
+
+from __future__ import annotations
+
 import argparse
+import json
+from collections.abc import Callable, Mapping
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+import mcgeo
+from mcgeo.estimate.pair_correlation import counted_pair_correlation, radial_pair_correlation
+from mcgeo.estimate.statistics import mean_estimate
+from mcgeo.estimate.structure_factor import shell_means
+from mcgeo.report import figures
+from mcgeo.report.figures import MeasuredShape
+from mcgeo.report.tables import map_table
+from mcgeo.runs.config import load_config
+from mcgeo.runs.hole import hole_image
+from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.sample import LIQUID_FILE
+from mcgeo.runs.scan import scan
+from mcgeo.runs.storage import read_liquid
+from mcgeo.sampling.measurement import BIN_WIDTH
+
+Drawing = tuple[Axes, Mapping[str, Any]]
+
+_DEFAULT_FORMATS = ("pdf", "png")
+_SHELL_WIDTH = 0.05
+_LARGEST_SHOWN_Q = 6.0
+_ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 
 
 def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
-    return "", 0
+    """``mcgeo plot``."""
+    path = arguments.file / LIQUID_FILE if arguments.file.is_dir() else arguments.file
+    liquid = read_liquid(path)
+    keys = dict(liquid.resolved)
+    if arguments.problem is not None:
+        keys.update(load_config(arguments.problem).model_dump(mode="json", by_alias=True, include={"problem", "scan"}))
+    axes, table = DRAWINGS[arguments.what](liquid, keys)
+    figure = axes.get_figure(root=True)
+    assert isinstance(figure, Figure)
+    metadata = {
+        "mcgeo": mcgeo.__version__,
+        "figure": arguments.what,
+        "configuration": json.dumps({key: keys[key] for key in ("state", "problem")}),
+        "seed": str(keys["sampling"]["seed"]),
+    }
+    written = figures.save_figure(
+        figure,
+        (arguments.out or path.parent) / arguments.what,
+        table,
+        formats=tuple(arguments.format or _DEFAULT_FORMATS),
+        metadata=metadata,
+    )
+    return "\n".join(str(file) for file in written), 0
+
+
+def _hole(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    found = scan(liquid, keys["problem"], keys["scan"])
+    image = hole_image(liquid.occupations, found.problem, found.minimum)
+    axes = figures.hole_map(
+        image.x,
+        image.y,
+        image.g,
+        contour_level=image.level,
+        contour_radius=image.ellipse.radius if image.ellipse else 1.0,
+        mass_metric=MeasuredShape.exact(found.problem.mass_metric),
+        hole_metric=MeasuredShape(found.minimum.stretch, found.minimum.angle),
+        fitted_metric=MeasuredShape(image.stretch, image.angle) if image.ellipse else None,
+    )
+    return axes, map_table(image.x, image.y, image.g, ("x [l_B]", "y [l_B]", "g"))
+
+
+def _energy(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    found = scan(liquid, keys["problem"], keys["scan"])
+    curve, mass = found.curve, found.problem.mass_metric
+    axes = figures.energy_curve(
+        curve.stretch,
+        curve.energy,
+        curve.error,
+        minimum=found.minimum,
+        verdict=found.verdict,
+        mass_stretch=mass.stretch * float(np.cos(2.0 * (mass.angle - curve.angle))),
+        angle_degrees=float(np.degrees(curve.angle)),
+        difference_error=curve.difference_error,
+    )
+    table = {
+        "stretch": curve.stretch,
+        f"energy {_ENERGY}": curve.energy,
+        f"energy error {_ENERGY}": curve.error,
+        f"error of the difference to the minimum {_ENERGY}": curve.difference_error,
+    }
+    return axes, table
+
+
+def _structure(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    shown = liquid.norm < _LARGEST_SHOWN_Q
+    curve = shell_means(liquid.norm[shown], liquid.structure_samples[:, shown], _SHELL_WIDTH)
+    fit_q = np.linspace(0.0, _LARGEST_SHOWN_Q, 301)
+    fit_s = 1.0 + np.exp(-0.5 * fit_q**2) * (liquid.occupations.guiding_centre_structure(fit_q) - 1.0)
+    small_q = np.linspace(0.0, 1.2, 61)
+    axes = figures.structure_factor(
+        curve.x, curve.value, curve.error, fit_q=fit_q, fit_s=fit_s, small_q=(small_q, 0.5 * small_q**2)
+    )
+    return axes, {"q [1/l_B]": curve.x, "S": curve.value, "S error": curve.error, "fit q [1/l_B]": fit_q, "fit S": fit_s}
+
+
+def _correlation(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    counts = liquid.independent(liquid.blocks.pair_counts)
+    n = liquid.states[0].n_electrons
+    radii = np.linspace(0.0, liquid.frame.isotropic.largest_radius, 201)
+    curve = radial_pair_correlation(liquid.frame, liquid.q_max, n, liquid.structure_samples, radii)
+    counted = counted_pair_correlation(liquid.frame, n, BIN_WIDTH, counts, liquid.configurations_per_count)
+    axes = figures.radial_pair_correlation(
+        curve.x,
+        curve.value,
+        curve.error,
+        histogram_r=counted.x,
+        histogram_g=counted.value,
+        histogram_error=counted.error,
+    )
+    table = {
+        "r [l_B]": curve.x,
+        "g": curve.value,
+        "g error": curve.error,
+        "counted r [l_B]": counted.x,
+        "counted g": counted.value,
+        "counted g error": counted.error,
+    }
+    return axes, table
+
+
+def _occupations(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    found = liquid.occupations
+    estimates = [found.occupation(index) for index in range(len(found.m))]
+    n, error = np.array([e.value for e in estimates]), np.array([e.error for e in estimates])
+    return figures.occupations(found.m, n, error), {"m": found.m, "n_m": n, "n_m error": error}
+
+
+def _trace(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    blocks = liquid.blocks.trace.mean(axis=(0, 3))
+    overall = mean_estimate(liquid.independent(blocks))
+    axes = figures.block_trace(
+        blocks,
+        mean=overall.value,
+        error=overall.error,
+        tau=liquid.diagnostics.autocorrelation_time,
+        label=r"Coulomb energy of the cell $/\,(e^2/4\pi\varepsilon\ell_B)$",
+    )
+    table = {f"walker {index} {_ENERGY}": column for index, column in enumerate(blocks.T)}
+    return axes, {"block": np.arange(1, len(blocks) + 1), **table}
+
+
+DRAWINGS: dict[str, Callable[[Liquid, Mapping[str, Any]], Drawing]] = {
+    "hole": _hole,
+    "energy": _energy,
+    "structure": _structure,
+    "correlation": _correlation,
+    "occupations": _occupations,
+    "trace": _trace,
+}

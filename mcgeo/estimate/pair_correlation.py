@@ -93,32 +93,45 @@ def bulk_radial_pair_correlation(occupations: PairOccupations, radii: Array) -> 
     return Curve(radii, uncorrelated + samples.mean(axis=0), jackknife_error(jackknife_means(samples)))
 
 
-def bulk_pair_correlation_map(
+def bulk_pair_correlation_maps(
     occupations: PairOccupations,
+    coefficients: Array,
     hole_metric: UnimodularMetric,
     orbit_metric: UnimodularMetric,
     level: int,
     x: Array,
     y: Array,
 ) -> Array:
-    """g(x, y) of the electrons of the infinite liquid, hole and orbit of different shapes; shape (len(y), len(x)).
+    """g(x, y) of the electrons of the infinite liquid, hole and orbit of different shapes.
 
     The electron's own orbit is folded in: S(q) - 1 = F_n(q; g_L)^2 (Sbar(|q|_g) - 1) for q != 0, and
     g(r) = 1 + (2 pi/nu) int d^2q/(2 pi)^2 (S(q) - 1) cos(q.r).
+
+    Parameters
+    ----------
+    coefficients : ndarray, shape (n, n_m)
+        Sets of c_m: the mean, or jackknife means.
+    x, y : ndarray, shapes (n_x,) and (n_y,)
+
+    Returns
+    -------
+    ndarray, shape (n, n_y, n_x)
     """
     # In the orbit's coordinates q = S_L p the form factor is isotropic and cuts the integral at |p| = 9.
     nodes, weights = np.polynomial.legendre.leggauss(_RADIAL_NODES)
     p = 4.5 * (nodes + 1.0)
     phi = math.pi * (np.arange(_N_ANGLES) + 0.5) / _N_ANGLES
-    q = p[:, None, None] * (np.stack([np.cos(phi), np.sin(phi)], axis=-1) @ orbit_metric.linear_map.T)
+    q = (p[:, None, None] * (np.stack([np.cos(phi), np.sin(phi)], axis=-1) @ orbit_metric.linear_map.T)).reshape(-1, 2)
     form_factor = np.exp(-0.5 * p**2) * eval_laguerre(level, 0.5 * p**2) ** 2
-    norm = np.sqrt(hole_metric.wavevector_norm_sq(q))
-    structure = occupations.guiding_centre_structure(norm.ravel()).reshape(norm.shape) - 1.0
-    measure = (4.5 * weights * p * form_factor)[:, None] * structure
     # (2 pi/nu)/(2 pi)^2 times the angular step 2 pi/n.
-    measure /= float(occupations.filling) * _N_ANGLES
-    # cos(q.r) = cos(qx x) cos(qy y) - sin sin: the map is two matrix products.
-    qx, qy, weight = q[..., 0].ravel(), q[..., 1].ravel(), measure.ravel()
-    even = (np.cos(np.outer(y, qy)) * weight) @ np.cos(np.outer(qx, x))
-    odd = (np.sin(np.outer(y, qy)) * weight) @ np.sin(np.outer(qx, x))
-    return np.asarray(1.0 + even - odd)
+    measure = np.repeat(4.5 * weights * p * form_factor, _N_ANGLES) / (float(occupations.filling) * _N_ANGLES)
+    basis = occupations.basis(np.sqrt(hole_metric.wavevector_norm_sq(q)))
+    limit = occupations.statistics_sign * float(occupations.filling)
+    # cos(q.r) = cos(qx x) cos(qy y) - sin sin: a map is two matrix products.
+    cos_x, sin_x = np.cos(np.outer(q[:, 0], x)), np.sin(np.outer(q[:, 0], x))
+    cos_y, sin_y = np.cos(np.outer(y, q[:, 1])), np.sin(np.outer(y, q[:, 1]))
+    maps = [
+        1.0 + (cos_y * weight) @ cos_x - (sin_y * weight) @ sin_x
+        for weight in (measure * (limit + c @ basis) for c in coefficients)
+    ]
+    return np.array(maps)

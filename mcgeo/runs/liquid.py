@@ -17,6 +17,7 @@ from mcgeo.estimate.torus_energy import torus_energy
 from mcgeo.problem.interaction import Interaction
 from mcgeo.runs.build import schedule_from, torus_frame, torus_states
 from mcgeo.sampling.chain import ChainState
+from mcgeo.sampling.measurement import configurations_counted
 
 Array = NDArray[np.float64]
 
@@ -103,6 +104,11 @@ class Liquid:
     def independent(self, blocks: Array) -> Array:
         """Independent samples of block means of shape (n_blocks, n_walkers, ...)."""
         return independent_samples(blocks, self.schedule.measurements_per_block / self.time_in_measurements)
+
+    @property
+    def configurations_per_count(self) -> int:
+        """Configurations behind one sample of the pair counts: a block's, also where a walker's blocks are averaged."""
+        return configurations_counted(self.schedule.measurements_per_block) * len(self.states)
 
     @cached_property
     def structure_samples(self) -> Array:

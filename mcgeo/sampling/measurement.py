@@ -16,9 +16,14 @@ from mcgeo.states.base import TrialState, WalkerGroup
 
 Array = NDArray[np.float64]
 
-_BINS_PER_LENGTH = 10
+BIN_WIDTH = 0.1
 # Pair distances are a second look at what |rho_q|^2 already holds; they need not be taken every time.
 _MEASUREMENTS_PER_HISTOGRAM = 4
+
+
+def configurations_counted(n_measurements: int) -> int:
+    """Number of configurations in the pair counts of a block of measurements."""
+    return -(-n_measurements // _MEASUREMENTS_PER_HISTOGRAM)
 
 
 class Interrupted(Exception):
@@ -34,7 +39,7 @@ class BlockRecord:
     structure : ndarray, shape (n_walkers, n_waves)
         S(q) = |rho_q|^2 / N.
     pair_counts : ndarray of int64, shape (n_walkers, n_bins)
-        Pair distances summed over ``n_histograms`` configurations.
+        Pair distances in bins of `BIN_WIDTH` l_B, summed over `configurations_counted`.
     trace : ndarray, shape (n_walkers, n_measurements)
         The weighted sum of S(q), one value per measurement.
     accepted : ndarray, shape (n_walkers,)
@@ -59,15 +64,6 @@ class TorusMeasurement:
     tables: WaveTables
     trace_weights: Array
     n_bins: int
-
-    @property
-    def bin_width(self) -> float:
-        """Width of the pair-distance bins in l_B."""
-        return 1.0 / _BINS_PER_LENGTH
-
-    def n_histograms(self, n_measurements: int) -> int:
-        """Number of configurations in a block's pair counts."""
-        return -(-n_measurements // _MEASUREMENTS_PER_HISTOGRAM)
 
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
@@ -98,7 +94,7 @@ class TorusMeasurement:
             trace[k] = sums.scalar[0]
             if k % _MEASUREMENTS_PER_HISTOGRAM == 0:
                 add_pair_counts(
-                    group.a, group.b, cell.tau.real, cell.tau.imag, cell.side, self.bin_width, counts
+                    group.a, group.b, cell.tau.real, cell.tau.imag, cell.side, BIN_WIDTH, counts
                 )
         proposals = n_measurements * sweeps_between * n * self.state.proposals_per_sweep
         return BlockRecord(
@@ -114,7 +110,7 @@ def torus_measurement(state: TrialState, waves: Waves, trace_weights: Array) -> 
     """Plan for the waves of `TorusFrame.waves`; ``trace_weights`` (shape (n_waves,)) define the scalar trace."""
     cell = state.frame.isotropic
     tables = wave_tables(waves.integers, cell.tau.real)
-    n_bins = int(cell.largest_radius * _BINS_PER_LENGTH)
+    n_bins = int(cell.largest_radius / BIN_WIDTH)
     return TorusMeasurement(state, waves, tables, np.asarray(trace_weights, dtype=float), n_bins)
 
 

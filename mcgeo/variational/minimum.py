@@ -133,9 +133,18 @@ def _polished(surface: EnergySurface, start: UnimodularMetric) -> tuple[Unimodul
         metric = metric.displaced(*step)
         if float(np.hypot(*step)) < _TOLERANCE:
             break
+    return _on_axis(metric, centre), True
+
+
+def _on_axis(metric: UnimodularMetric, mass_metric: UnimodularMetric) -> UnimodularMetric:
+    """Without what rounding has added to a circle, or to an axis that is the mass's by symmetry."""
     if metric.stretch < 10.0 * _TOLERANCE:
-        metric = ISOTROPIC
-    return metric, True
+        return ISOTROPIC
+    off = math.sinh(metric.stretch) * math.sin(2.0 * (metric.angle - mass_metric.angle))
+    if mass_metric.stretch == 0.0 or abs(off) > 10.0 * _TOLERANCE:
+        return metric
+    along = math.cos(2.0 * (metric.angle - mass_metric.angle)) > 0.0
+    return UnimodularMetric(metric.stretch if along else -metric.stretch, mass_metric.angle)
 
 
 def _position_errors(
