@@ -5,7 +5,6 @@ from __future__ import annotations
 import argparse
 import json
 from collections.abc import Callable, Mapping
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -108,7 +107,8 @@ def _structure(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     axes = figures.structure_factor(
         curve.x, curve.value, curve.error, fit_q=fit_q, fit_s=fit_s, small_q=(small_q, 0.5 * small_q**2)
     )
-    return axes, {"q [1/l_B]": curve.x, "S": curve.value, "S error": curve.error, "fit q [1/l_B]": fit_q, "fit S": fit_s}
+    table = {"q [1/l_B]": curve.x, "S": curve.value, "S error": curve.error, "fit q [1/l_B]": fit_q, "fit S": fit_s}
+    return axes, table
 
 
 def _correlation(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:

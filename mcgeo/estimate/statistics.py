@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -70,7 +71,7 @@ def mean_estimate(samples: ArrayLike) -> Estimate:
     return Estimate(float(x.mean()), float(x.std(ddof=1) / math.sqrt(len(x))), math.nan, float(len(x)))
 
 
-def independent_samples(blocks: Array, block_in_times: float) -> Array:
+def independent_samples(blocks: NDArray[Any], block_in_times: float) -> Array:
     """Samples that may be treated as independent.
 
     Parameters

@@ -50,7 +50,7 @@ class HoleImage:
 
 
 def hole_image(occupations: PairOccupations, problem: Problem, minimum: Minimum) -> HoleImage:
-    """Map, contour and fitted ellipse; the ellipse's errors come from the block samples and from the optimum's error."""
+    """Map, contour and fitted ellipse, with errors from the block samples and from the optimum's own error."""
     reach = _DISTANCES * np.sqrt(2.0 * np.pi / float(occupations.filling)) * problem.mass_metric.aspect_ratio**0.25
     x = np.linspace(-reach, reach, _GRID_POINTS)
     metric = minimum.metric

@@ -101,7 +101,7 @@ class Liquid:
         series = np.moveaxis(self.blocks.trace, 2, 1).reshape(n_components, n_walkers, -1)
         return float(np.nanmax([integrated_autocorrelation_time(x) for x in series] + [0.0])) or 1.0
 
-    def independent(self, blocks: Array) -> Array:
+    def independent(self, blocks: NDArray[Any]) -> Array:
         """Independent samples of block means of shape (n_blocks, n_walkers, ...)."""
         return independent_samples(blocks, self.schedule.measurements_per_block / self.time_in_measurements)
 
