@@ -6,6 +6,7 @@ Imports of the numerical libraries wait until a command needs them, so that ``--
 from __future__ import annotations
 
 import argparse
+import importlib
 import os
 import sys
 from collections.abc import Sequence
@@ -18,6 +19,16 @@ _EXIT_CODES = """exit codes:
   0 done, 2 usage or configuration, 3 finished but not converged,
   130 or 143 interrupted (whole blocks are kept), 1 a bug
 """
+
+
+_MODULES = {
+    "sample": "run",
+    "scan": "run",
+    "plot": "plot",
+    "check": "describe",
+    "info": "describe",
+    "schema": "describe",
+}
 
 
 def build_parser() -> argparse.ArgumentParser:
@@ -87,10 +98,9 @@ def _add_run_options(parser: argparse.ArgumentParser) -> None:
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code."""
     arguments = build_parser().parse_args(argv)
-    from mcgeo import commands
-
     try:
-        text, code = getattr(commands, f"run_{arguments.command}")(arguments)
+        module = importlib.import_module(f"mcgeo.commands.{_MODULES[arguments.command]}")
+        text, code = getattr(module, f"run_{arguments.command}")(arguments)
     except McgeoError as fault:
         print(fault, file=sys.stderr)
         return fault.exit_code
