@@ -149,7 +149,7 @@ def block_trace(blocks: Array, *, mean: float, error: float, tau: float, label: 
     -------
     Axes
     """
-    axes = new_axes() if axes is None else axes
+    axes = new_axes(height=3.2) if axes is None else axes
     n_blocks, n_walkers = blocks.shape
     number = np.arange(1, n_blocks + 1)
     axes.plot(number, blocks, color=GREY, linewidth=0.4, alpha=0.4, rasterized=True, zorder=1)
