@@ -112,10 +112,14 @@ def _structure(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
 
 
 def _correlation(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
-    counts = liquid.independent(liquid.blocks.pair_counts)
-    n = liquid.states[0].n_electrons
+    n = liquid.n_electrons
     radii = np.linspace(0.0, liquid.frame.isotropic.largest_radius, 201)
     curve = radial_pair_correlation(liquid.frame, liquid.q_max, n, liquid.structure_samples, radii)
+    table = {"r [l_B]": curve.x, "g": curve.value, "g error": curve.error}
+    if liquid.is_conjugate:
+        # Pairs were counted among the holes.
+        return figures.radial_pair_correlation(curve.x, curve.value, curve.error), table
+    counts = liquid.independent(liquid.blocks.pair_counts)
     counted = counted_pair_correlation(liquid.frame, n, BIN_WIDTH, counts, liquid.configurations_per_count)
     axes = figures.radial_pair_correlation(
         curve.x,
@@ -125,14 +129,7 @@ def _correlation(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
         histogram_g=counted.value,
         histogram_error=counted.error,
     )
-    table = {
-        "r [l_B]": curve.x,
-        "g": curve.value,
-        "g error": curve.error,
-        "counted r [l_B]": counted.x,
-        "counted g": counted.value,
-        "counted g error": counted.error,
-    }
+    table |= {"counted r [l_B]": counted.x, "counted g": counted.value, "counted g error": counted.error}
     return axes, table
 
 

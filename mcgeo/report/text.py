@@ -51,7 +51,7 @@ def sample_text(summary: Mapping[str, Any]) -> str:
     """Lines for `mcgeo.runs.sample_summary.sample_summary`; energies per electron."""
     state = summary["state"]
     rows = [
-        ("state", f"{state['label']}, {state['electrons']} electrons"),
+        ("state", f"{state['label']}, {state['liquid_electrons']} electrons"),
         ("interaction", summary["interaction"]),
         ("energy, this cell", f"{_estimate(summary['energy_torus'])} {ENERGY_UNIT}"),
         ("energy, infinite liquid", f"{_estimate(summary['energy_plane'])} {ENERGY_UNIT}"),
@@ -66,7 +66,7 @@ def scan_text(summary: Mapping[str, Any]) -> str:
     state, problem, best = summary["state"], summary["problem"], summary["optimum"]
     level = problem["level"]
     rows = [
-        ("state", f"{state['label']}, {state['electrons']} electrons"),
+        ("state", f"{state['label']}, {state['liquid_electrons']} electrons"),
         ("interaction", f"{problem['interaction_name']}, level {level}"),
         (
             "mass orbit",

@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from mcgeo.estimate.conjugate import conjugate_occupations, conjugate_structure
 from mcgeo.estimate.diagnostics import Diagnostics, diagnose
 from mcgeo.estimate.occupations import PairOccupations, fit_occupations
 from mcgeo.estimate.statistics import Estimate, independent_samples, integrated_autocorrelation_time, mean_estimate
@@ -110,15 +111,33 @@ class Liquid:
         """Configurations behind one sample of the pair counts: a block's, also where a walker's blocks are averaged."""
         return configurations_counted(self.schedule.measurements_per_block) * len(self.states)
 
+    @property
+    def is_conjugate(self) -> bool:
+        """True when the liquid asked for is the hole conjugate of the sampled one."""
+        return bool(self.resolved["state"]["conjugate"])
+
+    @property
+    def n_electrons(self) -> int:
+        """Electrons of the liquid asked for: those of the sampled state, or the empty orbitals beside them."""
+        sampled: int = self.states[0].n_electrons
+        return self.frame.lab.n_flux - sampled if self.is_conjugate else sampled
+
     @cached_property
-    def structure_samples(self) -> Array:
-        """Independent samples of S(q), shape (n_samples, n_waves)."""
+    def _sampled_structure(self) -> Array:
         return self.independent(self.blocks.structure)
 
     @cached_property
+    def structure_samples(self) -> Array:
+        """Independent samples of S(q) of the liquid asked for, shape (n_samples, n_waves)."""
+        if self.is_conjugate:
+            return conjugate_structure(self.states[0].filling, self.norm, self._sampled_structure)
+        return self._sampled_structure
+
+    @cached_property
     def occupations(self) -> PairOccupations:
-        """Pair occupations with their samples."""
-        return fit_occupations(self.states[0], self.norm, self.structure_samples)
+        """Pair occupations of the liquid asked for, with their samples."""
+        fitted = fit_occupations(self.states[0], self.norm, self._sampled_structure)
+        return conjugate_occupations(fitted) if self.is_conjugate else fitted
 
     @cached_property
     def diagnostics(self) -> Diagnostics:

@@ -13,10 +13,15 @@ from mcgeo.variational.energy_surface import EnergySurface
 
 
 def state_summary(liquid: Liquid) -> dict[str, Any]:
-    """``state`` of the JSON output: its keys with the filling as text."""
-    keys = dict(liquid.resolved["state"])
-    state = liquid.states[0]
-    return {**keys, "filling": str(state.filling), "statistics": state.statistics, "label": state.label}
+    """``state`` of the JSON output: its keys, with the filling of the liquid asked for as text."""
+    found = liquid.occupations
+    return {
+        **liquid.resolved["state"],
+        "filling": str(found.filling),
+        "statistics": found.statistics,
+        "label": found.label,
+        "liquid_electrons": liquid.n_electrons,
+    }
 
 
 def diagnostics_summary(liquid: Liquid) -> dict[str, Any]:
@@ -43,6 +48,8 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
     occupations = liquid.occupations
     metric = liquid.frame.metric
     surface = EnergySurface(occupations, Problem(metric, interaction, LOWEST))
+    plane = mean_estimate(surface.sample_energies(metric))
+    filling = float(occupations.filling)
     schedule = liquid.schedule
     blocks_done = liquid.blocks.structure.shape[0]
     moves = (
@@ -58,7 +65,8 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
         "state": state_summary(liquid),
         "interaction": interaction.name,
         "energy_torus": liquid.torus_energy(interaction).as_dict(),
-        "energy_plane": mean_estimate(surface.sample_energies(metric)).as_dict(),
+        "energy_plane": plane.as_dict(),
+        "energy_plane_per_flux": {"value": filling * plane.value, "error": filling * plane.error},
         "occupations": [
             {"m": int(m), **occupations.occupation(index).as_dict()} for index, m in enumerate(occupations.m)
         ],
