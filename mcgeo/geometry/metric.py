@@ -167,13 +167,17 @@ class UnimodularMetric:
 
     def position_norm_sq(self, positions: ArrayLike) -> Matrix:
         """r.g.r for positions of shape (..., 2)."""
-        r = np.asarray(positions, dtype=float)
-        return np.asarray(np.einsum("...a,ab,...b->...", r, self.matrix, r))
+        return _quadratic_form(self.matrix, np.asarray(positions, dtype=float))
 
     def wavevector_norm_sq(self, wavevectors: ArrayLike) -> Matrix:
         """q.g^-1.q for wavevectors of shape (..., 2)."""
-        q = np.asarray(wavevectors, dtype=float)
-        return np.asarray(np.einsum("...a,ab,...b->...", q, self.inverse_matrix, q))
+        return _quadratic_form(self.inverse_matrix, np.asarray(wavevectors, dtype=float))
+
+
+def _quadratic_form(matrix: Matrix, vectors: Matrix) -> Matrix:
+    """v.m.v written out: several times faster than a contraction, and this is most of a scan's time."""
+    x, y = vectors[..., 0], vectors[..., 1]
+    return np.asarray((matrix[0, 0] * x + (2.0 * matrix[0, 1]) * y) * x + matrix[1, 1] * y * y)
 
 
 ISOTROPIC = UnimodularMetric()

@@ -14,7 +14,7 @@ class SamplingConfig(Group):
 
     walkers: Count = Field(default=32, description="Independent walkers [1].")
     sweeps: Count = Field(
-        default=20_000, description="Production sweeps of each walker, one move per particle each [1]."
+        default=20_000, description="Production sweeps of each walker; a sweep visits every particle once [1]."
     )
     equilibration: Annotated[int, WholeNumber(0)] = Field(
         default=500, description="Sweeps of each walker before production [1]."
@@ -24,7 +24,7 @@ class SamplingConfig(Group):
     )
     measure_every: Count | None = Field(
         default=None,
-        description="Sweeps from one measurement to the next; null: chosen from the number of particles [1].",
+        description="Sweeps from one measurement to the next; null: the state's own default [1].",
     )
     step: Positive | None = Field(
         default=None, description="Side of the square a move is drawn from; null: tuned [l_B]."
