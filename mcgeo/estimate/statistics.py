@@ -14,8 +14,9 @@ Array = NDArray[np.float64]
 
 # Sokal's window: the sum of the autocorrelation function stops at the first lag above this many times.
 _WINDOW = 5.0
-# Blocks longer than this many autocorrelation times are treated as independent samples.
-_INDEPENDENT_BLOCK = 10.0
+# Blocks longer than this many autocorrelation times are treated as independent samples; their neighbours share about
+# one autocorrelation time, which makes errors too small by 1 % at this length.
+_INDEPENDENT_BLOCK = 40.0
 _JACKKNIFE_GROUPS = 64
 
 
