@@ -1,9 +1,9 @@
 """Modulus of the determinant of a complex matrix by blocked elimination, vectorised along its columns.
 
 A matrix of n rows is stored in lanes: row k fills ``row_width(n)`` consecutive rows of an array of shape
-(n row_width, 8), first v = ceil(n/8) rows with the real and then v rows with the imaginary parts of its columns. Columns
-from n on must hold zeros. The rest of the width is never read: it keeps the rows of one column
-from falling on the same few lines of a cache.
+(n row_width, 8), first v = ceil(n/8) rows with the real and then v rows with the imaginary parts of its columns.
+Columns from n on must hold zeros. The rest of the width is never read: it keeps the rows of one column from falling
+on the same few lines of a cache.
 """
 
 from __future__ import annotations
@@ -23,13 +23,13 @@ _LARGEST_PRODUCT = 1e40
 
 
 @kernel
-def lane_vectors(n: int) -> int:
+def lane_vectors(n: int) -> Any:
     """Number of eight-lane vectors that hold ``n`` numbers."""
     return (n + LANES - 1) // LANES
 
 
 @kernel
-def row_width(n: int) -> int:
+def row_width(n: int) -> Any:
     """Rows of the storage per row of the matrix."""
     return 2 * lane_vectors(n) + 1
 
