@@ -10,6 +10,7 @@ from scipy import stats
 from mcgeo.kernels._jit import kernel
 from mcgeo.kernels.elementary import cosine_sine_of_turns, exponential, next_uniform, split_exponent
 from mcgeo.kernels.lanes import LANES, float_from_integer, load, store
+from tests.exact.xoshiro import xoshiro
 
 MASK = 2**64 - 1
 
@@ -126,25 +127,6 @@ def test_zero_splits_into_a_number_too_small_to_accept():
     splits(x, mantissas, exponents)
     np.testing.assert_array_equal(mantissas, 1.0)
     np.testing.assert_array_equal(exponents, -1023.0)
-
-
-def xoshiro(words):
-    """xoshiro256++ in plain integers: Blackman and Vigna, ACM Trans. Math. Softw. 47, 36 (2021)."""
-    s = list(words)
-
-    def rotated(x, k):
-        return ((x << k) | (x >> (64 - k))) & MASK
-
-    while True:
-        result = (rotated((s[0] + s[3]) & MASK, 23) + s[0]) & MASK
-        t = (s[1] << 17) & MASK
-        s[2] ^= s[0]
-        s[3] ^= s[1]
-        s[1] ^= s[2]
-        s[0] ^= s[3]
-        s[2] ^= t
-        s[3] = rotated(s[3], 45)
-        yield result, tuple(s)
 
 
 def test_plain_generator_gives_the_published_numbers():
