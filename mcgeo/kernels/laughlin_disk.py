@@ -21,6 +21,7 @@ from mcgeo.kernels.lanes import (
     float_from_integer,
     integer_from_float,
     load,
+    round_to_integer,
     select,
     shift_left,
     splat,
@@ -32,6 +33,8 @@ from mcgeo.kernels.lanes import (
 _BLOCK = 56
 _UNROLLED = 4
 _LARGEST_POWER = 1000.0
+_LN_2 = math.log(2.0)
+_LOG2_E = 1.0 / _LN_2
 
 
 @kernel
@@ -78,7 +81,16 @@ def power_of_two(k: Any) -> Any:
 
 
 @kernel
-def _swap_rows(array: np.ndarray, first: int, second: int) -> None:
+def gaussian_ratio(px: Any, py: Any, dx: Any, dy: Any) -> Any:
+    """exp(-(|z + dz|^2 - |z|^2) / 2) as a factor near 1 and a power of two (as a float)."""
+    # From the difference, not from two squares: nothing cancels far from the centre.
+    fall = (dx * (px * 2.0 + dx) + dy * (py * 2.0 + dy)) * 0.5
+    power = round_to_integer(fall * -_LOG2_E)
+    return exponential((power * _LN_2 + fall) * -1.0), power
+
+
+@kernel
+def swap_rows(array: np.ndarray, first: int, second: int) -> None:
     held = load(array, first)
     store(array, first, load(array, second))
     store(array, second, held)
@@ -116,8 +128,8 @@ def advance(
     n_accepted = load(accepted, 0)
     for _ in range(n_sweeps):
         for i in range(last + 1):
-            _swap_rows(x, i, last)
-            _swap_rows(y, i, last)
+            swap_rows(x, i, last)
+            swap_rows(y, i, last)
             px, py = load(x, last), load(y, last)
             near, power = distance_product(x, y, last, px, py)
             for _hit in range(n_hits):
@@ -126,14 +138,13 @@ def advance(
                 u, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
                 dx, dy = (ux - 0.5) * step, (uy - 0.5) * step
                 new_x, new_y = px + dx, py + dy
-                # |z'|^2 - |z|^2 from the difference. What does not need the new product comes before it: the
-                # processor works on it while the product runs.
-                right = exponential((dx * (px + new_x) + dy * (py + new_y)) * -0.5)
+                # What does not need the new product comes before it, to be worked on while the product runs.
+                right, gauss_power = gaussian_ratio(px, py, dx, dy)
                 left = u
                 for _factor in range(exponent):
                     left = left * near
                 new_near, new_power = distance_product(x, y, last, new_x, new_y)
-                right = right * power_of_two(float_from_integer(new_power - power) * exponent)
+                right = right * power_of_two(float_from_integer(new_power - power) * exponent + gauss_power)
                 for _factor in range(exponent):
                     right = right * new_near
                 accept = left < right
@@ -166,5 +177,5 @@ def log_weights(exponent: int, x: np.ndarray, y: np.ndarray, out: np.ndarray) ->
         store(product, 0, near)
         store(product, 1, float_from_integer(power))
         for lane in range(LANES):
-            out[lane] += exponent * (math.log(product[0, lane]) + product[1, lane] * math.log(2.0))
+            out[lane] += exponent * (math.log(product[0, lane]) + product[1, lane] * _LN_2)
             out[lane] -= 0.5 * (x[i, lane] ** 2 + y[i, lane] ** 2)

@@ -1,0 +1,147 @@
+"""What is measured in droplets of eight walkers: Coulomb sums, radial density, second moments.
+
+Positions are in the isotropic coordinates r' of the droplet's metric g; a displacement in the lab has
+|r|^2 = r'.g^-1.r' because the map S with r' = S r is symmetric and S S = g.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import Any
+
+import numpy as np
+
+from mcgeo.kernels._jit import kernel
+from mcgeo.kernels.lanes import (
+    LANES,
+    bits_from_float,
+    float_from_bits,
+    load,
+    select,
+    shift_right,
+    splat,
+    splat_bits,
+    store,
+)
+
+# Start of the iteration for 1/sqrt(x): halves and negates the exponent, error below 3.5 %.
+_INVERSE_ROOT_BITS = 0x5FE6EB50C7B537A9
+_ROOT_STEPS = 4
+# Seven steps of the mean take complementary moduli squared down to this value to the last bit.
+_MEAN_STEPS = 7
+_SMALLEST_COMPLEMENT = 1e-14
+
+
+@kernel
+def inverse_root(x: Any) -> Any:
+    """1/sqrt(x) per lane by Newton's iteration, for positive normal x; some large number for x = 0."""
+    y = float_from_bits(splat_bits(_INVERSE_ROOT_BITS) - shift_right(bits_from_float(x), 1))
+    half = x * 0.5
+    for _ in range(_ROOT_STEPS):
+        y = y * (1.5 - half * y * y)
+    return y
+
+
+@kernel
+def disk_profile(u_sq: Any) -> Any:
+    """Potential of a uniform disk in its own plane at u = r/R, in units of -4 rho R.
+
+    E(u^2) inside and u [E(1/u^2) - (1 - 1/u^2) K(1/u^2)] outside, complete elliptic integrals of parameter k^2,
+    by the arithmetic-geometric mean (DLMF 19.8.5 and 19.8.6).
+    """
+    inside = u_sq < splat(1.0)
+    parameter = select(inside, u_sq, 1.0 / u_sq)
+    complement = 1.0 - parameter
+    complement = select(complement < splat(_SMALLEST_COMPLEMENT), splat(_SMALLEST_COMPLEMENT), complement)
+    mean, geometric = splat(1.0), complement * inverse_root(complement)
+    deficit, weight = parameter * 0.5, 1.0
+    for _ in range(_MEAN_STEPS):
+        product = mean * geometric
+        half_difference = (mean - geometric) * 0.5
+        mean = (mean + geometric) * 0.5
+        geometric = product * inverse_root(product)
+        deficit = deficit + half_difference * half_difference * weight
+        weight = 2.0 * weight
+    first = (0.5 * math.pi) / mean
+    second = first - first * deficit
+    return select(inside, second, u_sq * inverse_root(u_sq) * (second - complement * first))
+
+
+@kernel
+def _isotropic_pair_sum(x: np.ndarray, y: np.ndarray) -> Any:
+    total = splat(0.0)
+    for i in range(x.shape[0]):
+        px, py = load(x, i), load(y, i)
+        for j in range(i):
+            dx, dy = load(x, j) - px, load(y, j) - py
+            total = total + inverse_root(dx * dx + dy * dy)
+    return total
+
+
+@kernel
+def _lab_pair_sum(x: np.ndarray, y: np.ndarray, g_xx: float, g_xy: float, g_yy: float) -> Any:
+    total = splat(0.0)
+    for i in range(x.shape[0]):
+        px, py = load(x, i), load(y, i)
+        for j in range(i):
+            dx, dy = load(x, j) - px, load(y, j) - py
+            total = total + inverse_root(dx * (dx * g_xx + dy * (2.0 * g_xy)) + dy * dy * g_yy)
+    return total
+
+
+@kernel
+def coulomb_sums(x: np.ndarray, y: np.ndarray, inverse_metric: np.ndarray, radius: float, out: np.ndarray) -> None:
+    """The three sums behind a droplet's energy.
+
+    Parameters
+    ----------
+    x, y : ndarray, shape (n_electrons, 8)
+        Isotropic coordinates in l_B.
+    inverse_metric : ndarray, shape (2, 2)
+        g^ab.
+    radius : float
+        R of the isotropic background disk.
+    out : ndarray, shape (3, 8)
+        Written: sum_{i<j} 1/|r'_ij|; sum_{i<j} 1/|r_ij| in the lab; sum_i of `disk_profile` at r'_i.
+    """
+    g_xx, g_xy, g_yy = inverse_metric[0, 0], inverse_metric[0, 1], inverse_metric[1, 1]
+    isotropic = _isotropic_pair_sum(x, y)
+    store(out, 0, isotropic)
+    if g_xx == 1.0 and g_yy == 1.0:
+        store(out, 1, isotropic)
+    else:
+        store(out, 1, _lab_pair_sum(x, y, g_xx, g_xy, g_yy))
+    profile = splat(0.0)
+    scale = 1.0 / (radius * radius)
+    for i in range(x.shape[0]):
+        px, py = load(x, i), load(y, i)
+        profile = profile + disk_profile((px * px + py * py) * scale)
+    store(out, 2, profile)
+
+
+@kernel
+def add_second_moments(x: np.ndarray, y: np.ndarray, moments: np.ndarray) -> None:
+    """Add the sums over electrons of x'^2, y'^2 and x'y' to ``moments``, shape (3, 8)."""
+    xx, yy, xy = load(moments, 0), load(moments, 1), load(moments, 2)
+    for i in range(x.shape[0]):
+        px, py = load(x, i), load(y, i)
+        xx, yy, xy = xx + px * px, yy + py * py, xy + px * py
+    store(moments, 0, xx)
+    store(moments, 1, yy)
+    store(moments, 2, xy)
+
+
+@kernel
+def add_radial_counts(x: np.ndarray, y: np.ndarray, width: float, counts: np.ndarray) -> None:
+    """Count electrons by |r'| in bins of ``width`` (l_B); the last bin takes all that lie beyond.
+
+    Parameters
+    ----------
+    counts : ndarray of int64, shape (n_bins, 8)
+        Updated.
+    """
+    last = counts.shape[0] - 1
+    for i in range(x.shape[0]):
+        for lane in range(LANES):
+            radius = math.sqrt(x[i, lane] ** 2 + y[i, lane] ** 2)
+            counts[min(int(radius / width), last), lane] += 1
