@@ -24,7 +24,7 @@ from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import LIQUID_FILE
 from mcgeo.runs.scan import scan
 from mcgeo.runs.storage import read_liquid
-from mcgeo.sampling.measurement import BIN_WIDTH
+from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
 
 Drawing = tuple[Axes, Mapping[str, Any]]
 
@@ -119,7 +119,7 @@ def _correlation(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     if liquid.is_conjugate:
         # Pairs were counted among the holes.
         return figures.radial_pair_correlation(curve.x, curve.value, curve.error), table
-    counts = liquid.independent(liquid.blocks.pair_counts)
+    counts = liquid.independent(liquid.blocks.counts[PAIRS])
     counted = counted_pair_correlation(liquid.frame, n, BIN_WIDTH, counts, liquid.configurations_per_count)
     axes = figures.radial_pair_correlation(
         curve.x,

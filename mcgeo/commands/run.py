@@ -15,7 +15,7 @@ from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sample_summary import sample_summary
 from mcgeo.runs.scan import scan, scan_summary
-from mcgeo.runs.storage import RESULT_SUFFIX, read_liquid
+from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_liquid, read_result
 
 CONVERGED_CODE, NOT_CONVERGED_CODE = 0, 3
 
@@ -37,7 +37,7 @@ def _exit_code(summary: Mapping[str, Any]) -> int:
 
 
 def _config(path: Path, threads: int | None) -> Config:
-    config = config_from_resolved(read_liquid(path).resolved) if path.suffix == RESULT_SUFFIX else load_config(path)
+    config = config_from_resolved(read_result(path).resolved) if path.suffix == RESULT_SUFFIX else load_config(path)
     if threads is None:
         return config
     return config.model_copy(update={"sampling": config.sampling.model_copy(update={"threads": threads})})
@@ -47,8 +47,8 @@ def run_sample(arguments: argparse.Namespace) -> Answer:
     """``mcgeo sample``."""
     config = _config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
-    liquid = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
-    summary = sample_summary(liquid)
+    result = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+    summary = sample_summary(as_liquid(result, folder))
     write_json(folder / "sample.json", summary)
     return as_json(summary) if arguments.json else sample_text(summary), _exit_code(summary)
 
@@ -58,7 +58,7 @@ def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> L
         return read_liquid(arguments.liquid)
     if arguments.config.suffix == RESULT_SUFFIX:
         return read_liquid(arguments.config)
-    return sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+    return as_liquid(sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet), folder)
 
 
 def run_scan(arguments: argparse.Namespace) -> Answer:

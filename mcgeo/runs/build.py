@@ -15,7 +15,7 @@ from mcgeo.problem.interaction import INTERACTIONS, Interaction
 from mcgeo.problem.mass import mass_metric_from_axes, mass_metric_from_ratio, mass_metric_from_tensor
 from mcgeo.problem.problem import Problem
 from mcgeo.sampling.chain import Schedule
-from mcgeo.states.base import TrialState
+from mcgeo.states.base import SampledState, TrialState
 from mcgeo.states.registry import TORUS_STATES
 
 Keys = Mapping[str, Any]
@@ -88,7 +88,7 @@ def available_threads() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
-def schedule_from(resolved: Keys, state: TrialState, component: int = 0) -> Schedule:
+def schedule_from(resolved: Keys, state: SampledState, component: int = 0) -> Schedule:
     """Schedule of the sampling; sweeps are rounded up to whole blocks of whole measurements."""
     keys = resolved["sampling"]
     per_block = -(-keys["sweeps"] // keys["blocks"])

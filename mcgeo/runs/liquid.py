@@ -1,9 +1,7 @@
-"""A sampled liquid: what one result file holds, and the quantities that follow from it without more sampling."""
+"""A sampled liquid on the torus, and the quantities that follow from it without more sampling."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
@@ -11,68 +9,48 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.estimate.conjugate import conjugate_occupations, conjugate_structure
-from mcgeo.estimate.diagnostics import Diagnostics, diagnose
 from mcgeo.estimate.occupations import PairOccupations, fit_occupations
-from mcgeo.estimate.statistics import Estimate, independent_samples, integrated_autocorrelation_time, mean_estimate
+from mcgeo.estimate.statistics import Estimate, mean_estimate
 from mcgeo.estimate.torus_energy import torus_energy
+from mcgeo.geometry.frame import TorusFrame
 from mcgeo.problem.interaction import Interaction
-from mcgeo.runs.build import schedule_from, torus_frame, torus_states
-from mcgeo.sampling.chain import ChainState
-from mcgeo.sampling.measurement import configurations_counted
+from mcgeo.runs.build import torus_frame, torus_states
+from mcgeo.runs.sampled import Sampled
+from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS, STRUCTURE, configurations_counted
+from mcgeo.states.base import TrialState
 
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True, eq=False)
-class Blocks:
-    """Block means of a run; a liquid that is an average over sectors has one component per sector.
-
-    Attributes
-    ----------
-    structure : ndarray, shape (n_blocks, n_walkers, n_waves)
-        S(q), averaged over components walker by walker: walkers stay independent.
-    pair_counts : ndarray of int64, shape (n_blocks, n_walkers, n_bins)
-        Summed over components.
-    trace : ndarray, shape (n_components, n_blocks, n_walkers, n_measurements)
-        Torus energy (Coulomb) per electron of single configurations.
-    accepted : ndarray, shape (n_components, n_blocks, n_walkers)
-    drift : ndarray, shape (n_components, n_blocks)
-    """
-
-    structure: Array
-    pair_counts: NDArray[np.int64]
-    trace: Array
-    accepted: Array
-    drift: Array
-
-
-@dataclass(frozen=True, eq=False)
-class Liquid:
-    """One result file.
-
-    Attributes
-    ----------
-    resolved : mapping
-        The configuration with every default filled in.
-    blocks : Blocks
-    chains : list of ChainState
-        Where each component's chain stands.
-    seconds : float
-        Wall time of production.
-    complete : bool
-        False when the run was interrupted before its last block.
-    """
-
-    resolved: Mapping[str, Any]
-    blocks: Blocks
-    chains: list[ChainState]
-    seconds: float
-    complete: bool
+class Liquid(Sampled):
+    """One result file of a liquid on the torus."""
 
     @cached_property
-    def states(self) -> list[Any]:
+    def states(self) -> list[TrialState]:
         """The trial states."""
         return torus_states(self.resolved)
+
+    @property
+    def sampled_states(self) -> list[TrialState]:
+        """The trial states."""
+        return self.states
+
+    @property
+    def axes(self) -> dict[str, tuple[NDArray[Any], str]]:
+        """Wavevectors in the lab and their norms, and the edges of the bins of pair distances (in the metric)."""
+        waves = self.frame.waves(self.q_max)
+        n_bins = self.blocks.counts[PAIRS].shape[-1]
+        return {
+            "wave": (self.norm, "1/l_B"),
+            "wavevector": (waves.vectors, "1/l_B"),
+            "wave_integers": (waves.integers, "1"),
+            "pair_distance": (BIN_WIDTH * (np.arange(n_bins) + 0.5), "l_B"),
+        }
+
+    @property
+    def scaled_axes(self) -> dict[str, tuple[str, int]]:
+        """S(q) along the waves, pair counts along the distance."""
+        return {"wave": (f"means/{STRUCTURE}", 2), "pair_distance": (f"counts/{PAIRS}", 2)}
 
     @property
     def q_max(self) -> float:
@@ -80,7 +58,7 @@ class Liquid:
         return float(self.resolved["sampling"]["q_max"])
 
     @cached_property
-    def frame(self) -> Any:
+    def frame(self) -> TorusFrame:
         """Cell and metric."""
         return torus_frame(self.resolved)
 
@@ -89,22 +67,6 @@ class Liquid:
         """|q|_g of the stored waves, shape (n_waves,)."""
         waves = self.frame.waves(self.q_max)
         return np.asarray(np.sqrt(self.frame.metric.wavevector_norm_sq(waves.vectors)))
-
-    @cached_property
-    def schedule(self) -> Any:
-        """How the chains ran."""
-        return schedule_from(self.resolved, self.states[0])
-
-    @cached_property
-    def time_in_measurements(self) -> float:
-        """Integrated autocorrelation time of the energy in measurements; the slowest component's."""
-        n_components, _, n_walkers, _ = self.blocks.trace.shape
-        series = np.moveaxis(self.blocks.trace, 2, 1).reshape(n_components, n_walkers, -1)
-        return float(np.nanmax([integrated_autocorrelation_time(x) for x in series] + [0.0])) or 1.0
-
-    def independent(self, blocks: NDArray[Any]) -> Array:
-        """Independent samples of block means of shape (n_blocks, n_walkers, ...)."""
-        return independent_samples(blocks, self.schedule.measurements_per_block / self.time_in_measurements)
 
     @property
     def configurations_per_count(self) -> int:
@@ -119,12 +81,12 @@ class Liquid:
     @property
     def n_electrons(self) -> int:
         """Electrons of the liquid asked for: those of the sampled state, or the empty orbitals beside them."""
-        sampled: int = self.states[0].n_electrons
+        sampled = self.states[0].n_electrons
         return self.frame.lab.n_flux - sampled if self.is_conjugate else sampled
 
     @cached_property
     def _sampled_structure(self) -> Array:
-        return self.independent(self.blocks.structure)
+        return self.independent(self.blocks.means[STRUCTURE])
 
     @cached_property
     def structure_samples(self) -> Array:
@@ -139,19 +101,12 @@ class Liquid:
         fitted = fit_occupations(self.states[0], self.norm, self._sampled_structure)
         return conjugate_occupations(fitted) if self.is_conjugate else fitted
 
-    @cached_property
-    def diagnostics(self) -> Diagnostics:
-        """Whether the run may be trusted."""
-        return diagnose(
-            self.blocks.trace, self.blocks.accepted, self.time_in_measurements, self.schedule.sweeps_between
-        )
-
     def torus_energy(self, interaction: Interaction) -> Estimate:
         """Energy per electron of the sampled state on its cell, straight from S(q)."""
         energy = mean_estimate(torus_energy(self.frame, self.q_max, interaction).of(self.structure_samples))
         return Estimate(
             energy.value,
             energy.error,
-            self.time_in_measurements * self.schedule.sweeps_between,
+            self.autocorrelation_time,
             self.diagnostics.effective_samples,
         )

@@ -9,6 +9,7 @@ from mcgeo.problem.landau_level import LOWEST
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import interaction_from
 from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.sampled import Sampled
 from mcgeo.variational.energy_surface import EnergySurface
 
 
@@ -24,16 +25,16 @@ def state_summary(liquid: Liquid) -> dict[str, Any]:
     }
 
 
-def diagnostics_summary(liquid: Liquid) -> dict[str, Any]:
+def diagnostics_summary(result: Sampled) -> dict[str, Any]:
     """``diagnostics`` of the JSON output."""
-    health = liquid.diagnostics
+    health = result.diagnostics
     return {
         "acceptance": health.acceptance,
         "autocorrelation_time": health.autocorrelation_time,
         "effective_samples": health.effective_samples,
         "r_hat": health.r_hat,
-        "drift": float(liquid.blocks.drift.max()),
-        "verdict": health.verdict if liquid.complete else "short",
+        "drift": float(result.blocks.drift.max()),
+        "verdict": health.verdict if result.complete else "short",
     }
 
 
@@ -50,17 +51,6 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
     surface = EnergySurface(occupations, Problem(metric, interaction, LOWEST))
     plane = mean_estimate(surface.sample_energies(metric))
     filling = float(occupations.filling)
-    schedule = liquid.schedule
-    blocks_done = liquid.blocks.structure.shape[0]
-    moves = (
-        len(liquid.states)
-        * schedule.n_walkers
-        * blocks_done
-        * schedule.measurements_per_block
-        * schedule.sweeps_between
-        * liquid.states[0].n_electrons
-        * liquid.states[0].proposals_per_sweep
-    )
     return {
         "state": state_summary(liquid),
         "interaction": interaction.name,
@@ -74,7 +64,7 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
         "step": liquid.chains[0].step,
         "seed": liquid.resolved["sampling"]["seed"],
         "seconds": liquid.seconds,
-        "moves_per_second": moves / liquid.seconds,
+        "moves_per_second": liquid.moves / liquid.seconds,
         "complete": liquid.complete,
         "diagnostics": diagnostics_summary(liquid),
     }

@@ -9,25 +9,17 @@ from pathlib import Path
 from typing import Any
 
 import h5py
-import numpy as np
 
 import mcgeo
 from mcgeo.errors import StorageError
-from mcgeo.runs.liquid import Blocks, Liquid
+from mcgeo.runs.experiment import result_class
+from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.sampled import Blocks, Sampled
 from mcgeo.sampling.chain import ChainState
 from mcgeo.sampling.walkers import WalkerArrays
 
-FORMAT = "mcgeo-liquid/1"
+FORMAT = "mcgeo-result/1"
 RESULT_SUFFIX = ".h5"
-
-_DIMENSIONS = {
-    "structure": ("block", "walker", "wave"),
-    "pair_counts": ("block", "walker", "bin"),
-    "trace": ("component", "block", "walker", "measurement"),
-    "accepted": ("component", "block", "walker"),
-    "drift": ("component", "block"),
-}
-
 
 def _versions() -> dict[str, str]:
     from importlib.metadata import version
@@ -35,7 +27,7 @@ def _versions() -> dict[str, str]:
     return {name: version(name) for name in ("numpy", "numba", "scipy", "h5py")}
 
 
-def write_liquid(path: Path, liquid: Liquid) -> None:
+def write_result(path: Path, result: Sampled) -> None:
     """Write the file whole or not at all.
 
     Raises
@@ -49,7 +41,7 @@ def write_liquid(path: Path, liquid: Liquid) -> None:
         os.close(handle)
         try:
             with h5py.File(temporary, "w") as file:
-                _fill(file, liquid)
+                _fill(file, result)
             with open(temporary, "rb+") as written:
                 os.fsync(written.fileno())
             os.chmod(temporary, 0o644)
@@ -61,37 +53,43 @@ def write_liquid(path: Path, liquid: Liquid) -> None:
         raise StorageError(f"{path}: cannot be written: {fault}") from fault
 
 
-def _fill(file: Any, liquid: Liquid) -> None:
+def _fill(file: Any, result: Sampled) -> None:
     file.attrs["format"] = FORMAT
     file.attrs["mcgeo_version"] = mcgeo.__version__
     file.attrs["libraries"] = json.dumps(_versions())
-    file.attrs["config"] = json.dumps(liquid.resolved)
-    file.attrs["seconds"] = liquid.seconds
-    file.attrs["complete"] = liquid.complete
-    waves = liquid.frame.waves(liquid.q_max)
+    file.attrs["config"] = json.dumps(result.resolved)
+    file.attrs["seconds"] = result.seconds
+    file.attrs["complete"] = result.complete
     axes = file.create_group("axes")
-    axes["wave"] = np.arange(len(waves.integers))
-    axes["wave"].make_scale("wave")
-    axes["integers"] = waves.integers
-    axes["wavevectors"] = waves.vectors
-    axes["wavevectors"].attrs["units"] = "1/l_B"
-    group = file.create_group("blocks")
-    for name, dimensions in _DIMENSIONS.items():
-        dataset = group.create_dataset(name, data=getattr(liquid.blocks, name))
-        for axis, dimension in enumerate(dimensions):
-            dataset.dims[axis].label = dimension
-            if dimension == "wave":
-                dataset.dims[axis].attach_scale(axes["wave"])
-    group["structure"].attrs["long_name"] = "S(q)"
-    group["trace"].attrs["units"] = "e^2/(4 pi eps l_B)"
-    for index, chain in enumerate(liquid.chains):
+    for name, (values, unit) in result.axes.items():
+        axes[name] = values
+        axes[name].attrs["units"] = unit
+        axes[name].make_scale(name)
+    blocks = result.blocks
+    arrays: dict[str, Any] = {f"means/{name}": values for name, values in blocks.means.items()}
+    arrays |= {f"counts/{name}": values for name, values in blocks.counts.items()}
+    for name, values in arrays.items():
+        _labelled(file.create_dataset(f"blocks/{name}", data=values), ("block", "walker"))
+    for name, (dataset, axis) in result.scaled_axes.items():
+        file[f"blocks/{dataset}"].dims[axis].attach_scale(axes[name])
+    trace = file.create_dataset("blocks/trace", data=blocks.trace)
+    trace.attrs["units"] = "e^2/(4 pi eps l_B)"
+    _labelled(trace, ("component", "block", "walker", "measurement"))
+    _labelled(file.create_dataset("blocks/accepted", data=blocks.accepted), ("component", "block", "walker"))
+    _labelled(file.create_dataset("blocks/drift", data=blocks.drift), ("component", "block"))
+    for index, chain in enumerate(result.chains):
         place = file.create_group(f"checkpoint/{index}")
         place["a"], place["b"], place["words"] = chain.walkers.a, chain.walkers.b, chain.walkers.words
         place.attrs["step"] = chain.step
         place.attrs["blocks_done"] = chain.blocks_done
 
 
-def read_liquid(path: Path) -> Liquid:
+def _labelled(dataset: Any, labels: tuple[str, ...]) -> None:
+    for axis, label in enumerate(labels):
+        dataset.dims[axis].label = label
+
+
+def read_result(path: Path) -> Sampled:
     """Read a result file.
 
     Raises
@@ -107,21 +105,48 @@ def read_liquid(path: Path) -> Liquid:
             if found != FORMAT:
                 raise StorageError(f"{path}: not a result file of this version: format {found!r}, needed {FORMAT!r}")
             return _contents(file)
-    except (OSError, KeyError, ValueError, TypeError) as fault:
+    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as fault:
         raise StorageError(f"{path}: damaged or not a result file: {fault}") from fault
 
 
-def _contents(file: Any) -> Liquid:
-    blocks = Blocks(**{name: file["blocks"][name][()] for name in _DIMENSIONS})
+def _contents(file: Any) -> Sampled:
+    stored = file["blocks"]
+    blocks = Blocks(
+        {name: stored["means"][name][()] for name in stored["means"]},
+        {name: stored["counts"][name][()] for name in stored["counts"]},
+        stored["trace"][()],
+        stored["accepted"][()],
+        stored["drift"][()],
+    )
     chains = []
     for index in range(len(file["checkpoint"])):
         place = file["checkpoint"][str(index)]
         arrays = WalkerArrays(place["a"][()], place["b"][()], place["words"][()])
         chains.append(ChainState(arrays, float(place.attrs["step"]), int(place.attrs["blocks_done"])))
-    return Liquid(
-        json.loads(file.attrs["config"]),
-        blocks,
-        chains,
-        float(file.attrs["seconds"]),
-        bool(file.attrs["complete"]),
-    )
+    resolved = json.loads(file.attrs["config"])
+    seconds, complete = float(file.attrs["seconds"]), bool(file.attrs["complete"])
+    return result_class(resolved)(resolved, blocks, chains, seconds, complete)
+
+
+def as_liquid(result: Sampled, path: Path) -> Liquid:
+    """The result, which must be a liquid on the torus.
+
+    Raises
+    ------
+    StorageError
+        If it is a droplet.
+    """
+    if not isinstance(result, Liquid):
+        raise StorageError(f"{path} holds a droplet; this needs a liquid on the torus")
+    return result
+
+
+def read_liquid(path: Path) -> Liquid:
+    """Read a result file that must hold a liquid on the torus.
+
+    Raises
+    ------
+    StorageError
+        As `read_result` and `as_liquid`.
+    """
+    return as_liquid(read_result(path), path)

@@ -6,10 +6,10 @@ import threading
 from collections.abc import Callable
 from dataclasses import dataclass
 
-from mcgeo.sampling.measurement import BlockRecord, TorusMeasurement, merged
+from mcgeo.sampling.blocks import BlockRecord, Measurement, merged
 from mcgeo.sampling.tuning import tuned_step
 from mcgeo.sampling.walkers import WalkerArrays, arrays_of, for_each_group, groups_of, start_walkers
-from mcgeo.states.base import TrialState, WalkerGroup
+from mcgeo.states.base import SampledState, WalkerGroup
 
 
 @dataclass(frozen=True)
@@ -58,10 +58,10 @@ class ChainState:
 _LEAST_TUNING_SWEEPS = 8
 
 
-def equilibrated(state: TrialState, schedule: Schedule) -> ChainState:
+def equilibrated(state: SampledState, schedule: Schedule) -> ChainState:
     """Walkers in equilibrium and a frozen step."""
     groups = groups_of(state, start_walkers(state, schedule.n_walkers, schedule.seed, schedule.component))
-    first = schedule.step or min(state.first_step, state.frame.isotropic.side)
+    first = schedule.step or min(state.first_step, state.largest_step)
     half = schedule.equilibration // 2
 
     def advance(step: float, n_sweeps: int) -> Callable[[WalkerGroup], None]:
@@ -77,22 +77,22 @@ def equilibrated(state: TrialState, schedule: Schedule) -> ChainState:
 
 
 def next_block(
-    measurement: TorusMeasurement, schedule: Schedule, state: ChainState, stop: threading.Event
+    state: SampledState, measurement: Measurement, schedule: Schedule, chain: ChainState, stop: threading.Event
 ) -> tuple[ChainState, BlockRecord]:
     """One more block: the new state to continue from, and what was measured.
 
     Raises
     ------
     Interrupted
-        When ``stop`` was set before the block ended; ``state`` is still good.
+        When ``stop`` was set before the block ended; ``chain`` is still good.
     """
-    groups = groups_of(measurement.state, state.walkers)
+    groups = groups_of(state, chain.walkers)
 
     def run(group: WalkerGroup) -> BlockRecord:
         return measurement.block(
-            group, state.step, schedule.measurements_per_block, schedule.sweeps_between, stop
+            group, chain.step, schedule.measurements_per_block, schedule.sweeps_between, stop
         )
 
     records = for_each_group(run, groups, schedule.threads)
-    after = ChainState(arrays_of(groups), state.step, state.blocks_done + 1)
+    after = ChainState(arrays_of(groups), chain.step, chain.blocks_done + 1)
     return after, merged(records, schedule.n_walkers)

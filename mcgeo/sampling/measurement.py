@@ -12,10 +12,12 @@ from mcgeo.geometry.cell import Waves
 from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.pair_histogram import add_pair_counts
 from mcgeo.kernels.structure import WaveTables, add_structure_factor, wave_sums, wave_tables
+from mcgeo.sampling.blocks import BlockRecord, Interrupted
 from mcgeo.states.base import TrialState, WalkerGroup
 
 Array = NDArray[np.float64]
 
+STRUCTURE, PAIRS = "structure", "pairs"
 BIN_WIDTH = 0.1
 # Pair distances are a second look at what |rho_q|^2 already holds; they need not be taken every time.
 _MEASUREMENTS_PER_HISTOGRAM = 4
@@ -24,35 +26,6 @@ _MEASUREMENTS_PER_HISTOGRAM = 4
 def configurations_counted(n_measurements: int) -> int:
     """Number of configurations in the pair counts of a block of measurements."""
     return -(-n_measurements // _MEASUREMENTS_PER_HISTOGRAM)
-
-
-class Interrupted(Exception):
-    """Raised inside a block when the run was asked to stop; the block is dropped."""
-
-
-@dataclass(frozen=True)
-class BlockRecord:
-    """Means over one block, walkers along the first axis.
-
-    Attributes
-    ----------
-    structure : ndarray, shape (n_walkers, n_waves)
-        S(q) = |rho_q|^2 / N.
-    pair_counts : ndarray of int64, shape (n_walkers, n_bins)
-        Pair distances in bins of `BIN_WIDTH` l_B, summed over `configurations_counted`.
-    trace : ndarray, shape (n_walkers, n_measurements)
-        The weighted sum of S(q), one value per measurement.
-    accepted : ndarray, shape (n_walkers,)
-        Fraction of proposals accepted.
-    drift : float
-        Largest relative error of values stored between moves.
-    """
-
-    structure: Array
-    pair_counts: NDArray[np.int64]
-    trace: Array
-    accepted: Array
-    drift: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -68,10 +41,11 @@ class TorusMeasurement:
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
     ) -> BlockRecord:
-        """Run one block of one group.
+        """Run one block of one group; see `mcgeo.sampling.blocks.Measurement`.
 
-        Stored values are made anew at the start, so a run continued from the block's positions is the same
-        to the last bit.
+        Means: ``structure``, S(q) = |rho_q|^2 / N, shape (n_walkers, n_waves). Counts: ``pairs``, pair distances in
+        bins of `BIN_WIDTH` l_B, summed over `configurations_counted`, shape (n_walkers, n_bins). Trace: the weighted
+        sum of S(q).
 
         Raises
         ------
@@ -98,8 +72,8 @@ class TorusMeasurement:
                 )
         proposals = n_measurements * sweeps_between * n * self.state.proposals_per_sweep
         return BlockRecord(
-            sums.total.T / (n * n_measurements),
-            counts.T.copy(),
+            {STRUCTURE: sums.total.T / (n * n_measurements)},
+            {PAIRS: counts.T.copy()},
             trace.T.copy(),
             group.accepted[0] / proposals,
             group.drift(),
@@ -112,14 +86,3 @@ def torus_measurement(state: TrialState, waves: Waves, trace_weights: Array) -> 
     tables = wave_tables(waves.integers, cell.tau.real)
     n_bins = int(cell.largest_radius / BIN_WIDTH)
     return TorusMeasurement(state, waves, tables, np.asarray(trace_weights, dtype=float), n_bins)
-
-
-def merged(records: list[BlockRecord], n_walkers: int) -> BlockRecord:
-    """Records of all groups as one, without the walkers that only fill up the last group."""
-    return BlockRecord(
-        np.concatenate([record.structure for record in records])[:n_walkers],
-        np.concatenate([record.pair_counts for record in records])[:n_walkers],
-        np.concatenate([record.trace for record in records])[:n_walkers],
-        np.concatenate([record.accepted for record in records])[:n_walkers],
-        max(record.drift for record in records),
-    )

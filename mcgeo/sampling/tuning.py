@@ -7,21 +7,21 @@ from collections.abc import Sequence
 
 from mcgeo.kernels.lanes import LANES
 from mcgeo.sampling.walkers import for_each_group
-from mcgeo.states.base import TrialState, WalkerGroup
+from mcgeo.states.base import SampledState, WalkerGroup
 
 _ROUNDS = 16
 _GAIN = 2.0
 
 
 def tuned_step(
-    state: TrialState, groups: Sequence[WalkerGroup], sweeps_per_round: int, threads: int
+    state: SampledState, groups: Sequence[WalkerGroup], sweeps_per_round: int, threads: int
 ) -> tuple[float, float]:
     """Side of the square proposal at which the state's best acceptance is met, and the acceptance of the last round.
 
     The logarithm of the step follows the excess of acceptance with a gain that falls from round to round (Robbins and
-    Monro, Ann. Math. Stat. 22, 400 (1951)). The step never exceeds the cell's side: a larger one only wraps.
+    Monro, Ann. Math. Stat. 22, 400 (1951)). The step never exceeds the state's largest one.
     """
-    largest = state.frame.isotropic.side
+    largest = state.largest_step
     step = min(state.first_step, largest)
     acceptance = 0.0
     for turn in range(_ROUNDS):

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from mcgeo.kernels.lanes import LANES
 from mcgeo.sampling.streams import generator_words, start_generator, walker_sequence
-from mcgeo.states.base import TrialState, WalkerGroup
+from mcgeo.states.base import SampledState, WalkerGroup
 
 Array = NDArray[np.float64]
 Result = TypeVar("Result")
@@ -33,8 +33,8 @@ class WalkerArrays:
     words: NDArray[np.uint64]
 
 
-def start_walkers(state: TrialState, n_walkers: int, seed: int, component: int = 0) -> WalkerArrays:
-    """Walkers at uniformly random positions, one stream each; the last group is filled up with walkers not counted."""
+def start_walkers(state: SampledState, n_walkers: int, seed: int, component: int = 0) -> WalkerArrays:
+    """Walkers where the state starts them, one stream each; the last group is filled up with walkers not counted."""
     n_groups = -(-n_walkers // LANES)
     a = np.empty((n_groups, state.n_electrons, LANES))
     b = np.empty_like(a)
@@ -43,11 +43,11 @@ def start_walkers(state: TrialState, n_walkers: int, seed: int, component: int =
         group, lane = divmod(walker, LANES)
         sequence = walker_sequence(seed, walker, component)
         words[group, :, lane] = generator_words(sequence)
-        a[group, :, lane], b[group, :, lane] = start_generator(sequence).random((2, state.n_electrons)) - 0.5
+        a[group, :, lane], b[group, :, lane] = state.start(start_generator(sequence))
     return WalkerArrays(a, b, words)
 
 
-def groups_of(state: TrialState, arrays: WalkerArrays) -> list[WalkerGroup]:
+def groups_of(state: SampledState, arrays: WalkerArrays) -> list[WalkerGroup]:
     """Groups at copies of the arrays."""
     return [
         state.group(a.copy(), b.copy(), words.copy())

@@ -19,7 +19,8 @@ BOSONS = "bosons"
 class WalkerGroup(Protocol):
     """Eight walkers side by side with all that their kernel keeps between moves.
 
-    ``a``, ``b`` (shape (n_electrons, 8), fractions of the isotropic cell), ``words`` (shape (4, 8), the generators)
+    ``a``, ``b`` (shape (n_electrons, 8): fractions of the isotropic cell, or coordinates in the plane) and ``words``
+    (shape (4, 8), the generators)
     are all that is needed to continue; everything else is made again by `refresh`.
     """
 
@@ -38,8 +39,8 @@ class WalkerGroup(Protocol):
         """Largest relative error that the stored values have gathered since the last `refresh`."""
 
 
-class TrialState(Protocol):
-    """A lowest-level trial state on a torus, isotropic in its own metric."""
+class SampledState(Protocol):
+    """What sampling needs of a state: a lowest-level trial state, isotropic in its own metric."""
 
     @property
     def kind(self) -> str:
@@ -62,18 +63,6 @@ class TrialState(Protocol):
         """Number of electrons."""
 
     @property
-    def frame(self) -> TorusFrame:
-        """Cell and metric."""
-
-    @property
-    def shift(self) -> int | None:
-        """s in S(q) = q^2/2 + (s - 2) q^4/8 + ..., None for a gapless liquid (no q^4 rule)."""
-
-    @property
-    def first_occupied(self) -> int:
-        """Pair occupations n_m vanish exactly for m below this."""
-
-    @property
     def proposals_per_sweep(self) -> int:
         """Proposals per electron and sweep."""
 
@@ -86,6 +75,10 @@ class TrialState(Protocol):
         """Where to start the tuning, side of the square proposal in l_B."""
 
     @property
+    def largest_step(self) -> float:
+        """Bound on the side of the square proposal in l_B."""
+
+    @property
     def sweeps_per_measurement(self) -> int:
         """Default distance of two measurements."""
 
@@ -93,8 +86,44 @@ class TrialState(Protocol):
     def cost_per_pair(self) -> float:
         """Rough time of a proposal per other electron, in units of a Laughlin pair factor."""
 
+    def start(self, rng: np.random.Generator) -> tuple[Array, Array]:
+        """First positions of one walker, two arrays of shape (n_electrons,)."""
+
     def group(self, a: Array, b: Array, words: NDArray[np.uint64]) -> WalkerGroup:
-        """Eight walkers at the given fractions; the arrays are taken over."""
+        """Eight walkers at the given positions; the arrays are taken over."""
 
     def log_weight(self, a: Array, b: Array) -> Array:
-        """log |Psi|^2 up to a constant for fractions of shape (n_electrons, 8), recomputed from scratch; shape (8,)."""
+        """log |Psi|^2 up to a constant at positions of shape (n_electrons, 8), recomputed from scratch; shape (8,)."""
+
+
+class TrialState(SampledState, Protocol):
+    """A trial state on a torus."""
+
+    @property
+    def frame(self) -> TorusFrame:
+        """Cell and metric."""
+
+    @property
+    def shift(self) -> int | None:
+        """s in S(q) = q^2/2 + (s - 2) q^4/8 + ..., None for a gapless liquid (no q^4 rule)."""
+
+    @property
+    def first_occupied(self) -> int:
+        """Pair occupations n_m vanish exactly for m below this."""
+
+
+class OnTorus:
+    """What every state on a torus shares: inherit from it."""
+
+    n_electrons: int
+    frame: TorusFrame
+
+    @property
+    def largest_step(self) -> float:
+        """The cell's side: a larger step only wraps."""
+        return self.frame.isotropic.side
+
+    def start(self, rng: np.random.Generator) -> tuple[Array, Array]:
+        """Uniformly random fractions of the cell."""
+        a, b = rng.random((2, self.n_electrons)) - 0.5
+        return a, b

@@ -21,7 +21,7 @@ from mcgeo.geometry.frame import TorusFrame
 from mcgeo.kernels.fermi_sea_moves import fermi_sea_store, log_weights, refresh, sweep
 from mcgeo.kernels.fermi_sea_torus import FermiSeaTables, fermi_sea_tables, largest_imaginary_tau
 from mcgeo.kernels.lanes import LANES
-from mcgeo.states.base import FERMIONS, Array
+from mcgeo.states.base import FERMIONS, Array, OnTorus
 
 Points = NDArray[np.int64]
 
@@ -33,7 +33,7 @@ _NUMBERS_LISTED = 4
 
 
 def shells_of_points(tau: complex, n_least: int) -> list[Points]:
-    """Points (p, s) of the lattice p + s tau in shells of equal distance from the origin, with ``n_least`` points or more.
+    """Points (p, s) of the lattice p + s tau in shells of equal distance from the origin, ``n_least`` points or more.
 
     Distances are equal within a relative 1e-9. Every shell is complete and in lexicographic order.
     """
@@ -64,8 +64,8 @@ def closed_sea(tau: complex, n_electrons: int) -> Points:
         position = int(np.searchsorted(closed, n_electrons))
         near = closed[max(0, position - _NUMBERS_LISTED) : position + _NUMBERS_LISTED]
         raise GeometryError(
-            f"{n_electrons} electrons do not close a shell of the composite-fermion sea: in this cell, seen in the state's own "
-            f"metric (tau = {tau.real:.6g} + {tau.imag:.6g}i), {', '.join(map(str, near))} do; "
+            f"{n_electrons} electrons do not close a shell of the composite-fermion sea: in this cell, seen in the "
+            f"state's own metric (tau = {tau.real:.6g} + {tau.imag:.6g}i), {', '.join(map(str, near))} do; "
             "choose one of these or give the points"
         )
     return np.concatenate(shells[: int(np.searchsorted(closed, n_electrons)) + 1])
@@ -87,7 +87,8 @@ def checked_points(points: Sequence[Sequence[int]], n_electrons: int) -> Points:
         )
     if n_electrons > 1 and np.max(np.abs(sea - sea.mean(axis=0))) >= n_electrons / 2:
         raise GeometryError(
-            f"points of a sea of {n_electrons} electrons lie within {n_electrons / 2:g} of their mean in p and s"
+            f"the points of a sea of {n_electrons} electrons must lie within {n_electrons / 2:g} of their mean in p "
+            f"and s (both count modulo {n_electrons}), not {sea.tolist()}"
         )
     return sea
 
@@ -124,7 +125,7 @@ class FermiSeaGroup:
 
 
 @dataclass(frozen=True, eq=False)
-class FermiSea:
+class FermiSea(OnTorus):
     """Composite-fermion sea at 1/``exponent`` of ``n_electrons`` on ``frame``; see `mcgeo.states.base.TrialState`.
 
     Parameters
@@ -132,7 +133,8 @@ class FermiSea:
     exponent : int
         m, 2 or 4.
     points : sequence of pairs of int, optional
-        Occupied (p, s), the sea's points being p + s tau; those nearest to the origin when None.
+        Occupied (p, s), the sea's points being p + s tau with tau of ``frame.isotropic``; those nearest to the
+        origin when None.
 
     Raises
     ------
@@ -153,6 +155,7 @@ class FermiSea:
     best_acceptance: float = 0.38
     first_step: float = 4.0
     sweeps_per_measurement: int = 1
+    cost_per_pair: float = 40.0
     _tables: FermiSeaTables = field(init=False, repr=False)
 
     def __post_init__(self) -> None:

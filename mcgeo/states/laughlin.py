@@ -23,7 +23,7 @@ from mcgeo.kernels.laughlin_torus import (
     log_weights,
     refresh_phases,
 )
-from mcgeo.states.base import BOSONS, FERMIONS, Array
+from mcgeo.states.base import BOSONS, FERMIONS, Array, OnTorus
 
 _PROPOSALS_PER_VISIT = 2
 
@@ -59,7 +59,7 @@ class LaughlinGroup:
 
 
 @dataclass(frozen=True, eq=False)
-class Laughlin:
+class Laughlin(OnTorus):
     """Laughlin 1/m of ``n_electrons`` on ``frame``; see `mcgeo.states.base.TrialState`.
 
     Raises

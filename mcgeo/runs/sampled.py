@@ -1,0 +1,148 @@
+"""What every result file holds: block means, where the chains stand, and whether to trust them."""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mcgeo.estimate.diagnostics import Diagnostics, diagnose
+from mcgeo.estimate.statistics import independent_samples, integrated_autocorrelation_time
+from mcgeo.runs.build import schedule_from
+from mcgeo.sampling.blocks import BlockRecord
+from mcgeo.sampling.chain import ChainState, Schedule
+from mcgeo.states.base import SampledState
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Blocks:
+    """Block means of a run; a liquid that is an average over sectors has one component per sector.
+
+    Attributes
+    ----------
+    means : mapping of name to ndarray, shape (n_blocks, n_walkers, ...)
+        Averaged over components walker by walker: walkers stay independent.
+    counts : mapping of name to ndarray of int64, shape (n_blocks, n_walkers, n_bins)
+        Summed over components.
+    trace : ndarray, shape (n_components, n_blocks, n_walkers, n_measurements)
+        Energy per electron of single configurations.
+    accepted : ndarray, shape (n_components, n_blocks, n_walkers)
+    drift : ndarray, shape (n_components, n_blocks)
+    """
+
+    means: Mapping[str, Array]
+    counts: Mapping[str, NDArray[np.int64]]
+    trace: Array
+    accepted: Array
+    drift: Array
+
+    @classmethod
+    def from_records(cls, records: Sequence[Sequence[BlockRecord]], trace_offset: float) -> Blocks:
+        """From the records of each block (first index) and component; ``trace_offset`` is added to the trace."""
+        first = records[0][0]
+
+        def mean(name: str) -> Array:
+            return np.array([np.mean([r.means[name] for r in block], axis=0) for block in records])
+
+        def total(name: str) -> NDArray[np.int64]:
+            return np.array([np.sum([r.counts[name] for r in block], axis=0) for block in records])
+
+        return cls(
+            {name: mean(name) for name in first.means},
+            {name: total(name) for name in first.counts},
+            np.array([[r.trace for r in block] for block in records]).swapaxes(0, 1) + trace_offset,
+            np.array([[r.accepted for r in block] for block in records]).swapaxes(0, 1),
+            np.array([[r.drift for r in block] for block in records]).T,
+        )
+
+    def followed_by(self, later: Blocks) -> Blocks:
+        """These blocks and the later ones of the same chains."""
+        return Blocks(
+            {name: np.concatenate([mean, later.means[name]]) for name, mean in self.means.items()},
+            {name: np.concatenate([count, later.counts[name]]) for name, count in self.counts.items()},
+            np.concatenate([self.trace, later.trace], axis=1),
+            np.concatenate([self.accepted, later.accepted], axis=1),
+            np.concatenate([self.drift, later.drift], axis=1),
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class Sampled(ABC):
+    """One result file.
+
+    Attributes
+    ----------
+    resolved : mapping
+        The configuration with every default filled in.
+    blocks : Blocks
+    chains : list of ChainState
+        Where each component's chain stands.
+    seconds : float
+        Wall time of production.
+    complete : bool
+        False when the run was interrupted before its last block.
+    """
+
+    resolved: Mapping[str, Any]
+    blocks: Blocks
+    chains: list[ChainState]
+    seconds: float
+    complete: bool
+
+    @property
+    @abstractmethod
+    def sampled_states(self) -> Sequence[SampledState]:
+        """The states that were sampled, one per component."""
+
+    @property
+    @abstractmethod
+    def axes(self) -> Mapping[str, tuple[NDArray[Any], str]]:
+        """Arrays that label axes of the stored data, each with its unit."""
+
+    @property
+    @abstractmethod
+    def scaled_axes(self) -> Mapping[str, tuple[str, int]]:
+        """Which of `axes` is the scale of which dataset (``means/NAME`` or ``counts/NAME``) along which axis."""
+
+    @cached_property
+    def schedule(self) -> Schedule:
+        """How the chains ran."""
+        return schedule_from(self.resolved, self.sampled_states[0])
+
+    @cached_property
+    def time_in_measurements(self) -> float:
+        """Integrated autocorrelation time of the energy in measurements; the slowest component's."""
+        n_components, _, n_walkers, _ = self.blocks.trace.shape
+        series = np.moveaxis(self.blocks.trace, 2, 1).reshape(n_components, n_walkers, -1)
+        return float(np.nanmax([integrated_autocorrelation_time(x) for x in series] + [0.0])) or 1.0
+
+    @property
+    def autocorrelation_time(self) -> float:
+        """The same in sweeps."""
+        return self.time_in_measurements * self.schedule.sweeps_between
+
+    def independent(self, blocks: NDArray[Any]) -> Array:
+        """Independent samples of block means of shape (n_blocks, n_walkers, ...)."""
+        return independent_samples(blocks, self.schedule.measurements_per_block / self.time_in_measurements)
+
+    @cached_property
+    def diagnostics(self) -> Diagnostics:
+        """Whether the run may be trusted."""
+        return diagnose(
+            self.blocks.trace, self.blocks.accepted, self.time_in_measurements, self.schedule.sweeps_between
+        )
+
+    @property
+    def moves(self) -> int:
+        """Proposals of the whole production so far."""
+        schedule, state = self.schedule, self.sampled_states[0]
+        sweeps = self.blocks.drift.shape[1] * schedule.measurements_per_block * schedule.sweeps_between
+        per_sweep = schedule.n_walkers * state.n_electrons * state.proposals_per_sweep
+        return int(len(self.sampled_states) * sweeps * per_sweep)
