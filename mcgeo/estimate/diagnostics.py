@@ -70,7 +70,7 @@ def diagnose(trace: Array, accepted: Array, time_in_measurements: float, sweeps_
     r_hats = [split_r_hat(x) for x in series]
     r_hat = max(r_hats) if all(math.isfinite(r) for r in r_hats) else math.nan
     acceptance = float(accepted.mean())
-    samples = series[0].size / max(time_in_measurements, 1.0)
+    samples = series.size / max(time_in_measurements, 1.0)
     verdict = CONVERGED
     if samples < _LEAST_SAMPLES:
         verdict = SHORT

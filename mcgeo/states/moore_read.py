@@ -33,7 +33,7 @@ from mcgeo.kernels.moore_read_pairs import (
     moore_read_torus_tables,
 )
 from mcgeo.kernels.moore_read_torus import advance, log_weights, moore_read_storage, refresh
-from mcgeo.states.base import BOSONS, FERMIONS, Array
+from mcgeo.states.base import BOSONS, FERMIONS, Array, OnTorus
 
 
 class MooreReadGroup:
@@ -68,7 +68,7 @@ class MooreReadGroup:
 
 
 @dataclass(frozen=True, eq=False)
-class MooreRead:
+class MooreRead(OnTorus):
     """Moore-Read state at filling 1/m of ``n_electrons`` on ``frame``; see `mcgeo.states.base.TrialState`.
 
     Parameters
@@ -105,8 +105,8 @@ class MooreRead:
 
     @property
     def label(self) -> str:
-        """Moore-Read 1/m and the sector."""
-        return f"Moore-Read {self.filling}, sector {self.sector}"
+        """Moore-Read 1/m; the sector is in the state's keys."""
+        return f"Moore-Read {self.filling}"
 
     @property
     def filling(self) -> Fraction:
