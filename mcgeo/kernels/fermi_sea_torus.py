@@ -3,7 +3,8 @@
 With u = z / L1 = a + b tau, w = exp(2 pi i u), q = exp(i pi tau), theta(u) = theta_1(pi u | tau), occupied points
 (p_a, s_a) of mean (p, s), and displacements t_a = [(p_a - p) + (s_a - s) tau] / N, the state is
 
-    Psi = det M prod_{i<j} theta(u_i - u_j)^(m-2) F(U),  M_ia = exp(-2 pi i s_a u_i) prod_{k != i} theta(u_i - u_k - t_a),
+    Psi = det M prod_{i<j} theta(u_i - u_j)^(m-2) F(U),
+    M_ia = exp(-2 pi i s_a u_i) prod_{k != i} theta(u_i - u_k - t_a),
 
 U = sum u_i (Rezayi and Read, Phys. Rev. Lett. 72, 900 (1994); Shao, Kim, Haldane and Rezayi, Phys. Rev. Lett. 114,
 206402 (2015)).
@@ -19,8 +20,8 @@ the determinant column by column. In all, with P = N p, S = N s,
 
     det M -> exp(-2 pi i tau (N-1) - 4 pi i (N u_i - U) - 2 pi i (P + S tau)/N) det M:
 
-what prod theta(u_i - u_j)^2 does, times a constant. So F is the centre-of-mass factor of the Laughlin state 1/m with its
-argument moved by -(p + s tau)/m, which undoes that constant, and
+what prod theta(u_i - u_j)^2 does, times a constant. So F is the centre-of-mass factor of the Laughlin state 1/m with
+its argument moved by -(p + s tau)/m, which undoes that constant, and
 
     W = |det M|^2 prod_{i<j} |theta(u_i - u_j)|^(2(m-2))
         exp(-2 pi m Im(tau) sum_{i<j} (b_i - b_j)^2 - 4 pi s Im(tau) sum b_i)
@@ -93,8 +94,12 @@ class FermiSeaTables(NamedTuple):
 def largest_imaginary_tau(n_electrons: int, widest: float) -> float:
     """Largest Im(tau) at which no entry can leave the range of the elimination.
 
-    |f g| is at most exp(pi Im(tau)/12), and |w^-s| at most exp(pi Im(tau) |s|), met twice; ``widest`` is the largest
-    |s_a - s|.
+    |f g| is at most exp(pi Im(tau)/12) and |w^-s| at most exp(pi Im(tau) |s|), met twice.
+
+    Parameters
+    ----------
+    widest : float
+        Largest |s_a - s|.
     """
     return _LOG_RANGE / (math.pi * (n_electrons / 12.0 + 2.0 * (widest + 1.0)))
 
@@ -262,7 +267,7 @@ def fill_row(tables: Any, product: np.ndarray, reverse: bool, point: Any, i: int
 
 @kernel
 def log_pair_product(tables: Any, pairs: np.ndarray, first: int, skipped: int) -> float:
-    """sum log |theta|, normalised, of the electrons from ``first`` on but ``skipped``, against the point of ``pairs``."""
+    """sum log |f g| at t = 0 of the electrons from ``first`` on but ``skipped`` against the point of ``pairs``."""
     n = tables.n_electrons
     n_vectors = lane_vectors(n)
     moduli = np.empty((n_vectors, LANES))

@@ -153,7 +153,7 @@ class FermiSea(OnTorus):
     first_occupied: int = 1
     proposals_per_sweep: int = _PROPOSALS_PER_VISIT
     best_acceptance: float = 0.38
-    first_step: float = 4.0
+    first_step: float = 5.5
     sweeps_per_measurement: int = 1
     cost_per_pair: float = 40.0
     _tables: FermiSeaTables = field(init=False, repr=False)
