@@ -21,6 +21,7 @@ _EXIT_CODES = """exit codes:
 """
 
 
+_FIGURES = ["hole", "energy", "structure", "correlation", "occupations", "density", "trace"]
 _MODULES = {
     "sample": "run",
     "scan": "run",
@@ -51,7 +52,7 @@ def build_parser() -> argparse.ArgumentParser:
     scan.add_argument("--liquid", type=Path, metavar="FILE", help="take this sampled liquid instead of sampling")
 
     plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
-    plot.add_argument("what", choices=["hole", "energy", "structure", "correlation", "occupations", "trace"])
+    plot.add_argument("what", choices=_FIGURES)
     plot.add_argument("file", type=Path, metavar="FILE", help="result file, or a folder that holds one")
     plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file instead")
     plot.add_argument("--out", type=Path, metavar="DIR", help="where figures go (default: beside the file)")

@@ -5,6 +5,7 @@ from __future__ import annotations
 import argparse
 import json
 from collections.abc import Callable, Mapping
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -12,6 +13,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 import mcgeo
+from mcgeo.errors import StorageError
 from mcgeo.estimate.pair_correlation import counted_pair_correlation, radial_pair_correlation
 from mcgeo.estimate.statistics import mean_estimate
 from mcgeo.estimate.structure_factor import shell_means
@@ -19,11 +21,13 @@ from mcgeo.report import figures
 from mcgeo.report.figures import MeasuredShape
 from mcgeo.report.tables import map_table
 from mcgeo.runs.config import load_config
+from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.hole import hole_image
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import LIQUID_FILE
+from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import scan
-from mcgeo.runs.storage import read_liquid
+from mcgeo.runs.storage import as_liquid, read_result
 from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
 
 Drawing = tuple[Axes, Mapping[str, Any]]
@@ -37,11 +41,16 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo plot``."""
     path = arguments.file / LIQUID_FILE if arguments.file.is_dir() else arguments.file
-    liquid = read_liquid(path)
-    keys = dict(liquid.resolved)
+    result = read_result(path)
+    keys = dict(result.resolved)
     if arguments.problem is not None:
         keys.update(load_config(arguments.problem).model_dump(mode="json", by_alias=True, include={"problem", "scan"}))
-    axes, table = DRAWINGS[arguments.what](liquid, keys)
+    if arguments.what in COMMON:
+        axes, table = COMMON[arguments.what](result)
+    elif isinstance(result, Droplet):
+        axes, table = _of_droplet(result, arguments.what, path)
+    else:
+        axes, table = LIQUID[arguments.what](as_liquid(result, path), keys)
     figure = axes.get_figure(root=True)
     assert isinstance(figure, Figure)
     metadata = {
@@ -140,25 +149,43 @@ def _occupations(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     return figures.occupations(found.m, n, error), {"m": found.m, "n_m": n, "n_m error": error}
 
 
-def _trace(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
-    blocks = liquid.blocks.trace.mean(axis=(0, 3))
-    overall = mean_estimate(liquid.independent(blocks))
+def _trace(result: Sampled) -> Drawing:
+    blocks = result.blocks.trace.mean(axis=(0, 3))
+    overall = mean_estimate(result.independent(blocks))
     axes = figures.block_trace(
         blocks,
         mean=overall.value,
         error=overall.error,
-        tau=liquid.diagnostics.autocorrelation_time,
-        label=r"Coulomb energy of the cell $/\,(e^2/4\pi\varepsilon\ell_B)$",
+        tau=result.autocorrelation_time,
+        label=r"Coulomb energy per electron $/\,(e^2/4\pi\varepsilon\ell_B)$",
     )
     table = {f"walker {index} {_ENERGY}": column for index, column in enumerate(blocks.T)}
     return axes, {"block": np.arange(1, len(blocks) + 1), **table}
 
 
-DRAWINGS: dict[str, Callable[[Liquid, Mapping[str, Any]], Drawing]] = {
+def _of_droplet(droplet: Droplet, what: str, path: Path) -> Drawing:
+    if what != "density":
+        raise StorageError(f"{path} holds a droplet, of which density and trace can be drawn, not {what}")
+    density = droplet.density
+    radius = droplet.state.background.radius
+    middle = 0.5 * (density.edges[1:] + density.edges[:-1])
+    axes = figures.radial_density(
+        middle, density.density, density.error, background=droplet.state.background.density, edge=radius
+    )
+    table = {"r' [l_B]": middle, "density [1/l_B^2]": density.density, "density error [1/l_B^2]": density.error}
+    return axes, table
+
+
+def _no_density(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+    raise StorageError("a liquid on the torus is uniform: density is drawn of droplets only")
+
+
+COMMON: dict[str, Callable[[Sampled], Drawing]] = {"trace": _trace}
+LIQUID: dict[str, Callable[[Liquid, Mapping[str, Any]], Drawing]] = {
     "hole": _hole,
     "energy": _energy,
     "structure": _structure,
     "correlation": _correlation,
     "occupations": _occupations,
-    "trace": _trace,
+    "density": _no_density,
 }

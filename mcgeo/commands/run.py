@@ -9,8 +9,10 @@ from pathlib import Path
 from typing import Any
 
 from mcgeo.report.tables import json_ready, write_csv, write_json
-from mcgeo.report.text import sample_text, scan_text
+from mcgeo.report.text import droplet_text, sample_text, scan_text
 from mcgeo.runs.config import Config, config_from_resolved, load_config
+from mcgeo.runs.droplet import Droplet
+from mcgeo.runs.droplet_summary import droplet_summary
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sample_summary import sample_summary
@@ -48,9 +50,14 @@ def run_sample(arguments: argparse.Namespace) -> Answer:
     config = _config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
     result = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
-    summary = sample_summary(as_liquid(result, folder))
+    if isinstance(result, Droplet):
+        summary = droplet_summary(result)
+        text = droplet_text(summary)
+    else:
+        summary = sample_summary(as_liquid(result, folder))
+        text = sample_text(summary)
     write_json(folder / "sample.json", summary)
-    return as_json(summary) if arguments.json else sample_text(summary), _exit_code(summary)
+    return as_json(summary) if arguments.json else text, _exit_code(summary)
 
 
 def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:

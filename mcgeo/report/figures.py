@@ -2,7 +2,13 @@
 
 from mcgeo.report.energy_figure import energy_curve
 from mcgeo.report.hole_figure import MeasuredShape, hole_map
-from mcgeo.report.liquid_figures import block_trace, occupations, radial_pair_correlation, structure_factor
+from mcgeo.report.liquid_figures import (
+    block_trace,
+    occupations,
+    radial_density,
+    radial_pair_correlation,
+    structure_factor,
+)
 from mcgeo.report.saving import save_figure
 from mcgeo.report.style import new_axes, new_panels
 
@@ -14,6 +20,7 @@ __all__ = [
     "new_axes",
     "new_panels",
     "occupations",
+    "radial_density",
     "radial_pair_correlation",
     "save_figure",
     "structure_factor",

@@ -131,6 +131,35 @@ def radial_pair_correlation(
 
 
 @styled
+def radial_density(
+    r: Array, density: Array, error: Array, *, background: float, edge: float, axes: Axes | None = None
+) -> Axes:
+    """Density of a droplet along the radius, with the neutralising background.
+
+    Parameters
+    ----------
+    r, density, error : ndarray, shape (n,)
+        r' in l_B in the droplet's own metric, electrons per l_B^2, standard error.
+    background : float
+        Density of the background inside ``edge``.
+    edge : float
+        Its radius in l_B.
+    axes : Axes, optional
+
+    Returns
+    -------
+    Axes
+    """
+    axes = new_axes() if axes is None else axes
+    axes.step([0.0, edge, edge, r[-1]], [background, background, 0.0, 0.0], color=GREY, label="background")
+    axes.errorbar(r, density, yerr=error, fmt="o", markersize=2.0, elinewidth=0.8, color=BLUE, label="electrons")
+    axes.set(xlabel=r"$r'\,/\,\ell_B$ in the metric of the droplet", ylabel=r"density $\times\,\ell_B^2$")
+    axes.set(xlim=(0.0, r[-1]), ylim=(0.0, None))
+    axes.legend()
+    return axes
+
+
+@styled
 def block_trace(blocks: Array, *, mean: float, error: float, tau: float, label: str, axes: Axes | None = None) -> Axes:
     """Block means of every walker, their mean over walkers, and the overall mean: drift and outliers show.
 

@@ -61,6 +61,23 @@ def sample_text(summary: Mapping[str, Any]) -> str:
     return _lines(rows)
 
 
+def droplet_text(summary: Mapping[str, Any]) -> str:
+    """Lines for `mcgeo.runs.droplet_summary.droplet_summary`; energies per electron."""
+    state, energy = summary["state"], summary["energy_disk"]
+    moments = summary["second_moments"]
+    rows = [
+        ("state", f"{state['label']}, {state['electrons']} electrons"),
+        ("energy", f"{_estimate(energy)} {ENERGY_UNIT}"),
+        ("electrons with electrons", _pair(energy, "electron_electron")),
+        ("electrons with background", _pair(energy, "electron_background")),
+        ("background with itself", f"{energy['background_background']:.8g}"),
+        ("<x^2>, <y^2>, <xy>", ", ".join(_estimate(moments[key]) for key in ("xx", "yy", "xy")) + " l_B^2"),
+        ("moves per second", f"{summary['moves_per_second']:.3g}"),
+        *_health_rows(summary["diagnostics"]),
+    ]
+    return _lines(rows)
+
+
 def scan_text(summary: Mapping[str, Any]) -> str:
     """Lines for `mcgeo.runs.scan.scan_summary`; energies per electron."""
     state, problem, best = summary["state"], summary["problem"], summary["optimum"]

@@ -16,7 +16,8 @@ from mcgeo.problem.mass import mass_metric_from_axes, mass_metric_from_ratio, ma
 from mcgeo.problem.problem import Problem
 from mcgeo.sampling.chain import Schedule
 from mcgeo.states.base import SampledState, TrialState
-from mcgeo.states.registry import TORUS_STATES
+from mcgeo.states.droplet import DropletState
+from mcgeo.states.registry import DROPLET_STATES, TORUS_STATES
 
 Keys = Mapping[str, Any]
 
@@ -58,6 +59,12 @@ def torus_states(resolved: Keys) -> list[TrialState]:
     """
     state = resolved["state"]
     return TORUS_STATES[state["kind"]](state, torus_frame(resolved))
+
+
+def droplet_state(resolved: Keys) -> DropletState:
+    """The droplet of the configuration."""
+    state = resolved["state"]
+    return DROPLET_STATES[state["kind"]](state, metric_from(state["metric"]))
 
 
 def interaction_from(keys: Keys) -> Interaction:

@@ -8,10 +8,12 @@ from typing import Any
 
 from mcgeo.estimate.torus_energy import torus_energy
 from mcgeo.problem.interaction import Coulomb
-from mcgeo.runs.build import torus_frame, torus_states
+from mcgeo.runs.build import droplet_state, torus_frame, torus_states
+from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sampled import Sampled
 from mcgeo.sampling.blocks import Measurement
+from mcgeo.sampling.droplet_measurement import DropletMeasurement
 from mcgeo.sampling.measurement import torus_measurement
 from mcgeo.states.base import SampledState
 
@@ -46,8 +48,13 @@ def _torus(resolved: Mapping[str, Any]) -> Experiment:
     return Experiment(states, [torus_measurement(state, waves, energy.weights) for state in states], offset, Liquid)
 
 
-_EXPERIMENTS = {"torus": _torus}
-_RESULTS: dict[str, type[Sampled]] = {"torus": Liquid}
+def _disk(resolved: Mapping[str, Any]) -> Experiment:
+    state = droplet_state(resolved)
+    return Experiment([state], [DropletMeasurement(state)], 0.0, Droplet)
+
+
+_EXPERIMENTS = {"torus": _torus, "disk": _disk}
+_RESULTS: dict[str, type[Sampled]] = {"torus": Liquid, "disk": Droplet}
 
 
 def experiment_of(resolved: Mapping[str, Any]) -> Experiment:

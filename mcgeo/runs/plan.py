@@ -5,12 +5,16 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from mcgeo.runs.build import problem_from, schedule_from, torus_frame, torus_states
+from mcgeo.kernels.lanes import LANES
+from mcgeo.runs.build import droplet_state, problem_from, schedule_from, torus_frame
+from mcgeo.runs.experiment import experiment_of
 
 # Seconds per pair factor and per wave and electron of one core, measured on a processor with 512-bit registers at
 # 2.3 GHz; an estimate within a factor of two elsewhere.
-_SECONDS_PER_PAIR = 0.9e-9
+_SECONDS_PER_PAIR = 1.0e-9
 _SECONDS_PER_WAVE_AND_ELECTRON = 0.25e-9
+# Numbers per block and walker beside the waves and the trace: histograms.
+_KEPT_BESIDE_WAVES = 200
 
 
 def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
@@ -21,35 +25,43 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
     GeometryError
         If the cell does not suit the state.
     """
-    states = torus_states(resolved)
-    state, frame = states[0], torus_frame(resolved)
+    experiment = experiment_of(resolved)
+    state = experiment.states[0]
     schedule = schedule_from(resolved, state)
-    n_waves = len(frame.waves(resolved["sampling"]["q_max"]).integers)
-    n = state.n_electrons
+    n, n_components = state.n_electrons, len(experiment.states)
+    surface, n_waves = _surface(resolved)
     problem = problem_from(resolved["problem"])
     sweeps = schedule.sweeps_per_walker + 2 * schedule.equilibration
-    pairs = n * (n - 1.0) * state.proposals_per_sweep * state.cost_per_pair
-    per_walker = sweeps * pairs * _SECONDS_PER_PAIR
+    per_walker = sweeps * n * (n - 1.0) * state.proposals_per_sweep * state.cost_per_pair * _SECONDS_PER_PAIR
     per_walker += sweeps / schedule.sweeps_between * n * n_waves * _SECONDS_PER_WAVE_AND_ELECTRON
-    cores = min(schedule.threads, -(-schedule.n_walkers // 8))
-    numbers = schedule.n_blocks * schedule.n_walkers
-    tau = frame.isotropic.tau
+    cores = min(schedule.threads, -(-schedule.n_walkers // LANES))
+    kept = n_waves + _KEPT_BESIDE_WAVES + n_components * schedule.measurements_per_block
     return {
         "state": state.label,
-        "components": len(states),
+        "components": n_components,
         "electrons": n,
-        "flux_quanta": frame.lab.n_flux,
-        "cell": f"side {frame.lab.side:.5g} l_B, tau {tau.real:.5g} {tau.imag:+.5g}i in the state's metric",
+        **surface,
         "walkers": schedule.n_walkers,
         "sweeps_per_walker": schedule.sweeps_per_walker,
         "blocks": schedule.n_blocks,
         "sweeps_between_measurements": schedule.sweeps_between,
-        "wavevectors": n_waves,
         "interaction": problem.interaction.name,
         "level": problem.level,
         "mass_stretch": problem.mass_metric.stretch,
         "scan_points": resolved["scan"]["stretch"]["points"],
         "threads": schedule.threads,
-        "estimated_seconds": round(per_walker * schedule.n_walkers * len(states) / cores, 1),
-        "estimated_megabytes": round(numbers * (n_waves + 200 + schedule.measurements_per_block) * 8e-6, 2),
+        "estimated_seconds": round(per_walker * schedule.n_walkers * n_components / cores, 1),
+        "estimated_megabytes": round(schedule.n_blocks * schedule.n_walkers * kept * 8e-6, 2),
     }
+
+
+def _surface(resolved: Mapping[str, Any]) -> tuple[dict[str, Any], int]:
+    """Where the electrons live, and the number of waves measured."""
+    if resolved["geometry"]["kind"] == "disk":
+        background = droplet_state(resolved).background
+        return {"droplet_radius": f"{background.radius:.5g} l_B in the state's metric"}, 0
+    frame = torus_frame(resolved)
+    tau = frame.isotropic.tau
+    n_waves = len(frame.waves(resolved["sampling"]["q_max"]).integers)
+    words = f"side {frame.isotropic.side:.5g} l_B, tau {tau.real:.5g} {tau.imag:+.5g}i in the state's metric"
+    return {"flux_quanta": frame.lab.n_flux, "cell": words, "wavevectors": n_waves}, n_waves

@@ -9,7 +9,7 @@ from mcgeo.problem.landau_level import LOWEST
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import interaction_from
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.sampled import Sampled
+from mcgeo.runs.run_summary import diagnostics_summary, run_summary
 from mcgeo.variational.energy_surface import EnergySurface
 
 
@@ -22,19 +22,6 @@ def state_summary(liquid: Liquid) -> dict[str, Any]:
         "statistics": found.statistics,
         "label": found.label,
         "liquid_electrons": liquid.n_electrons,
-    }
-
-
-def diagnostics_summary(result: Sampled) -> dict[str, Any]:
-    """``diagnostics`` of the JSON output."""
-    health = result.diagnostics
-    return {
-        "acceptance": health.acceptance,
-        "autocorrelation_time": health.autocorrelation_time,
-        "effective_samples": health.effective_samples,
-        "r_hat": health.r_hat,
-        "drift": float(result.blocks.drift.max()),
-        "verdict": health.verdict if result.complete else "short",
     }
 
 
@@ -60,11 +47,6 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
         "occupations": [
             {"m": int(m), **occupations.occupation(index).as_dict()} for index, m in enumerate(occupations.m)
         ],
-        "acceptance": liquid.diagnostics.acceptance,
-        "step": liquid.chains[0].step,
-        "seed": liquid.resolved["sampling"]["seed"],
-        "seconds": liquid.seconds,
-        "moves_per_second": liquid.moves / liquid.seconds,
-        "complete": liquid.complete,
+        **run_summary(liquid),
         "diagnostics": diagnostics_summary(liquid),
     }

@@ -15,7 +15,8 @@ from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import problem_from
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.sample_summary import diagnostics_summary, state_summary
+from mcgeo.runs.run_summary import diagnostics_summary
+from mcgeo.runs.sample_summary import state_summary
 from mcgeo.variational.energy_surface import EnergySurface
 from mcgeo.variational.minimum import Minimum, find_minimum
 from mcgeo.variational.response import Response, mass_response, shape_verdict

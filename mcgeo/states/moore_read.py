@@ -95,6 +95,7 @@ class MooreRead(OnTorus):
     proposals_per_sweep: int = 3
     best_acceptance: float = 0.4
     sweeps_per_measurement: int = 2
+    cost_per_pair: float = 15.0
     _tables: MooreReadTorusTables = field(init=False, repr=False)
 
     def __post_init__(self) -> None:

@@ -7,10 +7,14 @@ from fractions import Fraction
 from typing import Any
 
 from mcgeo.geometry.frame import TorusFrame
+from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.states.base import TrialState
+from mcgeo.states.droplet import DropletState
 from mcgeo.states.fermi_sea import FermiSea
 from mcgeo.states.laughlin import Laughlin
+from mcgeo.states.laughlin_droplet import LaughlinDroplet
 from mcgeo.states.moore_read import MooreRead
+from mcgeo.states.moore_read_droplet import MooreReadDroplet
 
 _PFAFFIAN_SECTORS = (1, 2, 3)
 
@@ -26,4 +30,13 @@ TORUS_STATES: dict[str, StateMaker] = {
     "fermi_sea": lambda keys, frame: [
         FermiSea(Fraction(keys["filling"]).denominator, keys["electrons"], frame, keys["points"])
     ],
+}
+
+DropletMaker = Callable[[Mapping[str, Any], UnimodularMetric], DropletState]
+
+DROPLET_STATES: dict[str, DropletMaker] = {
+    "laughlin": lambda keys, metric: LaughlinDroplet(keys["exponent"], keys["electrons"], metric),
+    "moore_read": lambda keys, metric: MooreReadDroplet(
+        Fraction(keys["filling"]).denominator, keys["electrons"], metric
+    ),
 }

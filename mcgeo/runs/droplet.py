@@ -1,0 +1,75 @@
+"""A sampled droplet, and the quantities that follow from it without more sampling."""
+
+from __future__ import annotations
+
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mcgeo.estimate.droplet import DropletEnergies, RadialDensity, droplet_energies, radial_density
+from mcgeo.estimate.statistics import Estimate, mean_estimate
+from mcgeo.runs.build import droplet_state
+from mcgeo.runs.sampled import Sampled
+from mcgeo.sampling.droplet_measurement import (
+    ELECTRON_BACKGROUND,
+    ELECTRON_ELECTRON,
+    ELECTRON_ELECTRON_LAB,
+    RADIAL,
+    RADIAL_BIN_WIDTH,
+    SECOND_MOMENTS,
+)
+from mcgeo.states.droplet import DropletState
+
+Array = NDArray[np.float64]
+
+
+class Droplet(Sampled):
+    """One result file of a droplet."""
+
+    @cached_property
+    def state(self) -> DropletState:
+        """The trial state."""
+        return droplet_state(self.resolved)
+
+    @property
+    def sampled_states(self) -> list[DropletState]:
+        """The trial state."""
+        return [self.state]
+
+    @property
+    def axes(self) -> dict[str, tuple[NDArray[Any], str]]:
+        """Middle of the radial bins, in isotropic coordinates."""
+        n_bins = self.blocks.counts[RADIAL].shape[-1]
+        return {"radius": (RADIAL_BIN_WIDTH * (np.arange(n_bins) + 0.5), "l_B")}
+
+    @property
+    def scaled_axes(self) -> dict[str, tuple[str, int]]:
+        """Radial counts along the radius."""
+        return {"radius": (f"counts/{RADIAL}", 2)}
+
+    def samples(self, name: str) -> Array:
+        """Independent samples of a measured mean."""
+        return self.independent(self.blocks.means[name])
+
+    @property
+    def energies(self) -> DropletEnergies:
+        """Coulomb energies per electron with the neutralising ellipse."""
+        return droplet_energies(
+            self.state,
+            self.samples(ELECTRON_ELECTRON),
+            self.samples(ELECTRON_ELECTRON_LAB),
+            self.samples(ELECTRON_BACKGROUND),
+        )
+
+    @property
+    def second_moments(self) -> list[Estimate]:
+        """<x^2>, <y^2>, <xy> per electron in the lab, l_B^2."""
+        return [mean_estimate(column) for column in self.samples(SECOND_MOMENTS).T]
+
+    @property
+    def density(self) -> RadialDensity:
+        """Mean density on rings of the isotropic coordinates."""
+        counts = self.independent(self.blocks.counts[RADIAL])
+        return radial_density(counts, self.schedule.measurements_per_block, RADIAL_BIN_WIDTH)
