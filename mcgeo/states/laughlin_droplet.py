@@ -53,7 +53,7 @@ class LaughlinDroplet:
     kind: str = "laughlin"
     proposals_per_sweep: int = _PROPOSALS_PER_VISIT
     best_acceptance: float = 0.38
-    sweeps_per_measurement: int = 4
+    sweeps_per_measurement: int = 2
     cost_per_pair: float = 0.3
 
     @property

@@ -20,7 +20,7 @@ from mcgeo.kernels.pfaffian import aligned_zeros
 from mcgeo.states.base import BOSONS, FERMIONS, Array
 from mcgeo.states.droplet import uniform_in_disk
 
-_PROPOSALS_PER_VISIT = 4
+_PROPOSALS_PER_VISIT = 3
 
 
 class MooreReadDropletGroup:
@@ -42,7 +42,7 @@ class MooreReadDropletGroup:
         refresh_inverses(self.a, self.b, *self._along, *self._inverse, self.log_determinants)
 
     def advance(self, step: float, n_sweeps: int) -> None:
-        """Sweeps with four proposals per visited electron: all but the first spare an update of the inverse."""
+        """Sweeps with three proposals per visited electron: all but the first spare an update of the inverse."""
         advance(
             self._exponent, self.a, self.b, *self._along, *self._inverse, self.words, self.accepted,
             step, n_sweeps, _PROPOSALS_PER_VISIT,
@@ -71,8 +71,8 @@ class MooreReadDroplet:
     metric: UnimodularMetric = ISOTROPIC
     kind: str = "moore_read"
     proposals_per_sweep: int = _PROPOSALS_PER_VISIT
-    best_acceptance: float = 0.38
-    sweeps_per_measurement: int = 2
+    best_acceptance: float = 0.4
+    sweeps_per_measurement: int = 1
     cost_per_pair: float = 15.0
 
     def __post_init__(self) -> None:
@@ -107,7 +107,7 @@ class MooreReadDroplet:
     @property
     def first_step(self) -> float:
         """Near the best side of a square proposal, in proportion to the distance of electrons."""
-        return 3.0 * math.sqrt(self.exponent)
+        return 3.5 * math.sqrt(self.exponent)
 
     @property
     def largest_step(self) -> float:
