@@ -21,6 +21,7 @@ from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.liquid import Liquid
+from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
 from mcgeo.variational.energy_surface import EnergySurface
 from tests.physics.checks import Sampler, mean_probability, require_agreement, require_unit_pulls
 from tests.physics.closed_forms import (
@@ -33,13 +34,11 @@ from tests.physics.closed_forms import (
 
 def counted(liquid: Liquid) -> tuple[Curve, NDArray[np.float64]]:
     """Direct histogram of pair distances and its bin edges, bins with hardly a pair left out."""
-    width, first = 0.1, 8
-    counts = liquid.independent(liquid.blocks.pair_counts.astype(float))
-    n_configurations = -(-liquid.schedule.measurements_per_block // 4)
-    curve = counted_pair_correlation(
-        liquid.frame, liquid.states[0].n_electrons, width, counts, n_configurations
-    )
-    edges = width * np.arange(counts.shape[1] + 1)
+    first = 8
+    counts = liquid.independent(liquid.blocks.counts[PAIRS].astype(float))
+    configurations = liquid.configurations_per_count
+    curve = counted_pair_correlation(liquid.frame, liquid.n_electrons, BIN_WIDTH, counts, configurations)
+    edges = BIN_WIDTH * np.arange(counts.shape[1] + 1)
     return Curve(curve.x[first:], curve.value[first:], curve.error[first:]), edges[first:]
 
 

@@ -21,6 +21,7 @@ from mcgeo.geometry.metric import ISOTROPIC
 from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.liquid import Liquid
+from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
 from mcgeo.states.base import BOSONS
 from mcgeo.states.laughlin import Laughlin
 from mcgeo.variational.energy_surface import EnergySurface
@@ -155,10 +156,9 @@ def test_pairs_below_the_exponent_are_absent(request: pytest.FixtureRequest, nam
 @pytest.mark.parametrize("name", ["bosons", "third", "fifth"])
 def test_pairs_counted_directly_follow_the_occupations(request: pytest.FixtureRequest, name: str) -> None:
     liquid = request.getfixturevalue(name)
-    counts = liquid.independent(liquid.blocks.counts["pairs"].astype(float))
-    n_configurations = -(-liquid.schedule.measurements_per_block // 4)
-    n = liquid.states[0].n_electrons
-    counted = counted_pair_correlation(liquid.frame, n, 0.1, counts, n_configurations)
+    counts = liquid.independent(liquid.blocks.counts[PAIRS].astype(float))
+    configurations = liquid.configurations_per_count
+    counted = counted_pair_correlation(liquid.frame, liquid.n_electrons, BIN_WIDTH, counts, configurations)
     plane = bulk_radial_pair_correlation(liquid.occupations, counted.x)
     # Bins with at least some 20 pairs; a bin's mean differs from its middle by less than the tolerance.
     filled = counts.sum(axis=0) > 20
