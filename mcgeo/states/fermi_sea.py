@@ -155,7 +155,6 @@ class FermiSea(OnTorus):
     best_acceptance: float = 0.38
     first_step: float = 5.5
     sweeps_per_measurement: int = 1
-    cost_per_pair: float = 40.0
     _tables: FermiSeaTables = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
@@ -170,6 +169,11 @@ class FermiSea(OnTorus):
         widest = float(np.max(np.abs(sea[:, 1] - sea[:, 1].mean())))
         self.frame.require_tau_below(largest_imaginary_tau(self.n_electrons, widest))
         object.__setattr__(self, "_tables", fermi_sea_tables(self.exponent, cell.tau, cell.side, sea))
+
+    @property
+    def cost_per_pair(self) -> float:
+        """N factors of the determinant per other electron, and elimination in N^3."""
+        return 180.0 + 6.0 * self.n_electrons
 
     @property
     def label(self) -> str:

@@ -28,16 +28,19 @@ Wavefunction = Callable[[Complex], Complex]
 
 
 def theta_1(u: Complex, tau: complex) -> Complex:
-    """theta_1(pi u | tau), DLMF 20.2.1."""
-    n = np.arange(-12, 13) + 0.5
-    exponents = 1j * math.pi * (tau * n**2 + n - 0.5) + 2j * math.pi * np.asarray(u)[..., None] * n
-    return np.asarray(-1j * np.exp(exponents).sum(axis=-1))
+    """theta_1(pi u | tau) for |b| below 1.5, DLMF 20.2.1."""
+    n = np.arange(6, -8, -1)
+    coefficients = -1j * np.exp(1j * math.pi * (tau * (n + 0.5) ** 2 + n))
+    half = np.exp(1j * math.pi * np.asarray(u))
+    return np.asarray(np.polyval(coefficients, half**2) / half**13)
 
 
 def centre_of_mass(total: Complex, tau: complex, exponent: int) -> Complex:
     """One of the m centre-of-mass factors: F(U + tau) = exp(-i pi m tau - 2 pi i m U) F(U)."""
     n = np.arange(-12, 13)
-    return np.asarray(np.exp(1j * math.pi * tau * exponent * n**2 + 2j * math.pi * exponent * n * total[..., None]).sum(-1))
+    return np.asarray(
+        np.exp(1j * math.pi * tau * exponent * n**2 + 2j * math.pi * exponent * n * total[..., None]).sum(-1)
+    )
 
 
 def pair_product(u: Complex, tau: complex) -> Complex:
