@@ -26,8 +26,11 @@ def sampled(tmp_path_factory: pytest.TempPathFactory) -> Sampler:
         sweeps: int = 2000,
         walkers: int = 32,
         seed: int = 1,
+        measure_every: int | None = None,
+        step: float | None = None,
     ) -> Liquid:
-        key = (exponent, electrons, shape, tau, stretch, angle_degrees, sweeps, walkers, seed)
+        size = (exponent, electrons, shape, tau, stretch, angle_degrees)
+        key = (*size, sweeps, walkers, seed, measure_every, step)
         if key not in kept:
             metric = {"stretch": stretch, "angle_degrees": angle_degrees}
             config = config_from_resolved(
@@ -45,6 +48,8 @@ def sampled(tmp_path_factory: pytest.TempPathFactory) -> Sampler:
                         "blocks": 8,
                         "equilibration": 400,
                         "seed": seed,
+                        "measure_every": measure_every,
+                        "step": step,
                         "threads": 1,
                     },
                 }
