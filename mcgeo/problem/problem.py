@@ -2,43 +2,63 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.interaction import Interaction
-from mcgeo.problem.landau_level import form_factor_sq
+from mcgeo.problem.landau_level import LandauOrbit, Orbit
+from mcgeo.problem.tilted_field import TiltedField, TiltedOrbit
 
 
 @dataclass(frozen=True)
 class Problem:
-    """A projected problem: the orbit's shape is that of the mass, the hole's shape is free.
+    """A projected problem: the orbit's shape is that of mass and field, the hole's shape is free.
 
     Parameters
     ----------
     mass_metric : UnimodularMetric
-        g_m; the orbit metric g_L equals it.
+        g_m; the orbit metric g_L equals it when the field is not tilted.
     interaction : Interaction
     level : int
         Landau level n.
+    tilt : TiltedField or None
+        Tilted field and parabolic well; None: a field across an infinitely thin layer.
     """
 
     mass_metric: UnimodularMetric
     interaction: Interaction
     level: int = 0
+    tilt: TiltedField | None = None
+
+    @cached_property
+    def orbit(self) -> Orbit:
+        """Orbit of one electron."""
+        if self.tilt is None:
+            return LandauOrbit(self.mass_metric, self.level)
+        return TiltedOrbit(self.mass_metric, self.tilt, self.level)
 
     def effective_potential(self, wavevectors: NDArray[np.float64]) -> NDArray[np.float64]:
-        """v(q) = V(q) F_n(q; g_m)^2, the interaction of guiding centres, for wavevectors of shape (..., 2)."""
-        return self.interaction.potential(wavevectors) * form_factor_sq(wavevectors, self.level, self.mass_metric)
+        """v(q), the interaction of guiding centres, for wavevectors of shape (..., 2).
+
+        V(q) F_n(q; g_m)^2, or the integral over q_z of `TiltedOrbit.effective_potential`.
+        """
+        return self.orbit.effective_potential(wavevectors, self.interaction)
 
     def with_mass(self, mass_metric: UnimodularMetric) -> Problem:
         """The same problem for another mass metric."""
-        return Problem(mass_metric, self.interaction, self.level)
+        return replace(self, mass_metric=mass_metric)
+
+    def untilted(self) -> Problem:
+        """The same problem in the same well, the field across the plane."""
+        return self if self.tilt is None else replace(self, tilt=replace(self.tilt, angle=0.0))
 
     @property
     def is_symmetric(self) -> bool:
-        """True when mass and interaction are both isotropic, so that symmetry alone makes Q = 0 stationary."""
+        """True when nothing prefers a direction, so that symmetry alone makes Q = 0 stationary."""
         isotropic = self.interaction.symmetry is not None and self.interaction.symmetry.stretch == 0.0
-        return isotropic and self.mass_metric.stretch == 0.0
+        upright = self.tilt is None or self.tilt.angle == 0.0
+        return isotropic and upright and self.mass_metric.stretch == 0.0
