@@ -73,6 +73,30 @@ def distance_product(x: np.ndarray, y: np.ndarray, n_others: int, px: Any, py: A
 
 
 @kernel
+def _two_distance_products(x: np.ndarray, y: np.ndarray, n_others: int, px: Any, py: Any, qx: Any, qy: Any) -> Any:
+    """`distance_product` of two points at once: positions are loaded once and two chains of products overlap."""
+    first, first_exponent = splat(1.0), splat_bits(0)
+    second, second_exponent = splat(1.0), splat_bits(0)
+    j = 0
+    while j < n_others:
+        stop = min(j + _BLOCK, n_others)
+        while j + 2 <= stop:
+            near = _distance_sq(x, y, j, px, py) * _distance_sq(x, y, j + 1, px, py)
+            far = _distance_sq(x, y, j, qx, qy) * _distance_sq(x, y, j + 1, qx, qy)
+            first, second = first * near, second * far
+            j += 2
+        if j < stop:
+            first = first * _distance_sq(x, y, j, px, py)
+            second = second * _distance_sq(x, y, j, qx, qy)
+            j += 1
+        first, shift = split_exponent(first)
+        first_exponent = first_exponent + shift
+        second, shift = split_exponent(second)
+        second_exponent = second_exponent + shift
+    return first, first_exponent, second, second_exponent
+
+
+@kernel
 def power_of_two(k: Any) -> Any:
     """2^k per lane for integers k (as floats) held to [-1000, 1000]."""
     k = select(k < splat(-_LARGEST_POWER), splat(-_LARGEST_POWER), k)
@@ -87,6 +111,27 @@ def gaussian_ratio(px: Any, py: Any, dx: Any, dy: Any) -> Any:
     fall = (dx * (px * 2.0 + dx) + dy * (py * 2.0 + dy)) * 0.5
     power = round_to_integer(fall * -_LOG2_E)
     return exponential((power * _LN_2 + fall) * -1.0), power
+
+
+@kernel
+def propose(step: float, s0: Any, s1: Any, s2: Any, s3: Any) -> Any:
+    """Displacement uniform on a square of side ``step``, the number that decides, and the advanced generators."""
+    ux, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
+    uy, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
+    u, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
+    return (ux - 0.5) * step, (uy - 0.5) * step, u, s0, s1, s2, s3
+
+
+@kernel
+def accepts(
+    exponent: int, left: Any, near: Any, power: Any, right: Any, right_power: Any, new_near: Any, new_power: Any
+) -> Any:
+    """left (near 2^power)^m < right 2^right_power (new_near 2^new_power)^m; only ``right_power`` is a float."""
+    right = right * power_of_two(float_from_integer(new_power - power) * exponent + right_power)
+    for _factor in range(exponent):
+        left = left * near
+        right = right * new_near
+    return left < right
 
 
 @kernel
@@ -131,26 +176,21 @@ def advance(
             swap_rows(x, i, last)
             swap_rows(y, i, last)
             px, py = load(x, last), load(y, last)
-            near, power = distance_product(x, y, last, px, py)
-            for _hit in range(n_hits):
-                ux, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
-                uy, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
-                u, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
-                dx, dy = (ux - 0.5) * step, (uy - 0.5) * step
-                new_x, new_y = px + dx, py + dy
-                # What does not need the new product comes before it, to be worked on while the product runs.
-                right, gauss_power = gaussian_ratio(px, py, dx, dy)
-                left = u
-                for _factor in range(exponent):
-                    left = left * near
-                new_near, new_power = distance_product(x, y, last, new_x, new_y)
-                right = right * power_of_two(float_from_integer(new_power - power) * exponent + gauss_power)
-                for _factor in range(exponent):
-                    right = right * new_near
-                accept = left < right
+            dx, dy, u, s0, s1, s2, s3 = propose(step, s0, s1, s2, s3)
+            new_x, new_y = px + dx, py + dy
+            # The exponential comes before the products, to be worked on while they run.
+            gauss, gauss_power = gaussian_ratio(px, py, dx, dy)
+            near, power, new_near, new_power = _two_distance_products(x, y, last, px, py, new_x, new_y)
+            for hit in range(n_hits):
+                accept = accepts(exponent, u, near, power, gauss, gauss_power, new_near, new_power)
                 px, py = select(accept, new_x, px), select(accept, new_y, py)
                 near, power = select(accept, new_near, near), select(accept, new_power, power)
                 n_accepted = n_accepted + select(accept, splat(1.0), splat(0.0))
+                if hit + 1 < n_hits:
+                    dx, dy, u, s0, s1, s2, s3 = propose(step, s0, s1, s2, s3)
+                    new_x, new_y = px + dx, py + dy
+                    gauss, gauss_power = gaussian_ratio(px, py, dx, dy)
+                    new_near, new_power = distance_product(x, y, last, new_x, new_y)
             store(x, last, px)
             store(y, last, py)
     store(accepted, 0, n_accepted)

@@ -13,9 +13,8 @@ from typing import Any
 import numpy as np
 
 from mcgeo.kernels._jit import kernel
-from mcgeo.kernels.elementary import next_uniform
-from mcgeo.kernels.lanes import LANES, float_from_integer, load, select, splat, store
-from mcgeo.kernels.laughlin_disk import distance_product, gaussian_ratio, power_of_two, swap_rows
+from mcgeo.kernels.lanes import LANES, load, select, splat, store
+from mcgeo.kernels.laughlin_disk import accepts, distance_product, gaussian_ratio, propose, swap_rows
 from mcgeo.kernels.pfaffian import exchange_row, invert
 
 # Added to squared distances: makes 1/(z - z) zero and leaves every other value as it is.
@@ -137,10 +136,7 @@ def advance(
             near, power = distance_product(x, y, last, px, py)
             paired, moved = splat(1.0), splat(0.0)
             for _hit in range(n_hits):
-                ux, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
-                uy, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
-                u, s0, s1, s2, s3 = next_uniform(s0, s1, s2, s3)
-                dx, dy = (ux - 0.5) * step, (uy - 0.5) * step
+                dx, dy, u, s0, s1, s2, s3 = propose(step, s0, s1, s2, s3)
                 new_x, new_y = px + dx, py + dy
                 store(proposal, 0, new_x)
                 store(proposal, 1, new_y)
@@ -150,14 +146,11 @@ def advance(
                         proposal[0, walker], proposal[1, walker], sums,
                     )  # fmt: skip
                 new_paired = load(ratios, 0)
-                right, gauss_power = gaussian_ratio(px, py, dx, dy)
+                gauss, gauss_power = gaussian_ratio(px, py, dx, dy)
                 new_near, new_power = distance_product(x, y, last, new_x, new_y)
-                right = right * power_of_two(float_from_integer(new_power - power) * exponent + gauss_power)
-                left, right = u * paired, right * new_paired
-                for _factor in range(exponent):
-                    left = left * near
-                    right = right * new_near
-                accept = left < right
+                accept = accepts(
+                    exponent, u * paired, near, power, gauss * new_paired, gauss_power, new_near, new_power
+                )
                 px, py = select(accept, new_x, px), select(accept, new_y, py)
                 near, power = select(accept, new_near, near), select(accept, new_power, power)
                 paired, moved = select(accept, new_paired, paired), select(accept, splat(1.0), moved)

@@ -11,6 +11,7 @@ from mcgeo.kernels._jit import kernel
 from mcgeo.kernels.lanes import LANES, float_from_integer, load, store
 from mcgeo.kernels.laughlin_disk import distance_product, gaussian_ratio
 from mcgeo.states.laughlin_droplet import LaughlinDroplet
+from tests.exact.droplet_reference import replayed
 
 
 @kernel
@@ -73,6 +74,18 @@ def test_change_of_log_weight_at_forty_digits(n_electrons, length):
             exact = 2 * exponent * mpmath.fsum(mpmath.log(abs((moved - w) / (z[-1] - w))) for w in z[:-1])
             exact -= (abs(moved) ** 2 - abs(z[-1]) ** 2) / 2
         assert found[lane] == pytest.approx(float(exact), rel=1e-13, abs=1e-10)
+
+
+@pytest.mark.parametrize("n_electrons", [57, 58, 116])
+def test_moves_with_several_blocks(n_electrons):
+    droplet = LaughlinDroplet(3, n_electrons)
+    x, y, words = start(droplet, 7)
+    expected_x, expected_y, expected = replayed(3, x, y, words, 5.0, 1, 2, paired=False)
+    group = droplet.group(x, y, words)
+    group.advance(5.0, 1)
+    np.testing.assert_array_equal(group.accepted[0], expected)
+    np.testing.assert_allclose(group.a, expected_x, atol=1e-11)
+    np.testing.assert_allclose(group.b, expected_y, atol=1e-11)
 
 
 def test_four_hundred_electrons_stay_in_range():
