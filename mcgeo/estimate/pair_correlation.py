@@ -10,7 +10,7 @@ import math
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import eval_laguerre, gammaln, j0
+from scipy.special import gammaln, j0
 
 from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.estimate.statistics import jackknife_error, jackknife_means
@@ -18,6 +18,7 @@ from mcgeo.estimate.structure_factor import Curve
 from mcgeo.estimate.torus_energy import soft_window
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.geometry.metric import UnimodularMetric
+from mcgeo.problem.landau_level import Orbit
 
 Array = NDArray[np.float64]
 
@@ -97,14 +98,13 @@ def bulk_pair_correlation_maps(
     occupations: PairOccupations,
     coefficients: Array,
     hole_metric: UnimodularMetric,
-    orbit_metric: UnimodularMetric,
-    level: int,
+    orbit: Orbit,
     x: Array,
     y: Array,
 ) -> Array:
     """g(x, y) of the electrons of the infinite liquid, hole and orbit of different shapes.
 
-    The electron's own orbit is folded in: S(q) - 1 = F_n(q; g_L)^2 (Sbar(|q|_g) - 1) for q != 0, and
+    The electron's own orbit is folded in: S(q) - 1 = F(q)^2 (Sbar(|q|_g) - 1) for q != 0, and
     g(r) = 1 + (2 pi/nu) int d^2q/(2 pi)^2 (S(q) - 1) cos(q.r).
 
     Parameters
@@ -117,14 +117,14 @@ def bulk_pair_correlation_maps(
     -------
     ndarray, shape (n, n_y, n_x)
     """
-    # In the orbit's coordinates q = S_L p the form factor is isotropic and cuts the integral at |p| = 9.
+    # In the orbit's coordinates q = S_L p the form factor of the lowest state is isotropic; it cuts the integral.
     nodes, weights = np.polynomial.legendre.leggauss(_RADIAL_NODES)
-    p = 4.5 * (nodes + 1.0)
+    p = 0.5 * orbit.reach * (nodes + 1.0)
     phi = math.pi * (np.arange(_N_ANGLES) + 0.5) / _N_ANGLES
-    q = (p[:, None, None] * (np.stack([np.cos(phi), np.sin(phi)], axis=-1) @ orbit_metric.linear_map.T)).reshape(-1, 2)
-    form_factor = np.exp(-0.5 * p**2) * eval_laguerre(level, 0.5 * p**2) ** 2
+    q = (p[:, None, None] * (np.stack([np.cos(phi), np.sin(phi)], axis=-1) @ orbit.metric.linear_map.T)).reshape(-1, 2)
     # (2 pi/nu)/(2 pi)^2 times the angular step 2 pi/n.
-    measure = np.repeat(4.5 * weights * p * form_factor, _N_ANGLES) / (float(occupations.filling) * _N_ANGLES)
+    measure = np.repeat(0.5 * orbit.reach * weights * p, _N_ANGLES) / (float(occupations.filling) * _N_ANGLES)
+    measure *= orbit.form_factor_sq(q)
     basis = occupations.basis(np.sqrt(hole_metric.wavevector_norm_sq(q)))
     limit = occupations.statistics_sign * float(occupations.filling)
     # cos(q.r) = cos(qx x) cos(qy y) - sin sin: a map is two matrix products.

@@ -24,7 +24,6 @@ Array = NDArray[np.float64]
 _WINDOW_MARGIN = 2.0
 # Beyond this |q|_g^2 the measured Sbar - 1 = exp(|q|_g^2/2)(S - 1) is noise and its limit is put in its place.
 _LIMIT_SQ = 16.0
-_GAUSSIAN_CUT = 9.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -72,8 +71,9 @@ def projected_torus_energy(
 ) -> LinearEnergy:
     """Energy of the guiding-centre state of metric g seen through another orbit.
 
-    (1/2A) sum V(q) F_n(q; g_m)^2 [Sbar_g(q) - 1] + xi/2, Sbar_g - 1 = exp(|q|_g^2/2) (S_g - 1) where |q|_g^2 < 16 and
-    its limit, -nu for fermions and +nu for bosons, beyond.
+    (1/2A) sum v(q) [Sbar_g(q) - 1] + xi/2 with v(q) = V(q) F_n(q; g_m)^2 in a thin layer; Sbar_g - 1 =
+    exp(|q|_g^2/2) (S_g - 1) where |q|_g^2 < 16 and its limit, -nu for fermions and +nu for bosons, beyond. Images of
+    one electron lie in one plane, also where its orbit extends across the layer: xi is that of V.
     """
     waves = frame.waves(q_max)
     norm_sq = frame.metric.wavevector_norm_sq(waves.vectors)
@@ -81,7 +81,7 @@ def projected_torus_energy(
     factor = problem.effective_potential(waves.vectors) / frame.lab.area
     weights = np.where(measured, factor * np.exp(0.5 * np.where(measured, norm_sq, 0.0)), 0.0)
     # All waves out to where the orbit's form factor has died away.
-    far = frame.lab.waves(_GAUSSIAN_CUT, problem.mass_metric)
+    far = frame.lab.waves(problem.orbit.reach, problem.orbit.metric)
     beyond = frame.metric.wavevector_norm_sq(far.vectors) >= _LIMIT_SQ
     limit = (-1.0 if statistics == FERMIONS else 1.0) * float(filling)
     tail = limit * np.sum(problem.effective_potential(far.vectors[beyond])) / frame.lab.area

@@ -51,11 +51,11 @@ class HoleImage:
 
 def hole_image(occupations: PairOccupations, problem: Problem, minimum: Minimum) -> HoleImage:
     """Map, contour and fitted ellipse, with errors from the block samples and from the optimum's own error."""
-    reach = _DISTANCES * np.sqrt(2.0 * np.pi / float(occupations.filling)) * problem.mass_metric.aspect_ratio**0.25
+    reach = _DISTANCES * np.sqrt(2.0 * np.pi / float(occupations.filling)) * problem.orbit.metric.aspect_ratio**0.25
     x = np.linspace(-reach, reach, _GRID_POINTS)
     metric = minimum.metric
     mean = occupations.coefficients[None, :]
-    g = bulk_pair_correlation_maps(occupations, mean, metric, problem.mass_metric, problem.level, x, x)[0]
+    g = bulk_pair_correlation_maps(occupations, mean, metric, problem.orbit, x, x)[0]
     level = 0.5 * (1.0 + float(g[_GRID_POINTS // 2, _GRID_POINTS // 2]))
     ellipse = fitted_ellipse(x, x, g, level)
     stretch, angle = _errors(occupations, problem, minimum, reach, level, ellipse)
@@ -76,9 +76,7 @@ def _errors(
 
     def shapes(coefficients: Array, metric: UnimodularMetric) -> Array:
         """Flat coordinates about the ellipse's own metric, shape (n, 2)."""
-        maps = bulk_pair_correlation_maps(
-            occupations, coefficients, metric, problem.mass_metric, problem.level, grid, grid
-        )
+        maps = bulk_pair_correlation_maps(occupations, coefficients, metric, problem.orbit, grid, grid)
         fits = [fitted_ellipse(grid, grid, g, level) for g in maps]
         return np.array(
             [fit.metric.relative_to(ellipse.metric).flat_coordinates if fit else (np.nan, np.nan) for fit in fits]
