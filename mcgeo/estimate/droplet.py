@@ -72,7 +72,9 @@ class RadialDensity:
     error: Array
 
 
-def radial_density(counts: NDArray[np.float64] | NDArray[np.int64], n_configurations: int, bin_width: float) -> RadialDensity:
+def radial_density(
+    counts: NDArray[np.float64] | NDArray[np.int64], n_configurations: int, bin_width: float
+) -> RadialDensity:
     """Density from independent samples of the radial counts, shape (n_samples, n_bins)."""
     edges = bin_width * np.arange(counts.shape[1] + 1)
     samples = counts / (n_configurations * math.pi * np.diff(edges**2))
