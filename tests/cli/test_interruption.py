@@ -1,0 +1,114 @@
+"""A run that is stopped keeps its whole blocks, and the same command ends it as if nothing had happened."""
+
+from __future__ import annotations
+
+import json
+import signal
+import subprocess
+from pathlib import Path
+
+import h5py
+import numpy as np
+import pytest
+
+from mcgeo.cli import main
+from tests.cli.conftest import SMALL, python_process
+
+# The program itself, but for a halt at the fourth block until the signal has come: in mid-run without a race.
+WAIT_IN_FOURTH_BLOCK = """
+import sys, time
+from mcgeo.runs import sample
+advance, blocks = sample.next_block, []
+def next_block(*arguments):
+    blocks.append(None)
+    if len(blocks) == 4:
+        print("fourth block", file=sys.stderr, flush=True)
+        while not arguments[-1].is_set():
+            time.sleep(0.01)
+    return advance(*arguments)
+sample.next_block = next_block
+from mcgeo.cli import main
+sys.exit(main(sys.argv[1:]))
+"""
+# Volatile: they tell how long it took.
+TIMES = {"seconds", "moves_per_second"}
+
+
+def stop_when(process: subprocess.Popen[str], words: str, number: signal.Signals) -> tuple[int, str, str]:
+    """Send the signal once ``words`` stand on standard error; exit code and both outputs after that."""
+    assert process.stderr is not None
+    lines = []
+    for line in process.stderr:
+        lines.append(line)
+        if words in line:
+            process.send_signal(number)
+            break
+    try:
+        out, err = process.communicate(timeout=120)
+    finally:
+        process.kill()
+    return process.returncode, out, "".join(lines) + err
+
+
+def contents(path: Path) -> dict[str, bytes]:
+    """Every dataset of a file to the last bit, and every attribute but the time it took."""
+    found: dict[str, bytes] = {}
+
+    def note(name: str, item: h5py.Group | h5py.Dataset) -> None:
+        if isinstance(item, h5py.Dataset):
+            found[name] = np.asarray(item[()]).tobytes()
+        for key, value in item.attrs.items():
+            if key not in {"seconds", "REFERENCE_LIST", "DIMENSION_LIST"}:
+                found[f"{name}@{key}"] = repr(value).encode()
+
+    with h5py.File(path) as file:
+        file.visititems(note)
+        note("", file)
+    return found
+
+
+@pytest.mark.parametrize(("number", "code"), [(signal.SIGINT, 130), (signal.SIGTERM, 143)])
+def test_interrupted_run_ends_like_an_uninterrupted_one(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], number: signal.Signals, code: int
+) -> None:
+    (tmp_path / "run.yaml").write_text(SMALL)
+    command = ["sample", str(tmp_path / "run.yaml"), "--json", "--out"]
+    process = python_process(tmp_path, "-c", WAIT_IN_FOURTH_BLOCK, *command, "stopped")
+    found, out, err = stop_when(process, "fourth block", number)
+    assert found == code and out == ""
+    assert "3 whole blocks are in" in err and "the same command goes on" in err
+    with h5py.File(tmp_path / "stopped/liquid.h5") as file:
+        assert not file.attrs["complete"]
+    # A result file already: it can be looked at, and says that it is short.
+    assert main(["scan", str(tmp_path / "stopped/liquid.h5"), "--json"]) == 3
+    assert json.loads(capsys.readouterr().out)["diagnostics"]["verdict"] == "short"
+
+    answers = []
+    for folder in ("stopped", "whole"):
+        assert main([*command, str(tmp_path / folder)]) == 0
+        answers.append(json.loads(capsys.readouterr().out))
+    for answer in answers:
+        for key in TIMES:
+            del answer[key]
+    assert answers[0] == answers[1]
+    stopped, whole = (contents(tmp_path / folder / "liquid.h5") for folder in ("stopped", "whole"))
+    assert {name.split("/")[0] for name in whole} >= {"axes", "blocks", "checkpoint"}
+    assert stopped == whole
+
+
+def test_stop_before_the_first_block_leaves_nothing(tmp_path: Path) -> None:
+    (tmp_path / "run.yaml").write_text(SMALL.replace("equilibration: 100", "equilibration: 60000"))
+    process = python_process(tmp_path, "-m", "mcgeo", "sample", "run.yaml", "--out", "stopped")
+    code, out, err = stop_when(process, "equilibrating", signal.SIGINT)
+    assert code == 130 and out == ""
+    assert "nothing is kept" in err and "Traceback" not in err
+    assert not (tmp_path / "stopped").exists()
+
+
+def test_reader_that_goes_away_is_no_error(tmp_path: Path) -> None:
+    process = python_process(tmp_path, "-m", "mcgeo", "schema")
+    assert process.stdout is not None and process.stderr is not None
+    process.stdout.close()
+    assert process.wait(timeout=60) == 0
+    assert process.stderr.read() == ""
+    process.stderr.close()
