@@ -18,6 +18,7 @@ from mcgeo.sampling.chain import Schedule
 from mcgeo.states.base import SampledState, TrialState
 from mcgeo.states.droplet import DropletState
 from mcgeo.states.registry import DROPLET_STATES, TORUS_STATES
+from mcgeo.variational.variation import Variation
 
 Keys = Mapping[str, Any]
 
@@ -88,6 +89,11 @@ def mass_metric(keys: Keys) -> UnimodularMetric:
 def problem_from(keys: Keys) -> Problem:
     """The projected problem."""
     return Problem(mass_metric(keys["mass"]), interaction_from(keys["interaction"]), keys["level"])
+
+
+def variation_from(keys: Keys) -> Variation:
+    """Kind of variation of the problem."""
+    return Variation(keys["variation"], keys["level_mixing"] or 1.0)
 
 
 def available_threads() -> int:

@@ -100,6 +100,25 @@ class ProblemConfig(Group):
     )
 
 
+    variation: Literal["projected", "rigid", "two_metric"] = Field(
+        default="projected",
+        description="What varies: the hole (orbits follow the mass), hole and orbits as one, or both apart.",
+    )
+    level_mixing: Positive | None = Field(
+        default=None,
+        validate_default=True,
+        description="Coulomb energy over cyclotron energy, for rigid and two_metric [1].",
+    )
+
+    @field_validator("level_mixing")
+    @classmethod
+    def _kinetic_energy_known(cls, level_mixing: float | None, info: ValidationInfo) -> float | None:
+        kind = info.data.get("variation", "projected")
+        if level_mixing is None and kind != "projected":
+            raise rule(f"must be given for the variation {kind}: a positive number, Coulomb over cyclotron energy")
+        return level_mixing
+
+
 class StretchRangeConfig(Group):
     """Equally spaced stretches."""
 

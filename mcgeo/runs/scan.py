@@ -13,13 +13,14 @@ from numpy.typing import NDArray
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
-from mcgeo.runs.build import problem_from
+from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample_summary import state_summary
-from mcgeo.variational.energy_surface import EnergySurface
+from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
 from mcgeo.variational.response import Response, mass_response, shape_verdict
+from mcgeo.variational.variation import Variation, orbit_estimates, surface_of
 
 Array = NDArray[np.float64]
 
@@ -51,7 +52,10 @@ class Scan:
     """Everything one scan found."""
 
     problem: Problem
+    variation: Variation
     minimum: Minimum
+    orbit_stretch: Estimate
+    orbit_angle: Estimate
     response: Response
     verdict: str
     curve: EnergyCurve
@@ -66,9 +70,10 @@ def scan(liquid: Liquid, problem_keys: Mapping[str, Any], scan_keys: Mapping[str
         If the range of stretches goes farther from the mass metric than the quadrature resolves.
     """
     problem = problem_from(problem_keys)
-    surface = EnergySurface(liquid.occupations, problem)
+    variation = variation_from(problem_keys)
+    surface = surface_of(liquid.occupations, problem, variation)
     minimum = find_minimum(surface)
-    response = mass_response(liquid.occupations, problem)
+    response = mass_response(lambda other: surface_of(liquid.occupations, other, variation), problem)
     angle = scan_keys["angle_degrees"]
     if angle is not None:
         direction = math.radians(angle)
@@ -77,12 +82,13 @@ def scan(liquid: Liquid, problem_keys: Mapping[str, Any], scan_keys: Mapping[str
     span = scan_keys["stretch"]
     stretches = np.linspace(span["from"], span["to"], span["points"])
     return Scan(
-        problem, minimum, response, shape_verdict(problem, minimum, response),
+        problem, variation, minimum, *orbit_estimates(surface, minimum), response,
+        shape_verdict(problem, minimum, response),
         _curve(surface, minimum, direction, stretches),
     )  # fmt: skip
 
 
-def _curve(surface: EnergySurface, minimum: Minimum, angle: float, stretches: Array) -> EnergyCurve:
+def _curve(surface: Surface, minimum: Minimum, angle: float, stretches: Array) -> EnergyCurve:
     at_minimum = surface.sample_energies(minimum.metric)
     samples = np.stack([surface.sample_energies(UnimodularMetric(q, angle)) for q in stretches], axis=-1)
     return EnergyCurve(
@@ -125,6 +131,9 @@ def optimum_summary(found: Scan) -> dict[str, Any]:
         "isotropic_stiffness": found.response.isotropic_stiffness.value,
         "isotropic_stiffness_error": found.response.isotropic_stiffness.error,
         **_pair("response", found.response.response),
+        **_pair("orbit_stretch", found.orbit_stretch),
+        "orbit_angle_degrees": math.degrees(found.orbit_angle.value),
+        "orbit_angle_error": math.degrees(found.orbit_angle.error),
         "interior": m.interior,
         "shape_verdict": found.verdict,
     }

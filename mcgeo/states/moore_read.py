@@ -50,7 +50,7 @@ class MooreReadGroup:
 
     def refresh(self) -> None:
         """Phases, sums and inverse matrices from the positions."""
-        refresh(self._tables, self.a, self.b, self._storage, np.empty((1, LANES)))
+        refresh(self._tables, self.a, self.b, self._storage)
 
     def advance(self, step: float, n_sweeps: int) -> None:
         """Sweeps with several proposals per visited electron."""
@@ -59,12 +59,18 @@ class MooreReadGroup:
         )  # fmt: skip
 
     def drift(self) -> float:
-        """Largest error of an inverse matrix in units of its largest entry."""
-        kept = self._storage.inverses.copy()
+        """Largest error of an inverse matrix in units of its largest entry, rows and columns scaled as for elimination."""
+        kept = self._scaled_inverses()
         self.refresh()
-        made = self._storage.inverses
-        scale = np.abs(made).max(axis=(1, 2, 3))
-        return float(np.max(np.abs(kept - made).max(axis=(1, 2, 3)) / scale))
+        made = self._scaled_inverses()
+        return float(np.max(np.abs(kept - made).max(axis=(1, 2, 3)) / np.abs(made).max(axis=(1, 2, 3))))
+
+    def _scaled_inverses(self) -> Array:
+        """The inverses with the left-out factors sqrt|w| put back, shape (8, 2, n, n)."""
+        n = len(self.b)
+        inverses = self._storage.inverses.reshape(LANES, 2, n, -1)[..., :n]
+        scale = np.exp(self._tables.half_phases * math.pi * self._tables.tau_imag * self.b.T)
+        return np.asarray(inverses * scale[:, None, :, None] * scale[:, None, None, :])
 
 
 @dataclass(frozen=True, eq=False)
@@ -93,8 +99,8 @@ class MooreRead(OnTorus):
     sector: int
     kind: str = "moore_read"
     proposals_per_sweep: int = 3
-    best_acceptance: float = 0.4
-    sweeps_per_measurement: int = 2
+    best_acceptance: float = 0.35
+    sweeps_per_measurement: int = 1
     cost_per_pair: float = 15.0
     _tables: MooreReadTorusTables = field(init=False, repr=False)
 
@@ -132,7 +138,7 @@ class MooreRead(OnTorus):
     @property
     def first_step(self) -> float:
         """Scaled with the distance of electrons."""
-        return 3.5 * math.sqrt(self.exponent)
+        return 4.5 * math.sqrt(self.exponent)
 
     def group(self, a: Array, b: Array, words: NDArray[np.uint64]) -> MooreReadGroup:
         """Eight walkers at the given fractions."""

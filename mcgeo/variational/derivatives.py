@@ -7,13 +7,11 @@ rounding about 1e-15/h^2.
 
 from __future__ import annotations
 
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-
-from mcgeo.geometry.metric import UnimodularMetric
-from mcgeo.variational.energy_surface import EnergySurface
 
 Array = NDArray[np.float64]
 
@@ -24,45 +22,44 @@ _SECOND = {-2: -1.0 / 12.0, -1: 16.0 / 12.0, 0: -30.0 / 12.0, 1: 16.0 / 12.0, 2:
 
 @dataclass(frozen=True, eq=False)
 class LocalExpansion:
-    """Second-order expansion about ``metric``.
+    """Second-order expansion about a point of d coordinates, two for every metric that varies.
 
     Attributes
     ----------
-    metric : UnimodularMetric
     energy : ndarray, shape (n_samples,)
-    gradient : ndarray, shape (n_samples, 2)
-    hessian : ndarray, shape (n_samples, 2, 2)
+    gradient : ndarray, shape (n_samples, d)
+    hessian : ndarray, shape (n_samples, d, d)
     """
 
-    metric: UnimodularMetric
     energy: Array
     gradient: Array
     hessian: Array
 
 
-def local_expansion(surface: EnergySurface, metric: UnimodularMetric) -> LocalExpansion:
-    """Expansion of every sample's energy about ``metric``; all are linear in the samples."""
-    reach = range(-2, 3)
-    values = {
-        (i, j): surface.sample_energies(metric.displaced(i * _STEP, j * _STEP))
-        for i in reach
-        for j in reach
-        if i == 0 or j == 0 or abs(i) == abs(j)
-    }
-    gradient = np.stack(
-        [
-            sum(w * values[k, 0] for k, w in _FIRST.items()) / _STEP,
-            sum(w * values[0, k] for k, w in _FIRST.items()) / _STEP,
-        ],
-        axis=-1,
-    )
-    along = sum(w * values[k, 0] for k, w in _SECOND.items()) / _STEP**2
-    across = sum(w * values[0, k] for k, w in _SECOND.items()) / _STEP**2
+def expansion(samples: Callable[[Array], Array], dimension: int) -> LocalExpansion:
+    """Expansion about the origin of ``samples(point)``, energies of shape (n_samples,) at a point of shape (d,)."""
+    unit = np.eye(dimension) * _STEP
+    centre = samples(np.zeros(dimension))
+    on_axis = [{k: samples(k * unit[i]) for k in _FIRST} for i in range(dimension)]
+    gradient = np.stack([_weighted(_FIRST, values) / _STEP for values in on_axis], axis=-1)
+    hessian = np.empty((len(centre), dimension, dimension))
+    for i in range(dimension):
+        hessian[:, i, i] = _weighted(_SECOND, {**on_axis[i], 0: centre}) / _STEP**2
+        for j in range(i):
+            hessian[:, i, j] = hessian[:, j, i] = _mixed(samples, unit[i], unit[j])
+    return LocalExpansion(centre, gradient, hessian)
 
-    def mixed(k: int) -> Array:
-        return (values[k, k] - values[k, -k] - values[-k, k] + values[-k, -k]) / (4.0 * (k * _STEP) ** 2)
 
-    # Two mixed differences, of steps h and 2h, combined so that their h^2 errors cancel.
-    cross = (4.0 * mixed(1) - mixed(2)) / 3.0
-    hessian = np.stack([np.stack([along, cross], axis=-1), np.stack([cross, across], axis=-1)], axis=-2)
-    return LocalExpansion(metric, values[0, 0], gradient, hessian)
+def _weighted(weights: Mapping[int, float], values: Mapping[int, Array]) -> Array:
+    return np.asarray(np.sum([weight * values[k] for k, weight in weights.items()], axis=0))
+
+
+def _mixed(samples: Callable[[Array], Array], first: Array, second: Array) -> Array:
+    """Mixed derivative: differences of steps h and 2h, combined so that their h^2 errors cancel."""
+
+    def difference(k: int) -> Array:
+        signs = ((1, 1, 1.0), (1, -1, -1.0), (-1, 1, -1.0), (-1, -1, 1.0))
+        total = np.sum([sign * samples(k * (a * first + b * second)) for a, b, sign in signs], axis=0)
+        return np.asarray(total / (4.0 * (k * _STEP) ** 2))
+
+    return (4.0 * difference(1) - difference(2)) / 3.0

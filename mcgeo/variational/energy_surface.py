@@ -16,7 +16,9 @@ One set of weights gives the energy of every block sample.
 from __future__ import annotations
 
 import math
+from abc import ABC, abstractmethod
 from dataclasses import dataclass, field
+from typing import Protocol, Self
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,6 +27,7 @@ from mcgeo.errors import GeometryError
 from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
+from mcgeo.variational.derivatives import LocalExpansion, expansion
 
 Array = NDArray[np.float64]
 
@@ -64,9 +67,95 @@ def angular_mean(problem: Problem, metric: UnimodularMetric, radii: Array) -> Ar
     return np.asarray(problem.effective_potential(radii[:, None, None] * directions).mean(axis=1))
 
 
+class Surface(Protocol):
+    """Energy per electron over the metric of the hole, for every block sample."""
+
+    @property
+    def problem(self) -> Problem:
+        """The question put."""
+
+    def sample_energies(self, metric: UnimodularMetric) -> Array:
+        """E(g) of every block sample in e^2/(4 pi eps l_B) per electron, shape (n_samples,)."""
+
+    def energy(self, metric: UnimodularMetric) -> float:
+        """Mean E(g)."""
+
+    def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
+        """Gradient and Hessian of every sample in the flat coordinates about a metric."""
+
+    @property
+    def search(self) -> Surface:
+        """A surface that is quick to evaluate and has its minimum nearby; the surface itself if that is quick."""
+
+
+class DirectSurface(ABC):
+    """A surface whose sample energies are quick: derivatives by differences, mean from the samples."""
+
+    @abstractmethod
+    def sample_energies(self, metric: UnimodularMetric) -> Array:
+        """E(g) of every block sample, shape (n_samples,)."""
+
+    def energy(self, metric: UnimodularMetric) -> float:
+        """Mean E(g)."""
+        return float(self.sample_energies(metric).mean())
+
+    def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
+        """Gradient and Hessian of every sample; all are linear in the samples."""
+        return expansion(lambda point: self.sample_energies(metric.displaced(*point)), 2)
+
+    @property
+    def search(self) -> Self:
+        """The surface itself."""
+        return self
+
+
 @dataclass(frozen=True, eq=False)
-class EnergySurface:
-    """E(g) of one liquid in one problem, with its samples.
+class InteractionEnergy:
+    """E_int(g_L, g) of one liquid: orbit and hole metric both free.
+
+    Parameters
+    ----------
+    occupations : PairOccupations
+    """
+
+    occupations: PairOccupations
+    _radii: Array = field(init=False, repr=False)
+    _measure: Array = field(init=False, repr=False)
+    _samples: Array = field(init=False, repr=False)
+    _mean: Array = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        largest = 2.0 * math.sqrt(float(self.occupations.m[-1])) + _BEYOND_TURNING_POINT
+        radii, weights = _radial_rule(largest, _RADIAL_NODES)
+        samples = self.occupations.samples @ self.occupations.basis(radii)
+        object.__setattr__(self, "_radii", radii)
+        object.__setattr__(self, "_measure", weights * radii / (4.0 * math.pi))
+        object.__setattr__(self, "_samples", samples)
+        object.__setattr__(self, "_mean", samples.mean(axis=0))
+
+    def background(self, problem: Problem) -> float:
+        """(e nu/2) int d^2q/(2 pi)^2 v(q): what does not depend on the hole."""
+        radii, weights = _radial_rule(_ORBIT_RANGE, _RADIAL_NODES)
+        mean = angular_mean(problem, problem.mass_metric, radii)
+        factor = self.occupations.statistics_sign * float(self.occupations.filling)
+        return float(factor * np.sum(weights * radii * mean) / (4.0 * math.pi))
+
+    def weights(self, problem: Problem, metric: UnimodularMetric) -> Array:
+        """A(k) dk on the radial grid, the orbit being that of the problem."""
+        return self._measure * angular_mean(problem, metric, self._radii)
+
+    def correlation_samples(self, problem: Problem, metric: UnimodularMetric) -> Array:
+        """Energy of every block sample above the background."""
+        return np.asarray(self._samples @ self.weights(problem, metric))
+
+    def correlation_mean(self, problem: Problem, metric: UnimodularMetric) -> float:
+        """Mean energy above the background."""
+        return float(self._mean @ self.weights(problem, metric))
+
+
+@dataclass(frozen=True, eq=False)
+class EnergySurface(DirectSurface):
+    """E(g) of one liquid in a projected problem: the orbit is that of the mass; see `Surface`.
 
     Parameters
     ----------
@@ -76,38 +165,18 @@ class EnergySurface:
 
     occupations: PairOccupations
     problem: Problem
-    _radii: Array = field(init=False, repr=False)
-    _measure: Array = field(init=False, repr=False)
-    _samples: Array = field(init=False, repr=False)
+    _interaction: InteractionEnergy = field(init=False, repr=False)
     _background: float = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
-        largest = 2.0 * math.sqrt(float(self.occupations.m[-1])) + _BEYOND_TURNING_POINT
-        radii, weights = _radial_rule(largest, _RADIAL_NODES)
-        object.__setattr__(self, "_radii", radii)
-        object.__setattr__(self, "_measure", weights * radii / (4.0 * math.pi))
-        object.__setattr__(self, "_samples", self.occupations.samples @ self.occupations.basis(radii))
-        object.__setattr__(self, "_background", self._background_energy())
-
-    def _background_energy(self) -> float:
-        radii, weights = _radial_rule(_ORBIT_RANGE, _RADIAL_NODES)
-        mean = angular_mean(self.problem, self.problem.mass_metric, radii)
-        factor = self.occupations.statistics_sign * float(self.occupations.filling)
-        return float(factor * np.sum(weights * radii * mean) / (4.0 * math.pi))
-
-    @property
-    def n_samples(self) -> int:
-        """Number of block samples."""
-        return len(self._samples)
-
-    def weights(self, metric: UnimodularMetric) -> Array:
-        """A(k) dk on the radial grid."""
-        return self._measure * angular_mean(self.problem, metric, self._radii)
+        interaction = InteractionEnergy(self.occupations)
+        object.__setattr__(self, "_interaction", interaction)
+        object.__setattr__(self, "_background", interaction.background(self.problem))
 
     def sample_energies(self, metric: UnimodularMetric) -> Array:
         """E(g) of every block sample, shape (n_samples,)."""
-        return np.asarray(self._background + self._samples @ self.weights(metric))
+        return self._background + self._interaction.correlation_samples(self.problem, metric)
 
     def energy(self, metric: UnimodularMetric) -> float:
-        """Mean E(g) in e^2/(4 pi eps l_B) per electron."""
-        return float(self.sample_energies(metric).mean())
+        """Mean E(g)."""
+        return self._background + self._interaction.correlation_mean(self.problem, metric)

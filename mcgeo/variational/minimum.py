@@ -12,8 +12,7 @@ from scipy.optimize import minimize
 from mcgeo.errors import GeometryError
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
-from mcgeo.variational.derivatives import local_expansion
-from mcgeo.variational.energy_surface import EnergySurface
+from mcgeo.variational.energy_surface import Surface
 
 Array = NDArray[np.float64]
 
@@ -65,24 +64,27 @@ class Minimum:
         return float(np.linalg.eigvalsh(self.stiffness)[0])
 
 
-def find_minimum(surface: EnergySurface) -> Minimum:
+def find_minimum(surface: Surface) -> Minimum:
     """Global search on rings about the orbit metric and the isotropic one, then Newton steps, then jackknife.
 
     A replica's minimum is one Newton step from the mean's: exact to second order in deviations that are a small part
     of the error. Angles of problems whose axes coincide are fixed by symmetry and come out without error.
     """
-    metric, interior = _polished(surface, _coarse_minimum(surface))
-    expansion = local_expansion(surface, metric)
+    metric, interior = _polished(surface, _coarse_minimum(surface.search))
+    expansion = surface.expansion_about(metric)
     gradients = jackknife_means(expansion.gradient)
     hessians = jackknife_means(expansion.hessian)
-    stretch_error, angle_error = _position_errors(metric, gradients, hessians, interior)
+    steps = np.full(gradients.shape, np.inf)
+    if interior:
+        steps[:] = -np.linalg.solve(hessians, gradients[..., None])[..., 0]
+    stretch, angle = metric_estimates(metric, steps)
     at_isotropic = surface.sample_energies(ISOTROPIC) - expansion.energy
     at_mass = surface.sample_energies(surface.problem.mass_metric) - expansion.energy
     return Minimum(
         metric,
         interior,
-        Estimate(metric.stretch, stretch_error),
-        Estimate(metric.angle, angle_error),
+        stretch,
+        angle,
         _mean(expansion.energy),
         expansion.hessian.mean(axis=0),
         jackknife_error(hessians),
@@ -97,7 +99,7 @@ def _mean(samples: Array) -> Estimate:
     )
 
 
-def _coarse_minimum(surface: EnergySurface) -> UnimodularMetric:
+def _coarse_minimum(surface: Surface) -> UnimodularMetric:
     centre = surface.problem.mass_metric
     candidates = [centre, ISOTROPIC]
     for ring in range(1, _RINGS + 1):
@@ -108,14 +110,14 @@ def _coarse_minimum(surface: EnergySurface) -> UnimodularMetric:
     return min(candidates, key=surface.energy)
 
 
-def _polished(surface: EnergySurface, start: UnimodularMetric) -> tuple[UnimodularMetric, bool]:
+def _polished(surface: Surface, start: UnimodularMetric) -> tuple[UnimodularMetric, bool]:
     """Bounded descent in flat coordinates about the orbit metric, then Newton steps to rounding."""
-    centre = surface.problem.mass_metric
+    centre, search = surface.problem.mass_metric, surface.search
     x, y = start.relative_to(centre).flat_coordinates
 
     def energy(point: Array) -> float:
         try:
-            return surface.energy(centre.displaced(point[0], point[1]))
+            return search.energy(centre.displaced(point[0], point[1]))
         except GeometryError:
             return math.inf
 
@@ -125,7 +127,7 @@ def _polished(surface: EnergySurface, start: UnimodularMetric) -> tuple[Unimodul
         edge = metric.relative_to(centre)
         return centre.composed_with(UnimodularMetric(SEARCH_RADIUS, edge.angle)), False
     for _ in range(_NEWTON_STEPS):
-        expansion = local_expansion(surface, metric)
+        expansion = surface.expansion_about(metric)
         hessian = expansion.hessian.mean(axis=0)
         if np.linalg.eigvalsh(hessian)[0] <= 0.0:
             return metric, False
@@ -133,10 +135,10 @@ def _polished(surface: EnergySurface, start: UnimodularMetric) -> tuple[Unimodul
         metric = metric.displaced(*step)
         if float(np.hypot(*step)) < _TOLERANCE:
             break
-    return _on_axis(metric, centre), True
+    return on_axis(metric, centre), True
 
 
-def _on_axis(metric: UnimodularMetric, mass_metric: UnimodularMetric) -> UnimodularMetric:
+def on_axis(metric: UnimodularMetric, mass_metric: UnimodularMetric) -> UnimodularMetric:
     """Without what rounding has added to a circle, or to an axis that is the mass's by symmetry."""
     if metric.stretch < 10.0 * _TOLERANCE:
         return ISOTROPIC
@@ -147,18 +149,17 @@ def _on_axis(metric: UnimodularMetric, mass_metric: UnimodularMetric) -> Unimodu
     return UnimodularMetric(metric.stretch if along else -metric.stretch, mass_metric.angle)
 
 
-def _position_errors(
-    metric: UnimodularMetric, gradients: Array, hessians: Array, interior: bool
-) -> tuple[float, float]:
-    """Errors of Q and theta from the replicas' Newton steps."""
-    if not interior:
-        return math.inf, math.inf
-    steps = -np.linalg.solve(hessians, gradients[..., None])[..., 0]
+def metric_estimates(metric: UnimodularMetric, steps: Array) -> tuple[Estimate, Estimate]:
+    """Q and theta (radians) with errors from the replicas' displacements in flat coordinates, shape (n_replicas, 2)."""
+    if not np.all(np.isfinite(steps)):
+        return Estimate(metric.stretch, math.inf), Estimate(metric.angle, math.inf)
     if metric.stretch == 0.0:
-        return float(np.hypot(*jackknife_error(steps))), math.inf
+        return Estimate(0.0, float(np.hypot(*jackknife_error(steps)))), Estimate(0.0, math.inf)
     c, s = math.cos(2 * metric.angle), math.sin(2 * metric.angle)
     along = steps @ np.array([c, s])
     # A displacement across moves 2 theta by its length over sinh Q.
     across = steps @ np.array([-s, c]) / (2.0 * math.sinh(metric.stretch))
-    return float(jackknife_error(along)), float(jackknife_error(across))
-
+    return (
+        Estimate(metric.stretch, float(jackknife_error(along))),
+        Estimate(metric.angle, float(jackknife_error(across))),
+    )

@@ -8,17 +8,16 @@ no minimum.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.problem import Problem
-from mcgeo.variational.derivatives import local_expansion
-from mcgeo.variational.energy_surface import EnergySurface
+from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.minimum import Minimum
 
 STABLE, SOFT, UNSTABLE = "stable", "soft", "unstable"
@@ -42,18 +41,23 @@ class Response:
     isotropic_stiffness: Estimate
 
 
-def mass_response(occupations: PairOccupations, problem: Problem) -> Response:
-    """Response at the isotropic working point of the problem's interaction and level."""
+def mass_response(surface_for: Callable[[Problem], Surface], problem: Problem) -> Response:
+    """Response at the isotropic working point of the problem's interaction and level.
+
+    Parameters
+    ----------
+    surface_for : callable
+        Energy surface of the same liquid and kind of variation in another problem.
+    """
 
     def gradient(stretch: float) -> NDArray[np.float64]:
-        surface = EnergySurface(occupations, problem.with_mass(UnimodularMetric(stretch)))
-        return local_expansion(surface, ISOTROPIC).gradient[:, 0]
+        return surface_for(problem.with_mass(UnimodularMetric(stretch))).expansion_about(ISOTROPIC).gradient[:, 0]
 
     # Odd differences of two steps, combined so that their cubic errors cancel.
     near = (gradient(_MASS_STEP) - gradient(-_MASS_STEP)) / (2.0 * _MASS_STEP)
     far = (gradient(2.0 * _MASS_STEP) - gradient(-2.0 * _MASS_STEP)) / (4.0 * _MASS_STEP)
     coupling = -(4.0 * near - far) / 3.0
-    isotropic = local_expansion(EnergySurface(occupations, problem.with_mass(ISOTROPIC)), ISOTROPIC)
+    isotropic = surface_for(problem.with_mass(ISOTROPIC)).expansion_about(ISOTROPIC)
     stiffness = isotropic.hessian[:, 0, 0]
     replicas = jackknife_means(np.stack([coupling, stiffness], axis=-1))
     return Response(

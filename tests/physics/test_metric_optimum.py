@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import math
+from functools import partial
 
 import numpy as np
 import pytest
@@ -28,7 +29,7 @@ from tests.physics.stretched_coulomb import StretchedCoulomb
 def test_response_is_the_slope_at_small_mass(request: pytest.FixtureRequest, name: str, level: int) -> None:
     occupations = request.getfixturevalue(name).occupations
     problem = Problem(ISOTROPIC, Coulomb(), level)
-    response = mass_response(occupations, problem)
+    response = mass_response(partial(EnergySurface, occupations), problem)
     slopes = []
     for mass_stretch in (0.005, 0.01):
         minimum = find_minimum(EnergySurface(occupations, problem.with_mass(UnimodularMetric(mass_stretch))))
@@ -94,7 +95,7 @@ def test_errors_of_the_optimum_are_those_of_independent_runs(sampled: Sampler) -
         "energy": [minimum.energy for minimum in found],
         "gain": [minimum.gain_isotropic for minimum in found],
         "stiffness": [Estimate(m.stiffness[0, 0], m.stiffness_error[0, 0]) for m in found],
-        "response": [mass_response(liquid.occupations, problem).response for liquid in liquids],
+        "response": [mass_response(partial(EnergySurface, liquid.occupations), problem).response for liquid in liquids],
     }
     for estimates in quantities.values():
         require_consistent(estimates)
@@ -115,7 +116,7 @@ def test_size_of_the_liquid_does_not_matter(third: Liquid, sampled: Sampler) -> 
 
 def test_next_level_is_soft_at_one_third(third: Liquid) -> None:
     lowest, next_one = (Problem(ISOTROPIC, Coulomb(), level) for level in (0, 1))
-    stiff, soft = (mass_response(third.occupations, problem) for problem in (lowest, next_one))
+    stiff, soft = (mass_response(partial(EnergySurface, third.occupations), problem) for problem in (lowest, next_one))
     # Ten times softer, and stable still.
     difference = stiff.isotropic_stiffness.value - soft.isotropic_stiffness.value
     assert difference > 10.0 * math.hypot(stiff.isotropic_stiffness.error, soft.isotropic_stiffness.error)
@@ -131,7 +132,7 @@ def test_liquid_that_prefers_an_ellipse_is_unstable(bosons: Liquid) -> None:
     # Bosons at 1/2 with the interaction of the next level: the circle is a maximum.
     problem = Problem(ISOTROPIC, Coulomb(), 1)
     minimum = find_minimum(EnergySurface(bosons.occupations, problem))
-    response = mass_response(bosons.occupations, problem)
+    response = mass_response(partial(EnergySurface, bosons.occupations), problem)
     assert minimum.interior and minimum.metric.stretch > 0.1
     assert minimum.gain_isotropic.value > 4.0 * minimum.gain_isotropic.error
     assert response.isotropic_stiffness.value < -4.0 * response.isotropic_stiffness.error
@@ -150,7 +151,7 @@ def test_liquid_without_a_minimum_is_unstable(
     assert not minimum.interior
     assert minimum.metric.distance(problem.mass_metric) == pytest.approx(SEARCH_RADIUS, abs=1e-6)
     assert math.isinf(minimum.stretch.error)
-    response = mass_response(reversed_liquid, problem)
+    response = mass_response(partial(EnergySurface, reversed_liquid), problem)
     assert response.isotropic_stiffness.value < 0.0
     assert shape_verdict(problem, minimum, response) == UNSTABLE
 
