@@ -16,6 +16,7 @@ from scipy.special import erfc
 
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.problem.interaction import Interaction
+from mcgeo.problem.landau_level import LOWEST, form_factor_sq
 from mcgeo.problem.problem import Problem
 from mcgeo.states.base import FERMIONS
 
@@ -62,7 +63,10 @@ def torus_energy(frame: TorusFrame, q_max: float, interaction: Interaction) -> L
     """
     waves = frame.waves(q_max)
     norm = np.sqrt(frame.metric.wavevector_norm_sq(waves.vectors))
-    weights = interaction.potential(waves.vectors) * soft_window(norm, q_max) / frame.lab.area
+    orbit = form_factor_sq(waves.vectors, LOWEST, frame.metric)
+    # S - 1 = F^2 (Sbar - 1): of a V(r) this leaves V(q).
+    potential = interaction.guiding_centre_potential(waves.vectors, orbit) / orbit
+    weights = potential * soft_window(norm, q_max) / frame.lab.area
     return LinearEnergy(weights, 0.5 * interaction.self_energy(frame.lab))
 
 
@@ -80,8 +84,8 @@ def projected_torus_energy(
     measured = norm_sq < _LIMIT_SQ
     factor = problem.effective_potential(waves.vectors) / frame.lab.area
     weights = np.where(measured, factor * np.exp(0.5 * np.where(measured, norm_sq, 0.0)), 0.0)
-    # All waves out to where the orbit's form factor has died away.
-    far = frame.lab.waves(problem.orbit.reach, problem.orbit.metric)
+    # All waves out to where v(q) has died away.
+    far = frame.lab.waves(problem.reach, problem.orbit.metric)
     beyond = frame.metric.wavevector_norm_sq(far.vectors) >= _LIMIT_SQ
     limit = (-1.0 if statistics == FERMIONS else 1.0) * float(filling)
     tail = limit * np.sum(problem.effective_potential(far.vectors[beyond])) / frame.lab.area

@@ -82,5 +82,5 @@ class LandauOrbit:
         return form_factor_sq(wavevectors, self.level, self.metric)
 
     def effective_potential(self, wavevectors: Array, interaction: Interaction) -> Array:
-        """V(q) F_n(q)^2."""
-        return interaction.potential(wavevectors) * self.form_factor_sq(wavevectors)
+        """V(q) F_n(q)^2, unless the interaction acts on guiding centres themselves."""
+        return interaction.guiding_centre_potential(wavevectors, self.form_factor_sq(wavevectors))

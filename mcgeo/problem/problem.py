@@ -48,6 +48,11 @@ class Problem:
         """
         return self.orbit.effective_potential(wavevectors, self.interaction)
 
+    @property
+    def reach(self) -> float:
+        """Norm |q| in the orbit's metric beyond which v(q) is negligible."""
+        return self.interaction.guiding_centre_reach(self.orbit.metric, self.orbit.reach)
+
     def with_mass(self, mass_metric: UnimodularMetric) -> Problem:
         """The same problem for another mass metric."""
         return replace(self, mass_metric=mass_metric)

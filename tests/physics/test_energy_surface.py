@@ -23,7 +23,6 @@ from tests.exact.torus_diagonalisation import metric_norm_sq
 from tests.exact.torus_shapes import stretched
 from tests.physics.checks import require_agreement
 from tests.physics.closed_forms import agm_factor
-from tests.physics.stretched_coulomb import StretchedCoulomb
 
 
 def quadrature_energy(
@@ -78,7 +77,7 @@ def test_state_stretched_as_a_whole(request: pytest.FixtureRequest, name: str, s
 def test_interaction_of_the_same_metric_undoes_the_stretch(third: Liquid, level: int) -> None:
     isotropic = EnergySurface(third.occupations, Problem(ISOTROPIC, Coulomb(), level)).energy(ISOTROPIC)
     metric = UnimodularMetric(1.1, -0.4)
-    problem = Problem(metric, StretchedCoulomb(metric), level)
+    problem = Problem(metric, Coulomb(metric), level)
     followed = EnergySurface(third.occupations, problem).energy(metric)
     assert followed == pytest.approx(isotropic, abs=1e-10)
     left_alone = EnergySurface(third.occupations, Problem(metric, Coulomb(), level)).energy(metric)
@@ -153,7 +152,7 @@ def test_inverse_mass_ratio_is_a_right_angle(third: Liquid) -> None:
 def test_dielectric_instead_of_mass_is_a_change_of_frame(third: Liquid, stretch: float) -> None:
     # Coordinates in which the dielectric is isotropic make it a mass of the inverse metric.
     metric = UnimodularMetric(stretch, 0.2)
-    problems = [Problem(ISOTROPIC, StretchedCoulomb(metric)), Problem(metric, Coulomb())]
+    problems = [Problem(ISOTROPIC, Coulomb(metric)), Problem(metric, Coulomb())]
     dielectric, mass = (find_minimum(EnergySurface(third.occupations, problem)) for problem in problems)
     assert dielectric.energy.value == pytest.approx(mass.energy.value, abs=1e-10)
     assert dielectric.stretch.value == pytest.approx(stretch - mass.stretch.value, abs=1e-7)

@@ -21,7 +21,6 @@ from mcgeo.variational.energy_surface import EnergySurface
 from mcgeo.variational.minimum import SEARCH_RADIUS, find_minimum
 from mcgeo.variational.response import SOFT, STABLE, UNSTABLE, mass_response, shape_verdict
 from tests.physics.checks import LEAST_PROBABILITY, Sampler, require_agreement
-from tests.physics.stretched_coulomb import StretchedCoulomb
 
 
 @pytest.mark.parametrize("level", [0, 1])
@@ -86,7 +85,7 @@ def require_consistent(estimates: list[Estimate]) -> None:
 
 def test_errors_of_the_optimum_are_those_of_independent_runs(sampled: Sampler) -> None:
     # Mass and dielectric at an angle: neither Q nor theta is fixed by symmetry.
-    problem = Problem(mass_metric_from_ratio(4.0), StretchedCoulomb(UnimodularMetric(0.5, 0.5)))
+    problem = Problem(mass_metric_from_ratio(4.0), Coulomb(UnimodularMetric(0.5, 0.5)))
     liquids = [sampled(3, 16, sweeps=1000, seed=300 + run) for run in range(10)]
     found = [find_minimum(EnergySurface(liquid.occupations, problem)) for liquid in liquids]
     quantities = {
