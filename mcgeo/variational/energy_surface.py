@@ -32,8 +32,7 @@ from mcgeo.variational.derivatives import LocalExpansion, expansion
 Array = NDArray[np.float64]
 
 _RADIAL_NODES = 200
-# exp(-p^2/2) of the orbit is below 1e-17 here; delta(k) of L_m ends beyond its turning point 2 sqrt(m).
-_ORBIT_RANGE = 9.0
+# delta(k) of L_m ends beyond its turning point 2 sqrt(m).
 _BEYOND_TURNING_POINT = 4.0
 _LARGEST_DISTANCE = 4.0
 
@@ -56,7 +55,7 @@ def angular_mean(problem: Problem, metric: UnimodularMetric, radii: Array) -> Ar
     GeometryError
         If metric and orbit are farther apart than 4 (relative aspect ratio 55).
     """
-    distance = metric.distance(problem.mass_metric)
+    distance = metric.distance(problem.orbit.metric)
     if distance > _LARGEST_DISTANCE:
         raise GeometryError(
             f"hole and orbit metric are {distance:.3g} apart (relative aspect ratio {math.exp(distance):.3g}); "
@@ -135,8 +134,8 @@ class InteractionEnergy:
 
     def background(self, problem: Problem) -> float:
         """(e nu/2) int d^2q/(2 pi)^2 v(q): what does not depend on the hole."""
-        radii, weights = _radial_rule(_ORBIT_RANGE, _RADIAL_NODES)
-        mean = angular_mean(problem, problem.mass_metric, radii)
+        radii, weights = _radial_rule(problem.reach, _RADIAL_NODES)
+        mean = angular_mean(problem, problem.orbit.metric, radii)
         factor = self.occupations.statistics_sign * float(self.occupations.filling)
         return float(factor * np.sum(weights * radii * mean) / (4.0 * math.pi))
 

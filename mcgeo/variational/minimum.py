@@ -39,7 +39,7 @@ class Minimum:
         Hessian in the flat coordinates about the minimum: the directions (Q cos 2 theta, Q sin 2 theta) of the lab.
     stiffness_error : ndarray, shape (2, 2)
     gain_isotropic, gain_mass : Estimate
-        Energy of the isotropic hole, and of a hole that follows the mass, above the minimum's.
+        Energy of the isotropic hole, and of a hole that follows the orbit (the mass), above the minimum's.
     """
 
     metric: UnimodularMetric
@@ -79,7 +79,7 @@ def find_minimum(surface: Surface) -> Minimum:
         steps[:] = -np.linalg.solve(hessians, gradients[..., None])[..., 0]
     stretch, angle = metric_estimates(metric, steps)
     at_isotropic = surface.sample_energies(ISOTROPIC) - expansion.energy
-    at_mass = surface.sample_energies(surface.problem.mass_metric) - expansion.energy
+    at_mass = surface.sample_energies(surface.problem.orbit.metric) - expansion.energy
     return Minimum(
         metric,
         interior,
@@ -100,7 +100,7 @@ def _mean(samples: Array) -> Estimate:
 
 
 def _coarse_minimum(surface: Surface) -> UnimodularMetric:
-    centre = surface.problem.mass_metric
+    centre = surface.problem.orbit.metric
     candidates = [centre, ISOTROPIC]
     for ring in range(1, _RINGS + 1):
         radius = SEARCH_RADIUS * ring / _RINGS
@@ -112,7 +112,7 @@ def _coarse_minimum(surface: Surface) -> UnimodularMetric:
 
 def _polished(surface: Surface, start: UnimodularMetric) -> tuple[UnimodularMetric, bool]:
     """Bounded descent in flat coordinates about the orbit metric, then Newton steps to rounding."""
-    centre, search = surface.problem.mass_metric, surface.search
+    centre, search = surface.problem.orbit.metric, surface.search
     x, y = start.relative_to(centre).flat_coordinates
 
     def energy(point: Array) -> float:
@@ -138,15 +138,15 @@ def _polished(surface: Surface, start: UnimodularMetric) -> tuple[UnimodularMetr
     return on_axis(metric, centre), True
 
 
-def on_axis(metric: UnimodularMetric, mass_metric: UnimodularMetric) -> UnimodularMetric:
-    """Without what rounding has added to a circle, or to an axis that is the mass's by symmetry."""
+def on_axis(metric: UnimodularMetric, orbit_metric: UnimodularMetric) -> UnimodularMetric:
+    """Without what rounding has added to a circle, or to an axis that is the orbit's by symmetry."""
     if metric.stretch < 10.0 * _TOLERANCE:
         return ISOTROPIC
-    off = math.sinh(metric.stretch) * math.sin(2.0 * (metric.angle - mass_metric.angle))
-    if mass_metric.stretch == 0.0 or abs(off) > 10.0 * _TOLERANCE:
+    off = math.sinh(metric.stretch) * math.sin(2.0 * (metric.angle - orbit_metric.angle))
+    if orbit_metric.stretch == 0.0 or abs(off) > 10.0 * _TOLERANCE:
         return metric
-    along = math.cos(2.0 * (metric.angle - mass_metric.angle)) > 0.0
-    return UnimodularMetric(metric.stretch if along else -metric.stretch, mass_metric.angle)
+    along = math.cos(2.0 * (metric.angle - orbit_metric.angle)) > 0.0
+    return UnimodularMetric(metric.stretch if along else -metric.stretch, orbit_metric.angle)
 
 
 def metric_estimates(metric: UnimodularMetric, steps: Array) -> tuple[Estimate, Estimate]:

@@ -42,13 +42,15 @@ class Response:
 
 
 def mass_response(surface_for: Callable[[Problem], Surface], problem: Problem) -> Response:
-    """Response at the isotropic working point of the problem's interaction and level.
+    """Response at the isotropic working point of the problem's interaction and level, the field across the plane.
 
     Parameters
     ----------
     surface_for : callable
         Energy surface of the same liquid and kind of variation in another problem.
     """
+
+    problem = problem.untilted()
 
     def gradient(stretch: float) -> NDArray[np.float64]:
         return surface_for(problem.with_mass(UnimodularMetric(stretch))).expansion_about(ISOTROPIC).gradient[:, 0]

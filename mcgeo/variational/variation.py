@@ -165,14 +165,14 @@ def surface_of(occupations: PairOccupations, problem: Problem, variation: Variat
 def orbit_estimates(surface: Surface, minimum: Minimum) -> tuple[Estimate, Estimate]:
     """Stretch and angle (radians) of the orbit metric that goes with a minimum, with errors.
 
-    It is the mass metric where the orbit does not vary, and the hole's where both are one. Where both vary apart, a
-    replica's pair of metrics is one Newton step of the joint energy away.
+    It is that of mass and field where the orbit does not vary, and the hole's where both are one. Where both vary
+    apart, a replica's pair of metrics is one Newton step of the joint energy away.
     """
     if isinstance(surface, RigidSurface):
         return minimum.stretch, minimum.angle
     if not isinstance(surface, TwoMetricSurface):
-        mass = surface.problem.mass_metric
-        return Estimate(mass.stretch, 0.0), Estimate(mass.angle, 0.0)
+        fixed = surface.problem.orbit.metric
+        return Estimate(fixed.stretch, 0.0), Estimate(fixed.angle, 0.0)
     orbit = surface.orbit_of(minimum.metric)
     local = surface.joint_expansion(orbit, minimum.metric)
     gradients, hessians = jackknife_means(local.gradient), jackknife_means(local.hessian)
