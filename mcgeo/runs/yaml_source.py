@@ -1,6 +1,7 @@
 """Strict reading of one YAML file, with the place of every key and value.
 
-Scalars are those of YAML 1.2. Duplicate keys, keys that are not text, tags, anchors and aliases are refused.
+Scalars are those of YAML 1.2. A whole number as a key is its text. Duplicate keys, keys that are neither, tags, anchors
+and aliases are refused.
 """
 
 from __future__ import annotations
@@ -96,6 +97,8 @@ class _Builder:
         for key_node, value_node in node.value:
             mark = mark_of(key_node.start_mark)
             key = scalar_value(key_node) if isinstance(key_node, yaml.ScalarNode) else None
+            if type(key) is int and key >= 0:
+                key = str(key)
             if not isinstance(key, str):
                 shown = repr(key_node.value) if isinstance(key_node, yaml.ScalarNode) else "a list or a group"
                 self.faults.append(Fault(mark, path, f"a key must be a name, not {shown}"))

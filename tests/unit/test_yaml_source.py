@@ -102,10 +102,19 @@ def test_duplicate_keys_name_both_lines(write):
     assert len(found) == 2
 
 
-@pytest.mark.parametrize("key", ["1", "true", "~", "[a]", "{a: 1}"])
+@pytest.mark.parametrize("key", ["1.0", "-1", "true", "~", "[a]", "{a: 1}"])
 def test_a_key_must_be_text(write, key):
     (fault,) = faults(write(f"a:\n  ? {key}\n  : 1\n"))
     assert fault.startswith("run.yaml:2:5: a: a key must be a name, not ")
+
+
+def test_a_whole_number_as_a_key_is_its_text(write):
+    source = load_yaml(write("a: {1: 2, 0x10: 3}\n"))
+    assert source.data == {"a": {"1": 2, "16": 3}}
+    assert source.locate(("a", "1")) == (1, 8)
+    assert faults(write("a: {1: 2, '1': 3}\n")) == [
+        "run.yaml:1:11: a.1: given twice, first on line 1 and again on line 1; keep one"
+    ]
 
 
 def test_anchors_and_tags_are_all_listed(write):
