@@ -28,6 +28,7 @@ from mcgeo.runs.sample import LIQUID_FILE
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import scan
 from mcgeo.runs.storage import as_liquid, read_result
+from mcgeo.runs.table_file import without_contents
 from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
 
 Drawing = tuple[Axes, Mapping[str, Any]]
@@ -56,7 +57,7 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     metadata = {
         "mcgeo": mcgeo.__version__,
         "figure": arguments.what,
-        "configuration": json.dumps({key: keys[key] for key in ("state", "problem")}),
+        "configuration": json.dumps(without_contents({key: keys[key] for key in ("state", "problem")})),
         "seed": str(keys["sampling"]["seed"]),
     }
     written = figures.save_figure(

@@ -6,6 +6,7 @@ What is interpolated is F(q) = |q| V(q)/2 pi, smooth and bounded for anything th
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -159,13 +160,13 @@ def _lagrange_weights(position: Array) -> Array:
     return weights
 
 
-def tabulated(content: str, file: str = "") -> PairPotential:
-    """The interaction of a table's text.
+def tabulated(file: Mapping[str, str]) -> PairPotential:
+    """The interaction of a table's file: its ``name`` for reports and its ``content``.
 
     Raises
     ------
     TableError
         If the text is no table; the message tells the line.
     """
-    table = parse_table(content)
-    return IsotropicTable(table, file) if len(table.axes) == 1 else GridTable(table, file)
+    table = parse_table(file["content"])
+    return (IsotropicTable if len(table.axes) == 1 else GridTable)(table, file["name"])

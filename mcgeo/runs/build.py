@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import os
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping, Sequence
 from fractions import Fraction
 from typing import Any
 
@@ -69,10 +69,32 @@ def droplet_state(resolved: Keys) -> DropletState:
 
 
 def interaction_from(keys: Keys) -> Interaction:
-    """Interaction of ``kind`` with its parameters."""
-    parameters = {key: value for key, value in keys.items() if key != "kind"}
-    made: Interaction = INTERACTIONS[keys["kind"]](**parameters)
-    return made
+    """Interaction of ``kind`` with its parameters: groups made what they mean, degrees made radians."""
+    parameters = dict(_parameter(key, value) for key, value in keys.items() if key != "kind")
+    return INTERACTIONS[keys["kind"]](**parameters)
+
+
+def _parameter(key: str, value: Any) -> tuple[str, Any]:
+    if key.endswith("_degrees"):
+        return key.removesuffix("_degrees"), math.radians(value)
+    return key, _GROUPS[key](value) if key in _GROUPS else value
+
+
+def _terms(terms: Sequence[Keys]) -> tuple[tuple[float, Interaction], ...]:
+    return tuple((term["weight"], interaction_from(term["interaction"])) for term in terms)
+
+
+def _values(values: Mapping[str, float]) -> dict[int, float]:
+    return {int(momentum): value for momentum, value in values.items()}
+
+
+# What the groups of keys of an interaction become, by their name.
+_GROUPS: dict[str, Callable[[Any], Any]] = {
+    "dielectric": lambda keys: mass_metric_from_ratio(keys["ratio"], math.radians(keys["angle_degrees"])),
+    "metric": metric_from,
+    "values": _values,
+    "terms": _terms,
+}
 
 
 def mass_metric(keys: Keys) -> UnimodularMetric:

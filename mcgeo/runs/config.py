@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable, Mapping
+from pathlib import Path
 from typing import Any
 
 from pydantic import Field, ValidationError, ValidationInfo, field_validator, model_validator
@@ -16,6 +17,7 @@ from mcgeo.runs.geometry_config import CellConfig, GeometryConfig, NamedCellConf
 from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
 from mcgeo.runs.sampling_config import SamplingConfig
 from mcgeo.runs.state_config import StateConfig
+from mcgeo.runs.table_file import FOLDER
 from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
 
 
@@ -84,16 +86,16 @@ def load_config(path: str | os.PathLike[str]) -> Config:
         order of the file.
     """
     source, faults = parse_yaml(path)
-    config, remarks = _validate(source.data)
+    config, remarks = _validate(source.data, Path(path).parent)
     faults += [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks]
     if config is None or faults:
         raise ConfigError([fault.line(source.path) for fault in sorted(faults, key=lambda fault: fault.mark)])
     return config
 
 
-def _validate(data: Mapping[str, Any]) -> tuple[Config | None, list[Remark]]:
+def _validate(data: Mapping[str, Any], folder: Path = Path()) -> tuple[Config | None, list[Remark]]:
     try:
-        return Config.model_validate(data), []
+        return Config.model_validate(data, context={FOLDER: folder}), []
     except ValidationError as error:
         # The model looks for contradictions only when all groups are valid; here they are wanted in any case.
         across = contradictions(data) if isinstance(data, Mapping) else []

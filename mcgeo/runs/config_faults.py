@@ -19,6 +19,8 @@ from mcgeo.runs.yaml_source import Path
 
 Schema = Mapping[str, Any]
 _LONGEST = 60
+# Last step of the location of a fault of a key itself.
+_KEY = "[key]"
 
 
 class Remark(NamedTuple):
@@ -47,7 +49,7 @@ def explain(error: ValidationError, schema: Schema) -> list[Remark]:
 def _remark(details: Mapping[str, Any], schema: Schema) -> Remark:
     sort, location, value = details["type"], details["loc"], details["input"]
     if sort == "rule":
-        return Remark(_walk(schema, location).path, details["ctx"]["message"])
+        return Remark(_walk(schema, location).path, details["ctx"]["message"], at_key=location[-1] == _KEY)
     if sort in ("missing", "extra_forbidden", "invalid_key"):
         place = _walk(schema, location[:-1])
         describe = _missing if sort == "missing" else _unknown
@@ -82,8 +84,10 @@ def _walk(root: Schema, location: tuple[str | int, ...]) -> _Place:
         elif isinstance(step, int):
             entries = schema.get("prefixItems", ())
             place = _Place((*place.path, step), entries[step] if step < len(entries) else schema["items"])
-        else:
-            place = _Place((*place.path, step), schema["properties"][step])
+        elif step != _KEY:
+            # A group whose keys are free says what each of them takes.
+            names = schema.get("properties", {})
+            place = _Place((*place.path, step), names[step] if step in names else schema["additionalProperties"])
     return place
 
 
@@ -142,9 +146,11 @@ def _allowed(schema: Schema, root: Schema) -> str:
     elif "oneOf" in schema:
         words = f"a group of keys{_form_hint(schema, root)}"
     elif schema["type"] == "object":
-        words = f"a group of keys ({', '.join(schema['properties'])})"
+        words = "a group of keys" + (f" ({', '.join(schema['properties'])})" if "properties" in schema else "")
     elif schema["type"] == "array":
-        words = _list_words(schema)
+        words = _list_words(schema, root)
+    elif schema["type"] == "string":
+        words = "a text"
     else:
         words = "true or false" if schema["type"] == "boolean" else _number_words(schema)
     return words + or_null
@@ -157,11 +163,13 @@ def _form_hint(schema: Schema, root: Schema) -> str:
     return f" with {' or '.join(name for form in schema['oneOf'] for name in _deref(form, root)['required'])}"
 
 
-def _list_words(schema: Schema, head: str = "a list") -> str:
-    entries = schema.get("prefixItems") or [schema["items"]]
+def _list_words(schema: Schema, root: Schema, head: str = "a list") -> str:
+    entries = [_deref(entry, root) for entry in schema.get("prefixItems") or [schema["items"]]]
     count = f"{len(entries)} " if "prefixItems" in schema else ""
     if entries[0]["type"] == "array":
-        return f"{head} of {count}{_list_words(entries[0], 'lists')}"
+        return f"{head} of {count}{_list_words(entries[0], root, 'lists')}"
+    if entries[0]["type"] == "object":
+        return f"{head} of {count}groups of keys ({', '.join(entries[0]['properties'])})"
     return f"{head} of {count}{'whole ' if entries[0]['type'] == 'integer' else ''}numbers"
 
 
@@ -173,7 +181,10 @@ def _number_words(schema: Schema) -> str:
         return f"{noun} from {schema['minimum']:g} to {schema['maximum']:g}"
     if "minimum" in schema:
         return f"{noun} of at least {schema['minimum']:g}"
-    return f"{noun} above {schema['exclusiveMinimum']:g}" if "exclusiveMinimum" in schema else noun
+    if "exclusiveMinimum" in schema:
+        below = f" and below {schema['exclusiveMaximum']:g}" if "exclusiveMaximum" in schema else ""
+        return f"{noun} above {schema['exclusiveMinimum']:g}{below}"
+    return noun
 
 
 def show(value: object) -> str:

@@ -1,7 +1,4 @@
-"""Keys of ``problem`` and ``scan``: mass, interaction, level, and the metrics that are tried.
-
-A new interaction is one model here and one entry in `InteractionConfig`.
-"""
+"""Keys of ``problem`` and ``scan``: mass, interaction, level, and the metrics that are tried."""
 
 from __future__ import annotations
 
@@ -10,6 +7,7 @@ from typing import Annotated, Literal
 from pydantic import AfterValidator, Discriminator, Field, Tag, ValidationInfo, field_validator
 
 from mcgeo.runs.config_types import Group, ListOf, Positive, Real, WholeNumber, given_key, rule
+from mcgeo.runs.interaction_config import CoulombConfig, InteractionConfig
 
 Row = Annotated[tuple[Real, Real], ListOf(2)]
 Tensor = tuple[tuple[float, float], tuple[float, float]]
@@ -68,22 +66,6 @@ MassConfig = Annotated[
     | Annotated[MassTensorConfig, Tag("MassTensorConfig")],
     Discriminator(_form),
 ]
-
-
-class CoulombConfig(Group):
-    """V(r) = 1/r."""
-
-    kind: Literal["coulomb"] = Field(description="Kind of the interaction.")
-
-
-class GaussianConfig(Group):
-    """V(q) = 2 pi exp(-q^2 range^2/2)."""
-
-    kind: Literal["gaussian"] = Field(description="Kind of the interaction.")
-    range: Positive = Field(description="Range of the interaction [l_B].")
-
-
-InteractionConfig = Annotated[CoulombConfig | GaussianConfig, Field(discriminator="kind")]
 
 
 class ProblemConfig(Group):

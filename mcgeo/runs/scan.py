@@ -17,6 +17,7 @@ from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample_summary import state_summary
+from mcgeo.runs.table_file import without_contents
 from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
 from mcgeo.variational.response import Response, mass_response, shape_verdict
@@ -107,7 +108,7 @@ def _pair(name: str, estimate: Estimate) -> dict[str, float]:
 def problem_summary(problem: Problem, keys: Mapping[str, Any]) -> dict[str, Any]:
     """``problem`` of the JSON output: its keys and the mass metric."""
     return {
-        **keys,
+        **without_contents(keys),
         "interaction_name": problem.interaction.name,
         "mass_stretch": problem.mass_metric.stretch,
         "mass_angle_degrees": problem.mass_metric.angle_degrees,

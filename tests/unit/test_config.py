@@ -50,7 +50,7 @@ def test_a_state_is_all_that_is_needed(write):
         },
         "problem": {
             "mass": {"ratio": 1.0, "angle_degrees": 0.0},
-            "interaction": {"kind": "coulomb"},
+            "interaction": {"kind": "coulomb", "dielectric": {"ratio": 1.0, "angle_degrees": 0.0}},
             "level": 0,
         },
         "scan": {"stretch": {"from": 0.0, "to": 2.0, "points": 41}, "angle_degrees": None},

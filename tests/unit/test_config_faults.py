@@ -159,7 +159,9 @@ def faults(path: str) -> list[str]:
         ),
         (
             LAUGHLIN + "problem: {interaction: {kind: §gauss}}\n",
-            "problem.interaction.kind: must be one of coulomb, gaussian, not 'gauss' (did you mean 'gaussian'?)",
+            "problem.interaction.kind: must be one of coulomb, dipole, fang_howard, gaussian, gaussian_well, one_gate, "
+            "power_law, pseudopotentials, softened, square_well, sum, table, two_gates, yukawa, not 'gauss' (did you "
+            "mean 'gaussian'?)",
         ),
         (
             LAUGHLIN + "problem: {§interaction: {kind: gaussian}}\n",

@@ -71,8 +71,29 @@ masses = st.one_of(
     st.fixed_dictionaries({"along_axes": st.lists(positive, min_size=2, max_size=2)}),
     st.fixed_dictionaries({"tensor": tensors()}),
 )
-interactions = st.just({"kind": "coulomb"}) | st.fixed_dictionaries(
-    {"kind": st.just("gaussian"), "range": positive}
+plain_interactions = st.one_of(
+    st.just({"kind": "coulomb"}),
+    st.fixed_dictionaries({"kind": st.just("gaussian"), "range": positive}),
+    st.fixed_dictionaries({"kind": st.just("power_law"), "exponent": st.floats(0.1, 1.9)}),
+    st.fixed_dictionaries(
+        {
+            "kind": st.just("pseudopotentials"),
+            "values": st.dictionaries(st.integers(0, 30).map(str), st.floats(-9, 9), min_size=1),
+        },
+        optional={"metric": metrics},
+    ),
+)
+interactions = st.recursive(
+    plain_interactions,
+    lambda inner: st.fixed_dictionaries(
+        {
+            "kind": st.just("sum"),
+            "terms": st.lists(
+                st.fixed_dictionaries({"weight": st.floats(-9, 9), "interaction": inner}), min_size=1, max_size=3
+            ),
+        }
+    ),
+    max_leaves=4,
 )
 problems = st.fixed_dictionaries(
     {}, optional={"mass": masses, "interaction": interactions, "level": st.integers(0, 1)}
