@@ -5,7 +5,7 @@ columns gives, writing b for column i of B,
 
     Pf A' / Pf A = a'.b = p,        B' = B + (b t^T - t b^T) / p,        t = B a' + e_i,
 
-B' again antisymmetric (for the ratio: Bajdich, Mitas, Wagner and Schmidt, Phys. Rev. B 77, 115112 (2008), section III).
+B' again antisymmetric (for the ratio: Bajdich, Mitas, Wagner and Schmidt, Phys. Rev. B 77, 115112 (2008)).
 |Pf A|^2 = |det A|, whose logarithm comes with the inverse by elimination.
 
 A matrix of one walker is two arrays, real and imaginary part, of shape (n * n_blocks, 8), n_blocks = ceil(n/8): row
@@ -16,7 +16,6 @@ shape (n_blocks, 8).
 from __future__ import annotations
 
 import math
-from typing import Any
 
 import numpy as np
 
@@ -72,18 +71,6 @@ def _subtract_multiple(
         row = target * n_blocks + block
         store(real, row, load(real, row) - xr * fr + xi * fi)
         store(imag, row, load(imag, row) - xr * fi - xi * fr)
-
-
-@kernel
-def scale_both(real: np.ndarray, imag: np.ndarray, scale: np.ndarray) -> None:
-    """Multiply row and column j by ``scale[j]``."""
-    n = scale.shape[0]
-    n_blocks = real.shape[0] // n
-    for i in range(n):
-        for j in range(n):
-            factor = scale[i] * scale[j]
-            real[i * n_blocks + j // LANES, j % LANES] *= factor
-            imag[i * n_blocks + j // LANES, j % LANES] *= factor
 
 
 @kernel
@@ -188,4 +175,5 @@ def exchange_row(real: np.ndarray, imag: np.ndarray, n: int, i: int, row: np.nda
         xr, xi = load(real, i * n_blocks + k), load(imag, i * n_blocks + k)
         store(s[0], k, xr * fr - xi * fi)
         store(s[1], k, xr * fi + xi * fr)
+    # Row i of the result is b/p and would not need the sum, but writing b/p there lets errors grow a hundredfold.
     _add_exchange(real, imag, n, s, t)

@@ -1,8 +1,8 @@
 """The Moore-Read state on the torus.
 
-Psi = Pf[theta_a(v_ij)/theta_1(v_ij)] prod_{i<j} theta_1(v_ij)^m, v_ij = pi (z_i - z_j)/L1, times a centre-of-mass factor (Moore and Read,
-Nucl. Phys. B 360, 362 (1991); on the torus Greiter, Wen and Wilczek, Nucl. Phys. B 374, 567 (1992)): m = 1 bosons at filling 1,
-m = 2 fermions at filling 1/2, an even number of particles.
+Psi = Pf[theta_a(v_ij)/theta_1(v_ij)] prod_{i<j} theta_1(v_ij)^m, v_ij = pi (z_i - z_j)/L1, times a centre-of-mass
+factor (Moore and Read, Nucl. Phys. B 360, 362 (1991); on the torus Greiter, Wen and Wilczek, Nucl. Phys. B 374, 567
+(1992)): m = 1 bosons at filling 1, m = 2 fermions at filling 1/2, an even number of particles.
 
 The sectors 1, 2, 3 are a = 2, 3, 4. Taking one electron once around a side of the cell multiplies the Pfaffian by
 
@@ -11,9 +11,9 @@ The sectors 1, 2, 3 are a = 2, 3, 4. Taking one electron once around a side of t
        2         -1          -1
        3         -1          +1
 
-The sides are those of the reduced isotropic cell, `TorusFrame.isotropic` (and the same combination of lab vectors in
-`TorusFrame.lab`): a change of basis permutes the sectors, and their average does not depend on it. On a square cell 1 and 3 are
-related by a quarter turn, on a hexagonal one all three by turns of 60 degrees.
+The sides are those of the reduced isotropic cell, `TorusFrame.isotropic` (and the same combinations of lab vectors,
+`TorusFrame.lab`). Another basis permutes the sectors; their average does not depend on it. On a square cell 1 and 3
+are related by a quarter turn, on a hexagonal one all three by turns of 60 degrees.
 """
 
 from __future__ import annotations
@@ -27,12 +27,13 @@ from numpy.typing import NDArray
 
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.kernels.lanes import LANES
+from mcgeo.kernels.moore_read_inverses import log_weights, moore_read_storage, refresh
 from mcgeo.kernels.moore_read_pairs import (
     LARGEST_IMAGINARY_TAU,
     MooreReadTorusTables,
     moore_read_torus_tables,
 )
-from mcgeo.kernels.moore_read_torus import advance, log_weights, moore_read_storage, refresh
+from mcgeo.kernels.moore_read_torus import advance
 from mcgeo.states.base import BOSONS, FERMIONS, Array, OnTorus
 
 
@@ -59,18 +60,11 @@ class MooreReadGroup:
         )  # fmt: skip
 
     def drift(self) -> float:
-        """Largest error of an inverse matrix in units of its largest entry, rows and columns scaled as for elimination."""
-        kept = self._scaled_inverses()
+        """Largest error of an inverse matrix in units of its largest entry."""
+        kept = self._storage.inverses.copy()
         self.refresh()
-        made = self._scaled_inverses()
+        made = self._storage.inverses
         return float(np.max(np.abs(kept - made).max(axis=(1, 2, 3)) / np.abs(made).max(axis=(1, 2, 3))))
-
-    def _scaled_inverses(self) -> Array:
-        """The inverses with the left-out factors sqrt|w| put back, shape (8, 2, n, n)."""
-        n = len(self.b)
-        inverses = self._storage.inverses.reshape(LANES, 2, n, -1)[..., :n]
-        scale = np.exp(self._tables.half_phases * math.pi * self._tables.tau_imag * self.b.T)
-        return np.asarray(inverses * scale[:, None, :, None] * scale[:, None, None, :])
 
 
 @dataclass(frozen=True, eq=False)
