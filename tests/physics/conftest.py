@@ -69,7 +69,7 @@ def filled(sampled: Sampler) -> Liquid:
 @pytest.fixture(scope="session")
 def third(sampled: Sampler) -> Liquid:
     """Laughlin 1/3, 37 electrons: the largest run, which most of what follows rests on."""
-    return sampled(3, 37, sweeps=16000, seed=103)
+    return sampled(3, 37, sweeps=12000, seed=103)
 
 
 @pytest.fixture(scope="session")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import partial
 
 import mpmath
 import numpy as np
@@ -84,7 +85,7 @@ def test_interaction_of_the_same_metric_undoes_the_stretch(third: Liquid, level:
     assert left_alone - isotropic > 1e-3
 
 
-@pytest.mark.parametrize("ratio", [1.3, 2.0, 5.0, 16.0, 0.25])
+@pytest.mark.parametrize("ratio", [1.3, 16.0, 0.25])
 @pytest.mark.parametrize("interaction_range", [0.5, 1.0, 2.0])
 def test_gaussian_interaction_has_its_exact_hole(
     third: Liquid, ratio: float, interaction_range: float
@@ -122,7 +123,8 @@ def test_gaussian_interaction_has_its_exact_stiffness(
 
     series = np.array(mpmath.taylor(second_derivative, 0, int(occupations.m[-1])), dtype=float)
     exact = 2.0 * float(occupations.filling) * occupations.coefficients @ series[occupations.m]
-    found = mass_response(occupations, Problem(ISOTROPIC, Gaussian(interaction_range)))
+    surface_for = partial(EnergySurface, occupations)
+    found = mass_response(surface_for, Problem(ISOTROPIC, Gaussian(interaction_range)))
     assert found.isotropic_stiffness.value == pytest.approx(exact, rel=1e-5)
     # d/dQ_m of the exact Q* at zero.
     assert found.response.value == pytest.approx(1.0 / sigma, abs=1e-4)
