@@ -25,6 +25,7 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
+from mcgeo.errors import GeometryError
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.moore_read_inverses import log_weights, moore_read_storage, refresh
@@ -84,7 +85,7 @@ class MooreRead(OnTorus):
     Raises
     ------
     GeometryError
-        If the cell is too elongated.
+        If the cell is too elongated, or the number of electrons odd.
     """
 
     exponent: int
@@ -99,6 +100,8 @@ class MooreRead(OnTorus):
     _tables: MooreReadTorusTables = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
+        if self.n_electrons % 2:
+            raise GeometryError(f"a Moore-Read state pairs an even number of electrons, not {self.n_electrons}")
         self.frame.require_tau_below(LARGEST_IMAGINARY_TAU)
         cell = self.frame.isotropic
         tables = moore_read_torus_tables(self.exponent, self.sector, cell.tau, cell.side)
