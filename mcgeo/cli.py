@@ -24,7 +24,7 @@ _EXIT_CODES = """exit codes:
 _FIGURES = ["hole", "energy", "structure", "correlation", "occupations", "density", "trace"]
 _MODULES = {
     "sample": "run",
-    "scan": "run",
+    "scan": "scan",
     "plot": "plot",
     "check": "describe",
     "info": "describe",
@@ -50,6 +50,10 @@ def build_parser() -> argparse.ArgumentParser:
     )
     _add_run_options(scan)
     scan.add_argument("--liquid", type=Path, metavar="FILE", help="take this sampled liquid instead of sampling")
+
+    scan.add_argument(
+        "--compare", action="store_true", help="energies of both roads, plane and torus, and their difference"
+    )
 
     plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
     plot.add_argument("what", choices=_FIGURES)

@@ -1,4 +1,4 @@
-"""``sample`` and ``scan``."""
+"""``sample``, and what the commands that run share."""
 
 from __future__ import annotations
 
@@ -8,16 +8,14 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
-from mcgeo.report.tables import json_ready, write_csv, write_json
-from mcgeo.report.text import droplet_text, sample_text, scan_text
+from mcgeo.report.tables import json_ready, write_json
+from mcgeo.report.text import droplet_text, sample_text
 from mcgeo.runs.config import Config, config_from_resolved, load_config
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.droplet_summary import droplet_summary
-from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sample_summary import sample_summary
-from mcgeo.runs.scan import scan, scan_summary
-from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_liquid, read_result
+from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
 
 CONVERGED_CODE, NOT_CONVERGED_CODE = 0, 3
 
@@ -34,11 +32,11 @@ def default_folder(config: Path) -> Path:
     return config.parent if config.suffix == RESULT_SUFFIX else Path(f"{config.stem}_results")
 
 
-def _exit_code(summary: Mapping[str, Any]) -> int:
+def exit_code(summary: Mapping[str, Any]) -> int:
     return CONVERGED_CODE if summary["diagnostics"]["verdict"] == "converged" else NOT_CONVERGED_CODE
 
 
-def _config(path: Path, threads: int | None) -> Config:
+def read_config(path: Path, threads: int | None) -> Config:
     config = config_from_resolved(read_result(path).resolved) if path.suffix == RESULT_SUFFIX else load_config(path)
     if threads is None:
         return config
@@ -47,7 +45,7 @@ def _config(path: Path, threads: int | None) -> Config:
 
 def run_sample(arguments: argparse.Namespace) -> Answer:
     """``mcgeo sample``."""
-    config = _config(arguments.config, arguments.threads)
+    config = read_config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
     result = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
     if isinstance(result, Droplet):
@@ -57,34 +55,4 @@ def run_sample(arguments: argparse.Namespace) -> Answer:
         summary = sample_summary(as_liquid(result, folder))
         text = sample_text(summary)
     write_json(folder / "sample.json", summary)
-    return as_json(summary) if arguments.json else text, _exit_code(summary)
-
-
-def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:
-    if arguments.liquid is not None:
-        return read_liquid(arguments.liquid)
-    if arguments.config.suffix == RESULT_SUFFIX:
-        return read_liquid(arguments.config)
-    return as_liquid(sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet), folder)
-
-
-def run_scan(arguments: argparse.Namespace) -> Answer:
-    """``mcgeo scan``: samples first when the liquid is missing."""
-    config = _config(arguments.config, arguments.threads)
-    folder = arguments.out or default_folder(arguments.config)
-    liquid = _liquid_of(arguments, config, folder)
-    keys = config.model_dump(mode="json", by_alias=True)
-    found = scan(liquid, keys["problem"], keys["scan"])
-    summary = scan_summary(liquid, keys["problem"], found)
-    write_json(folder / "scan.json", summary)
-    curve = found.curve
-    columns = {
-        "stretch": curve.stretch,
-        "energy [e^2/(4 pi eps l_B) per electron]": curve.energy,
-        "energy error": curve.error,
-        "error of the difference to the minimum": curve.difference_error,
-    }
-    angle = summary["curve"][0]["angle_degrees"]
-    comment = f"{liquid.states[0].label}, energy against the hole's stretch at {angle:g} degrees"
-    write_csv(folder / "curve.csv", columns, comment)
-    return as_json(summary) if arguments.json else scan_text(summary), _exit_code(summary)
+    return as_json(summary) if arguments.json else text, exit_code(summary)

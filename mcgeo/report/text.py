@@ -85,12 +85,14 @@ def scan_text(summary: Mapping[str, Any]) -> str:
     rows = [
         ("state", f"{state['label']}, {state['liquid_electrons']} electrons"),
         ("interaction", f"{problem['interaction_name']}, level {level}"),
+        ("variation", problem["variation"].replace("_", " ")),
         (
             "mass orbit",
             f"stretch {problem['mass_stretch']:.5g} at {problem['mass_angle_degrees']:.4g} degrees, "
             f"aspect ratio {problem['orbit_aspect_ratio']:.5g}",
         ),
-        ("hole: stretch", f"{_pair(best, 'stretch')}"),
+        ("orbit: stretch", _pair(best, "orbit_stretch")),
+        ("hole: stretch", _pair(best, "stretch")),
         ("hole: angle", f"{value_with_error(Estimate(best['angle_degrees'], best['angle_error']))} degrees"),
         ("hole: aspect ratio", _pair(best, "aspect_ratio")),
         ("energy", f"{_pair(best, 'energy')} {ENERGY_UNIT}"),
@@ -102,6 +104,46 @@ def scan_text(summary: Mapping[str, Any]) -> str:
         *_health_rows(summary["diagnostics"]),
     ]
     return _lines(rows)
+
+
+def torus_text(summary: Mapping[str, Any]) -> str:
+    """Lines for `mcgeo.runs.torus_summary.torus_summary`; energies per electron."""
+    state, problem, best = summary["state"], summary["problem"], summary["optimum"]
+    rows = [
+        ("state", f"{state['label']}, {state['liquid_electrons']} electrons, every metric on the cell"),
+        ("interaction", f"{problem['interaction_name']}, level {problem['level']}"),
+        ("hole: stretch", f"{_pair(best, 'stretch')} at {best['angle_degrees']:.4g} degrees"),
+        ("hole: aspect ratio", _pair(best, "aspect_ratio")),
+        ("energy", f"{_pair(best, 'energy')} {ENERGY_UNIT}"),
+        ("gain over isotropic hole", _pair(best, "gain_isotropic")),
+        ("stiffness along", _pair(best, "stiffness_along")),
+        ("polynomial", f"degree {best['fit_degree']}, probability of its chi-square {best['fit_probability']:.2f}"),
+        ("minimum", "inside the range" if best["interior"] else "none inside the range: widen scan.stretch"),
+        *_health_rows(summary["diagnostics"]),
+    ]
+    return _lines(rows)
+
+
+def comparison_text(summary: Mapping[str, Any]) -> str:
+    """The plane's lines, then a table of both roads."""
+    head = f"{'stretch':>9}  {'torus':>14}  {'plane':>14}  {'difference':>11}  {'law':>11}  {'errors off':>10}"
+    lines = [
+        f"{row['stretch']:9.4f}  {_pair(row, 'energy_torus'):>14}  {_pair(row, 'energy_plane'):>14}  "
+        f"{row['difference']:11.6f}  {row['finite_size_law']:11.6f}  {row['deviation_in_errors']:10.2f}"
+        for row in summary["comparison"]
+    ]
+    best = summary["torus"]
+    return "\n".join(
+        [
+            scan_text(summary),
+            "",
+            f"torus: stretch {_pair(best, 'stretch')}, energy {_pair(best, 'energy')} {ENERGY_UNIT}",
+            "law: what the finite cell adds to the infinite liquid; errors off: (difference - law) in standard errors",
+            "",
+            head,
+            *lines,
+        ]
+    )
 
 
 def _stiffness(best: Mapping[str, Any]) -> str:

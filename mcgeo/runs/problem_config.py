@@ -8,6 +8,7 @@ from pydantic import AfterValidator, Discriminator, Field, Tag, ValidationInfo, 
 
 from mcgeo.runs.config_types import Group, ListOf, Positive, Real, WholeNumber, given_key, rule
 from mcgeo.runs.interaction_config import CoulombConfig, InteractionConfig
+from mcgeo.runs.tilt_config import TiltConfig
 
 Row = Annotated[tuple[Real, Real], ListOf(2)]
 Tensor = tuple[tuple[float, float], tuple[float, float]]
@@ -77,9 +78,10 @@ class ProblemConfig(Group):
     interaction: InteractionConfig = Field(
         default=CoulombConfig(kind="coulomb"), description="Interaction of two electrons."
     )
-    level: Annotated[int, WholeNumber(0, 1)] = Field(
+    level: Annotated[int, WholeNumber(0, 2)] = Field(
         default=0, description="Landau level, counted from 0 [1]."
     )
+    tilt: TiltConfig | None = Field(default=None, description="Tilted field and parabolic well; null: a thin layer.")
 
 
     variation: Literal["projected", "rigid", "two_metric"] = Field(
@@ -128,4 +130,8 @@ class ScanConfig(Group):
     )
     angle_degrees: Real | None = Field(
         default=None, description="Angle of the hole metric; null: that of the optimum [degrees]."
+    )
+    road: Literal["plane", "torus"] = Field(
+        default="plane",
+        description="Energies of the infinite liquid from pair occupations, or of the cell with every metric sampled.",
     )

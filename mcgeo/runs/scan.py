@@ -21,6 +21,13 @@ from mcgeo.runs.table_file import without_contents
 from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
 from mcgeo.variational.response import Response, mass_response, shape_verdict
+from mcgeo.variational.susceptibility import (
+    SurfaceMaker,
+    Susceptibility,
+    susceptibility,
+    with_deformed_interaction,
+    with_deformed_mass,
+)
 from mcgeo.variational.variation import Variation, orbit_estimates, surface_of
 
 Array = NDArray[np.float64]
@@ -58,7 +65,9 @@ class Scan:
     orbit_stretch: Estimate
     orbit_angle: Estimate
     response: Response
+    susceptibilities: Mapping[str, Susceptibility]
     verdict: str
+    surface: Surface
     curve: EnergyCurve
 
 
@@ -72,9 +81,13 @@ def scan(liquid: Liquid, problem_keys: Mapping[str, Any], scan_keys: Mapping[str
     """
     problem = problem_from(problem_keys)
     variation = variation_from(problem_keys)
-    surface = surface_of(liquid.occupations, problem, variation)
+
+    def surface_for(other: Problem) -> Surface:
+        return surface_of(liquid.occupations, other, variation)
+
+    surface = surface_for(problem)
     minimum = find_minimum(surface)
-    response = mass_response(lambda other: surface_of(liquid.occupations, other, variation), problem)
+    response = mass_response(surface_for, problem)
     angle = scan_keys["angle_degrees"]
     if angle is not None:
         direction = math.radians(angle)
@@ -83,10 +96,26 @@ def scan(liquid: Liquid, problem_keys: Mapping[str, Any], scan_keys: Mapping[str
     span = scan_keys["stretch"]
     stretches = np.linspace(span["from"], span["to"], span["points"])
     return Scan(
-        problem, variation, minimum, *orbit_estimates(surface, minimum), response,
+        problem,
+        variation,
+        minimum,
+        *orbit_estimates(surface, minimum),
+        response,
+        _susceptibilities(surface_for, problem, minimum),
         shape_verdict(problem, minimum, response),
+        surface,
         _curve(surface, minimum, direction, stretches),
-    )  # fmt: skip
+    )
+
+
+def _susceptibilities(surface_for: SurfaceMaker, problem: Problem, minimum: Minimum) -> dict[str, Susceptibility]:
+    """To the mass and, in a field across the plane, to the shape of the interaction; none without a minimum."""
+    if not minimum.interior:
+        return {}
+    causes = {"mass": with_deformed_mass}
+    if problem.tilt is None:
+        causes["interaction"] = with_deformed_interaction
+    return {name: susceptibility(surface_for, problem, minimum.metric, cause) for name, cause in causes.items()}
 
 
 def _curve(surface: Surface, minimum: Minimum, angle: float, stretches: Array) -> EnergyCurve:
@@ -101,7 +130,8 @@ def _curve(surface: Surface, minimum: Minimum, angle: float, stretches: Array) -
     )
 
 
-def _pair(name: str, estimate: Estimate) -> dict[str, float]:
+def estimate_pair(name: str, estimate: Estimate) -> dict[str, float]:
+    """``name`` and ``name_error``."""
     return {name: estimate.value, f"{name}_error": estimate.error}
 
 
@@ -120,19 +150,23 @@ def optimum_summary(found: Scan) -> dict[str, Any]:
     """``optimum`` of the JSON output; the error of an angle without meaning (a circle's) is infinite, null in JSON."""
     m = found.minimum
     return {
-        **_pair("stretch", m.stretch),
+        **estimate_pair("stretch", m.stretch),
         "angle_degrees": math.degrees(m.angle.value),
         "angle_error": math.degrees(m.angle.error),
-        **_pair("aspect_ratio", m.aspect_ratio),
-        **_pair("energy", m.energy),
-        **_pair("gain_isotropic", m.gain_isotropic),
-        **_pair("gain_mass", m.gain_mass),
+        **estimate_pair("aspect_ratio", m.aspect_ratio),
+        **estimate_pair("energy", m.energy),
+        **estimate_pair("gain_isotropic", m.gain_isotropic),
+        **estimate_pair("gain_mass", m.gain_mass),
         "stiffness": m.stiffness.tolist(),
         "stiffness_error": m.stiffness_error.tolist(),
         "isotropic_stiffness": found.response.isotropic_stiffness.value,
         "isotropic_stiffness_error": found.response.isotropic_stiffness.error,
-        **_pair("response", found.response.response),
-        **_pair("orbit_stretch", found.orbit_stretch),
+        **estimate_pair("response", found.response.response),
+        "susceptibility": {
+            name: {"matrix": value.matrix.tolist(), "error": value.error.tolist()}
+            for name, value in found.susceptibilities.items()
+        },
+        **estimate_pair("orbit_stretch", found.orbit_stretch),
         "orbit_angle_degrees": math.degrees(found.orbit_angle.value),
         "orbit_angle_error": math.degrees(found.orbit_angle.error),
         "interior": m.interior,

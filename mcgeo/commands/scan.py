@@ -1,0 +1,85 @@
+"""``scan``: the energy over the metric, on the plane or on the torus, and both side by side."""
+
+from __future__ import annotations
+
+import argparse
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+from mcgeo.commands.run import Answer, as_json, default_folder, exit_code, read_config
+from mcgeo.errors import ConfigError
+from mcgeo.report.tables import write_csv, write_json
+from mcgeo.report.text import comparison_text, scan_text, torus_text
+from mcgeo.runs.config import Config
+from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.sample import sample
+from mcgeo.runs.scan import scan, scan_summary
+from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_liquid
+from mcgeo.runs.torus_road import compare_roads, torus_road
+from mcgeo.runs.torus_summary import comparison_summary, torus_summary
+from mcgeo.variational.variation import PROJECTED
+
+_ENERGY = "[e^2/(4 pi eps l_B) per electron]"
+
+
+def run_scan(arguments: argparse.Namespace) -> Answer:
+    """``mcgeo scan``: samples first when a liquid is missing."""
+    config = read_config(arguments.config, arguments.threads)
+    folder = arguments.out or default_folder(arguments.config)
+    keys = config.model_dump(mode="json", by_alias=True)
+    if arguments.compare:
+        if config.problem.variation != PROJECTED:
+            raise ConfigError(["--compare needs problem.variation: projected, the one problem that both roads share"])
+        summary = _on_both_roads(arguments, config, folder, keys)
+        text = comparison_text(summary)
+    elif config.scan.road == "torus":
+        road = torus_road(config, folder / "torus", overwrite=arguments.overwrite, quiet=arguments.quiet)
+        summary = torus_summary(road, keys["problem"])
+        text = torus_text(summary)
+    else:
+        liquid = _liquid_of(arguments, config, folder)
+        summary = scan_summary(liquid, keys["problem"], scan(liquid, keys["problem"], keys["scan"]))
+        text = scan_text(summary)
+    write_json(folder / "scan.json", summary)
+    write_csv(folder / "curve.csv", _columns(summary["curve"]), _provenance(summary))
+    return as_json(summary) if arguments.json else text, exit_code(summary)
+
+
+def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:
+    if arguments.liquid is not None:
+        return read_liquid(arguments.liquid)
+    if arguments.config.suffix == RESULT_SUFFIX:
+        return read_liquid(arguments.config)
+    return as_liquid(sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet), folder)
+
+
+def _on_both_roads(
+    arguments: argparse.Namespace, config: Config, folder: Path, keys: Mapping[str, Any]
+) -> dict[str, Any]:
+    """The scan of the plane with the torus beside it."""
+    liquid = _liquid_of(arguments, config, folder)
+    found = scan(liquid, keys["problem"], keys["scan"])
+    road = torus_road(config, folder / "torus", overwrite=arguments.overwrite, quiet=arguments.quiet)
+    return {
+        **scan_summary(liquid, keys["problem"], found),
+        "torus": torus_summary(road, keys["problem"])["optimum"],
+        "comparison": comparison_summary(compare_roads(road, liquid, found.surface)),
+    }
+
+
+def _columns(curve: list[dict[str, Any]]) -> dict[str, list[float]]:
+    columns = {
+        "stretch": [point["stretch"] for point in curve],
+        f"energy {_ENERGY}": [point["energy"] for point in curve],
+        f"energy error {_ENERGY}": [point["energy_error"] for point in curve],
+    }
+    if "difference_error" in curve[0]:
+        differences = [point["difference_error"] for point in curve]
+        columns[f"error of the difference to the minimum {_ENERGY}"] = differences
+    return columns
+
+
+def _provenance(summary: Mapping[str, Any]) -> str:
+    angle = summary["curve"][0]["angle_degrees"]
+    return f"{summary['state']['label']}, energy against the hole's stretch at {angle:g} degrees"
