@@ -57,6 +57,8 @@ class TiltedField:
         Quantum number of the well's oscillator.
     mass_across : float
         mu: mass across the plane over the cyclotron mass sqrt(det m).
+    permittivity_across : float
+        eps_z/sqrt(eps_x eps_y): the interaction is then 4 pi r/(|q|^2 + r^2 q_z^2), r^2 being this ratio.
 
     Raises
     ------
@@ -69,13 +71,19 @@ class TiltedField:
     direction: float = 0.0
     subband: int = 0
     mass_across: float = 1.0
+    permittivity_across: float = 1.0
 
     def __post_init__(self) -> None:
         if not 0.0 <= self.angle < math.pi / 2:
             raise GeometryError(
                 f"a field can be tilted by 0 to less than 90 degrees, not by {math.degrees(self.angle):g}"
             )
-        for name, value in (("confinement", self.confinement), ("mass across the plane", self.mass_across)):
+        positive = {
+            "confinement": self.confinement,
+            "mass across the plane": self.mass_across,
+            "permittivity across the plane": self.permittivity_across,
+        }
+        for name, value in positive.items():
             if not (value > 0.0 and math.isfinite(value)):
                 raise GeometryError(f"the {name} must be positive and finite, not {value}")
 
@@ -177,9 +185,10 @@ class TiltedOrbit:
         if not isinstance(interaction, Coulomb):
             raise GeometryError(f"a tilted field needs the Coulomb interaction, not {interaction.name}")
         norms = 2.0 * math.pi / interaction.potential(wavevectors)
+        # With q_z in units of 1/r the interaction is isotropic, and the form factor is stretched instead.
+        unit = np.array([1.0, 1.0, 1.0 / math.sqrt(self.tilt.permittivity_across)])
         result = np.empty(norms.size)
-        coulomb_across(
-            np.ascontiguousarray(wavevectors, dtype=float).reshape(-1, 2), norms.ravel(), self._forms,
-            np.array([self.level, self.tilt.subband]), result,
-        )  # fmt: skip
+        waves = np.ascontiguousarray(wavevectors, dtype=float).reshape(-1, 2)
+        orders = np.array([self.level, self.tilt.subband])
+        coulomb_across(waves, norms.ravel(), self._forms * unit * unit[:, None], orders, result)
         return result.reshape(norms.shape)

@@ -14,6 +14,7 @@ from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.interaction import INTERACTIONS, Interaction
 from mcgeo.problem.mass import mass_metric_from_axes, mass_metric_from_ratio, mass_metric_from_tensor
 from mcgeo.problem.problem import Problem
+from mcgeo.problem.tilted_field import TiltedField
 from mcgeo.sampling.chain import Schedule
 from mcgeo.states.base import SampledState, TrialState
 from mcgeo.states.droplet import DropletState
@@ -110,7 +111,25 @@ def mass_metric(keys: Keys) -> UnimodularMetric:
 
 def problem_from(keys: Keys) -> Problem:
     """The projected problem."""
-    return Problem(mass_metric(keys["mass"]), interaction_from(keys["interaction"]), keys["level"])
+    tilt = keys.get("tilt")
+    return Problem(
+        mass_metric(keys["mass"]),
+        interaction_from(keys["interaction"]),
+        keys["level"],
+        None if tilt is None else tilted_field(tilt),
+    )
+
+
+def tilted_field(keys: Keys) -> TiltedField:
+    """Tilted field and well."""
+    return TiltedField(
+        math.radians(keys["angle_degrees"]),
+        keys["confinement_ratio"],
+        math.radians(keys["direction_degrees"]),
+        keys["subband"],
+        keys["mass_across_ratio"] or 1.0,
+        keys["permittivity_across_ratio"] or 1.0,
+    )
 
 
 def variation_from(keys: Keys) -> Variation:

@@ -14,10 +14,13 @@ from mcgeo.errors import ConfigError
 from mcgeo.runs.config_faults import Remark, explain, show
 from mcgeo.runs.config_types import Group
 from mcgeo.runs.geometry_config import CellConfig, GeometryConfig, NamedCellConfig
+from mcgeo.runs.lengths import length_remarks, with_lengths_in_nm
+from mcgeo.runs.material_config import MaterialConfig
 from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
 from mcgeo.runs.sampling_config import SamplingConfig
 from mcgeo.runs.state_config import StateConfig
 from mcgeo.runs.table_file import FOLDER
+from mcgeo.runs.tilt_config import tilt_remarks
 from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
 
 
@@ -31,10 +34,18 @@ class Config(Group):
         description="Cell of the torus, by its shape or by tau; null: hexagonal, or none on the disk.",
     )
     sampling: SamplingConfig = Field(default=SamplingConfig(), description="How the walkers run.")
+    material: MaterialConfig | None = Field(
+        default=None, description="Material and field: fill in the problem, and give results in physical units."
+    )
     problem: ProblemConfig = Field(default=ProblemConfig(), description="Mass, interaction and level.")
     scan: ScanConfig = Field(
         default=ScanConfig(), description="Hole metrics at which the energy is tabulated."
     )
+
+    @model_validator(mode="before")
+    @classmethod
+    def _with_material(cls, given: Any, info: ValidationInfo) -> Any:
+        return with_material(given, info.context)
 
     @field_validator("cell")
     @classmethod
@@ -54,7 +65,34 @@ class Config(Group):
 
 
 def contradictions(given: Mapping[str, Any]) -> list[Remark]:
-    """What of the given keys does not go together across groups, be the rest valid or not."""
+    """What of the given keys does not go together across groups, be the rest valid or not.
+
+    Parameters
+    ----------
+    given : mapping
+        With what a material adds, see `with_material`.
+    """
+    remarks = [*_disk_remarks(given), *length_remarks(given), *tilt_remarks(given)]
+    if given.get("material") is not None:
+        from mcgeo.runs.material_problem import material_remarks
+
+        remarks += material_remarks(given)
+    return remarks
+
+
+def with_material(given: Any, context: Mapping[str, Any] | None) -> Any:
+    """The given keys with what a material adds to them, as `material_problem` says.
+
+    Numerical libraries, slow to load, are needed by a material only.
+    """
+    if not isinstance(given, Mapping) or given.get("material") is None:
+        return given
+    from mcgeo.runs.material_problem import filled
+
+    return filled(given, context)
+
+
+def _disk_remarks(given: Mapping[str, Any]) -> list[Remark]:
     state, geometry = (
         given[key] if isinstance(given.get(key), Mapping) else {} for key in ("state", "geometry")
     )
@@ -94,11 +132,12 @@ def load_config(path: str | os.PathLike[str]) -> Config:
 
 
 def _validate(data: Mapping[str, Any], folder: Path = Path()) -> tuple[Config | None, list[Remark]]:
+    context = {FOLDER: folder}
     try:
-        return Config.model_validate(data, context={FOLDER: folder}), []
+        return Config.model_validate(data, context=context), []
     except ValidationError as error:
         # The model looks for contradictions only when all groups are valid; here they are wanted in any case.
-        across = contradictions(data) if isinstance(data, Mapping) else []
+        across = contradictions(with_material(data, context)) if isinstance(data, Mapping) else []
         return None, explain(error, json_schema()) + across
 
 
@@ -167,5 +206,5 @@ def _leaves(value: Any, name: str) -> dict[str, Any]:
 
 def json_schema() -> dict[str, Any]:
     """JSON schema of the YAML file, for editors."""
-    schema = Config.model_json_schema(by_alias=True)
+    schema = with_lengths_in_nm(Config.model_json_schema(by_alias=True))
     return {"$schema": "https://json-schema.org/draft/2020-12/schema", **schema}

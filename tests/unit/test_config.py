@@ -48,10 +48,14 @@ def test_a_state_is_all_that_is_needed(write):
             "threads": None,
             "q_max": 8.0,
         },
+        "material": None,
         "problem": {
             "mass": {"ratio": 1.0, "angle_degrees": 0.0},
             "interaction": {"kind": "coulomb", "dielectric": {"ratio": 1.0, "angle_degrees": 0.0}},
             "level": 0,
+            "tilt": None,
+            "variation": "projected",
+            "level_mixing": None,
         },
         "scan": {"stretch": {"from": 0.0, "to": 2.0, "points": 41}, "angle_degrees": None},
     }

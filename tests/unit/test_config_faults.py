@@ -167,10 +167,10 @@ def faults(path: str) -> list[str]:
             LAUGHLIN + "problem: {§interaction: {kind: gaussian}}\n",
             "problem.interaction.range: missing; must be a finite number above 0",
         ),
-        (LAUGHLIN + "problem: {level: §2}\n", "problem.level: must be a whole number from 0 to 1, not 2"),
+        (LAUGHLIN + "problem: {level: §3}\n", "problem.level: must be a whole number from 0 to 2, not 3"),
         (
             LAUGHLIN + "problem: {level: §true}\n",
-            "problem.level: must be a whole number from 0 to 1, not true",
+            "problem.level: must be a whole number from 0 to 2, not true",
         ),
         # Scan.
         (
@@ -196,7 +196,7 @@ def faults(path: str) -> list[str]:
         # The file.
         (
             LAUGHLIN + "§samplign: {}\n",
-            "samplign: unknown key; allowed are state, geometry, cell, sampling, problem,",
+            "samplign: unknown key; allowed are state, geometry, cell, sampling, material,",
         ),
         (
             LAUGHLIN + "§state: {kind: laughlin, exponent: 3, electrons: 10}\n",
@@ -257,7 +257,10 @@ def test_long_values_are_cut_in_messages(write):
     [
         (
             None,
-            ["configuration: must be a group of keys (state, geometry, cell, sampling, problem, scan), not null"],
+            [
+                "configuration: must be a group of keys (state, geometry, cell, sampling, material, problem, scan), "
+                "not null"
+            ],
         ),
         (
             {"state": {"kind": "laughlin", "exponent": 3, "electrons": 1}, 5: 1},
