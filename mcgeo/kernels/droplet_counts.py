@@ -1,4 +1,4 @@
-"""What is measured in droplets of eight walkers: Coulomb sums, radial density, second moments.
+"""What is measured in droplets of eight walkers: Coulomb sums, radial density, pair distances, second moments.
 
 Positions are in the isotropic coordinates r' of the droplet's metric g; a displacement in the lab has
 |r|^2 = r'.g^-1.r' because the map S with r' = S r is symmetric and S S = g.
@@ -21,6 +21,7 @@ from mcgeo.kernels.lanes import (
     LANES,
     bits_from_float,
     float_from_bits,
+    integer_from_float,
     load,
     select,
     shift_right,
@@ -165,3 +166,25 @@ def add_radial_counts(x: np.ndarray, y: np.ndarray, width: float, counts: np.nda
         for lane in range(LANES):
             radius = math.sqrt(x[i, lane] ** 2 + y[i, lane] ** 2)
             counts[min(int(radius / width), last), lane] += 1
+
+
+@kernel
+def add_pair_counts(x: np.ndarray, y: np.ndarray, width: float, counts: np.ndarray) -> None:
+    """Count pairs by |r'_ij| in bins of ``width`` (l_B); the last bin takes all that lie beyond.
+
+    Parameters
+    ----------
+    counts : ndarray of int64, shape (n_bins, 8)
+        Updated.
+    """
+    last = np.uint64(counts.shape[0] - 1)
+    scale = 1.0 / width
+    bins = np.empty((1, LANES), dtype=np.uint64)
+    for i in range(x.shape[0]):
+        px, py = load(x, i), load(y, i)
+        for j in range(i):
+            dx, dy = load(x, j) - px, load(y, j) - py
+            distance_sq = dx * dx + dy * dy
+            store(bins, 0, integer_from_float(distance_sq * inverse_root(distance_sq) * scale))
+            for lane in range(LANES):
+                counts[min(bins[0, lane], last), lane] += 1

@@ -1,4 +1,4 @@
-"""What is measured in a droplet while walkers run: Coulomb sums, second moments, radial density, one trace."""
+"""What is measured in a droplet while walkers run: Coulomb sums, second moments, histograms, one trace."""
 
 from __future__ import annotations
 
@@ -9,7 +9,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.geometry.ellipse import stretch_factor
-from mcgeo.kernels.droplet_counts import add_radial_counts, add_second_moments, coulomb_sums
+from mcgeo.kernels.droplet_counts import (
+    add_pair_counts,
+    add_radial_counts,
+    add_second_moments,
+    coulomb_sums,
+)
 from mcgeo.kernels.lanes import LANES
 from mcgeo.sampling.blocks import BlockRecord, Interrupted
 from mcgeo.states.base import WalkerGroup
@@ -19,10 +24,17 @@ Array = NDArray[np.float64]
 
 ELECTRON_ELECTRON, ELECTRON_ELECTRON_LAB = "electron_electron", "electron_electron_lab"
 ELECTRON_BACKGROUND, SECOND_MOMENTS = "electron_background", "second_moments"
-RADIAL = "radial"
-RADIAL_BIN_WIDTH = 0.1
+RADIAL, PAIRS = "radial", "pairs"
+RADIAL_BIN_WIDTH, PAIR_BIN_WIDTH = 0.1, 0.2
+# Counting all pairs costs about as much as the sweeps between two measurements.
+_MEASUREMENTS_PER_HISTOGRAM = 2
 # Beyond the edge the density falls as exp(-(r' - R)^2/2) and faster; the last bin takes what is left.
 _MARGIN = 6.0
+
+
+def configurations_counted(n_measurements: int) -> int:
+    """Number of configurations in the pair counts of a block of measurements."""
+    return -(-n_measurements // _MEASUREMENTS_PER_HISTOGRAM)
 
 
 @dataclass(frozen=True, eq=False)
@@ -42,6 +54,11 @@ class DropletMeasurement:
         """Number of radial bins."""
         return int((self.state.background.radius + _MARGIN) / RADIAL_BIN_WIDTH)
 
+    @property
+    def n_pair_bins(self) -> int:
+        """Number of bins of pair distances."""
+        return int((2.0 * self.state.background.radius + _MARGIN) / PAIR_BIN_WIDTH)
+
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
     ) -> BlockRecord:
@@ -50,7 +67,8 @@ class DropletMeasurement:
         Means, energies being totals of all electrons: ``electron_electron``, f sum_{i<j} 1/|r'_ij|;
         ``electron_electron_lab``, sum_{i<j} 1/|r_ij|; ``electron_background``, each of shape (n_walkers,);
         ``second_moments``, <x^2>, <y^2>, <xy> per electron in the lab, shape (n_walkers, 3). Counts: ``radial``,
-        electrons by r' in bins of `RADIAL_BIN_WIDTH` l_B. Trace: total energy per electron.
+        electrons by r' in bins of `RADIAL_BIN_WIDTH` l_B; ``pairs``, pairs by |r'_ij| in bins of `PAIR_BIN_WIDTH` l_B,
+        over `configurations_counted`; the last bin takes all that lie beyond. Trace: total energy per electron.
 
         Raises
         ------
@@ -62,6 +80,7 @@ class DropletMeasurement:
         sums = np.empty((n_measurements, 3, LANES))
         moments = np.zeros((3, LANES))
         counts = np.zeros((self.n_bins, LANES), dtype=np.int64)
+        pairs = np.zeros((self.n_pair_bins, LANES), dtype=np.int64)
         group.refresh()
         group.accepted[:] = 0.0
         for k in range(n_measurements):
@@ -71,6 +90,8 @@ class DropletMeasurement:
             coulomb_sums(group.a, group.b, inverse_metric, background.radius, sums[k])
             add_second_moments(group.a, group.b, moments)
             add_radial_counts(group.a, group.b, RADIAL_BIN_WIDTH, counts)
+            if k % _MEASUREMENTS_PER_HISTOGRAM == 0:
+                add_pair_counts(group.a, group.b, PAIR_BIN_WIDTH, pairs)
         electron_electron = stretch_factor(self.state.metric) * sums[:, 0]
         electron_background = background.potential_scale * sums[:, 2]
         total = electron_electron + electron_background + background.self_energy
@@ -82,7 +103,7 @@ class DropletMeasurement:
                 ELECTRON_BACKGROUND: electron_background.mean(axis=0),
                 SECOND_MOMENTS: self._in_lab(moments / (n * n_measurements)),
             },
-            {RADIAL: counts.T.copy()},
+            {RADIAL: counts.T.copy(), PAIRS: pairs.T.copy()},
             total.T / n,
             group.accepted[0] / proposals,
             group.drift(),

@@ -15,6 +15,7 @@ from mcgeo.states.base import Array, SampledState
 class DropletState(SampledState, Protocol):
     """A lowest-level droplet of definite angular momentum, rotation symmetric in the coordinates of its own metric.
 
+    Its polynomial depends on differences of coordinates only: the centre of mass is in the lowest orbital.
     Walkers hold these isotropic coordinates r' = S r (l_B) in their ``a`` (x') and ``b`` (y').
     """
 
@@ -29,6 +30,14 @@ class DropletState(SampledState, Protocol):
     @property
     def angular_momentum(self) -> int:
         """Total angular momentum in the isotropic coordinates, the degree of the polynomial."""
+
+    @property
+    def largest_orbital(self) -> int:
+        """Largest power of one coordinate: orbitals z^k beyond are empty."""
+
+    @property
+    def pair_momenta(self) -> range:
+        """Relative angular momenta that a pair can have."""
 
 
 def mean_square_radius(state: DropletState) -> float:

@@ -82,6 +82,16 @@ class LaughlinDroplet:
         return self.exponent * self.n_electrons * (self.n_electrons - 1) // 2
 
     @property
+    def largest_orbital(self) -> int:
+        """m (N - 1)."""
+        return self.exponent * (self.n_electrons - 1)
+
+    @property
+    def pair_momenta(self) -> range:
+        """From m to the degree in the two coordinates together, m + 2m (N - 2)."""
+        return range(self.exponent, self.exponent * (2 * self.n_electrons - 3) + 1, 2)
+
+    @property
     def first_step(self) -> float:
         """Near the best side of a square proposal, in proportion to the distance of electrons."""
         return 3.0 * math.sqrt(self.exponent)

@@ -105,6 +105,16 @@ class MooreReadDroplet:
         return (self.exponent * (self.n_electrons - 1) - 1) * self.n_electrons // 2
 
     @property
+    def largest_orbital(self) -> int:
+        """m (N - 1) - 1: every electron is paired."""
+        return self.exponent * (self.n_electrons - 1) - 1
+
+    @property
+    def pair_momenta(self) -> range:
+        """From m - 1, where the two are paired, to the degree in their two coordinates together."""
+        return range(self.exponent - 1, self.exponent * (2 * self.n_electrons - 3), 2)
+
+    @property
     def first_step(self) -> float:
         """Near the best side of a square proposal, in proportion to the distance of electrons."""
         return 3.5 * math.sqrt(self.exponent)

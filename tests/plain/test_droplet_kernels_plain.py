@@ -7,7 +7,12 @@ import pytest
 
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.kernels import laughlin_disk, moore_read_disk
-from mcgeo.kernels.droplet_counts import add_radial_counts, add_second_moments, coulomb_sums
+from mcgeo.kernels.droplet_counts import (
+    add_pair_counts,
+    add_radial_counts,
+    add_second_moments,
+    coulomb_sums,
+)
 from mcgeo.kernels.lanes import LANES
 from mcgeo.states.laughlin_droplet import LaughlinDroplet
 from mcgeo.states.moore_read_droplet import MooreReadDroplet
@@ -106,3 +111,15 @@ def test_moments_and_counts():
     for lane in range(LANES):
         expected = np.histogram(np.hypot(x[:, lane], y[:, lane]), edges)[0]
         np.testing.assert_array_equal(counts[:, lane], expected)
+
+
+def test_pair_counts():
+    x, y, _ = walkers(6, 7)
+    counts = np.ones((9, LANES), dtype=np.int64)
+    add_pair_counts(x, y, 0.5, counts)
+    i, j = np.tril_indices(6, -1)
+    edges = [*np.arange(0.0, 4.5, 0.5), np.inf]
+    for lane in range(LANES):
+        expected = np.histogram(np.hypot(x[i, lane] - x[j, lane], y[i, lane] - y[j, lane]), edges)[0]
+        np.testing.assert_array_equal(counts[:, lane] - 1, expected)
+    assert counts[-1].sum() > LANES
