@@ -12,6 +12,8 @@ from mcgeo.estimate.statistics import Estimate
 
 Array = NDArray[np.float64]
 
+# A parabola that noise still allows would pull the minimum towards the middle of the range.
+_LEAST_DEGREE = 4
 _LARGEST_DEGREE = 8
 # A polynomial is accepted when its chi-square is not this unlikely.
 _LEAST_PROBABILITY = 0.05
@@ -44,19 +46,21 @@ class CurveMinimum:
 
 
 def fitted_minimum(x: Array, y: Array, error: Array) -> CurveMinimum:
-    """Weighted least squares by polynomials of rising degree until chi-square is acceptable, then their minimum.
+    """Weighted least squares by polynomials from the fourth degree up until chi-square is acceptable; their minimum.
 
     Parameters
     ----------
-    x, y, error : ndarray, shape (n,), n >= 4
+    x, y, error : ndarray, shape (n,), n >= 3
         Errors of different points independent.
     """
-    for degree in range(2, min(_LARGEST_DEGREE, len(x) - 2) + 1):
+    largest = min(_LARGEST_DEGREE, len(x) - 1)
+    for degree in range(min(_LEAST_DEGREE, largest), largest + 1):
         design = np.vander(x, degree + 1, increasing=True) / error[:, None]
         covariance = np.linalg.inv(design.T @ design)
         c = covariance @ (design.T @ (y / error))
         chi_sq = float(np.sum((y / error - design @ c) ** 2))
-        probability = float(chi2.sf(chi_sq, len(x) - degree - 1))
+        freedom = len(x) - degree - 1
+        probability = float(chi2.sf(chi_sq, freedom)) if freedom else 1.0
         if probability > _LEAST_PROBABILITY:
             break
     polynomial = np.polynomial.Polynomial(c)
