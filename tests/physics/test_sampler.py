@@ -112,7 +112,7 @@ def test_autocorrelation_time_in_closed_form(a: float) -> None:
     series = autoregressive(np.random.default_rng(11), a, (32, 4000))
     exact = (1.0 + a) / (1.0 - a)
     found = integrated_autocorrelation_time(series)
-    # Variance of the estimate with a window of five times: Sokal's lectures (1996), equation 3.19.
+    # Variance of the estimate with a window of five times: Sokal (1996), equation 3.19.
     error = exact * math.sqrt(2.0 * (10.0 * exact + 1.0) / series.size)
     require_unit_pulls([(found - exact) / error])
     if a <= 0.9:
