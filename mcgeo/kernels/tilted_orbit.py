@@ -49,8 +49,8 @@ def coulomb_across(
 
         int f(z)/(z^2 + k^2) dz = d sum_j f(z_j)/(z_j^2 + k^2) + (2 pi/k) Re f(ik)/(1 + exp(2 pi k/d)),
 
-    converges as exp(-const/d^2) at any k (W. Gautschi, SIAM J. Numer. Anal. 7, 187 (1970), for the complex error
-    function), and with nodes on either side of zero no term of it is large at small k.
+    converges as exp(-const/d^2) at any k (F. Matta and A. Reichel, Math. Comp. 25, 339 (1971), for the error function),
+    and with nodes on either side of zero no term of it is large at small k.
 
     Parameters
     ----------

@@ -135,7 +135,7 @@ class Material:
             If a tensor is not symmetric and positive definite, or ``across`` not positive.
         """
         mass_metric = UnimodularMetric.from_mass_tensor(mass)
-        dielectric = UnimodularMetric.from_matrix(np.linalg.inv(np.asarray(in_plane, dtype=float)))
+        dielectric = UnimodularMetric.from_matrix(UnimodularMetric.from_matrix(in_plane).inverse_matrix)
         _check("permittivity", across)
         mean = math.sqrt(float(np.linalg.det(np.asarray(in_plane, dtype=float))))
         mass_mean = math.sqrt(float(np.linalg.det(np.asarray(mass, dtype=float))))
