@@ -47,6 +47,36 @@ def _health_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
     ]
 
 
+def _unit_rows(summary: Mapping[str, Any]) -> list[tuple[str, str]]:
+    """What a sample of a material adds."""
+    if "units" not in summary:
+        return []
+    units = summary["units"]
+    rows = [
+        (
+            units["material"],
+            f"{units['field_tesla']:.5g} T, {units['density_per_cm2']:.4g} electrons per cm^2, "
+            f"magnetic length {units['magnetic_length_nm']:.4g} nm",
+        ),
+        (
+            "energy unit",
+            f"{units['coulomb_energy_mev']:.5g} meV = {units['coulomb_energy_kelvin']:.5g} K; cyclotron energy "
+            f"{units['cyclotron_energy_mev']:.5g} meV, level mixing {units['level_mixing']:.4g}",
+        ),
+    ]
+    best = summary.get("optimum")
+    if best is not None and "energy_mev" in best:
+        rows.append(
+            (
+                "gain over isotropic hole",
+                f"{best['gain_isotropic_mev']:.4g} meV = {best['gain_isotropic_kelvin']:.4g} K per electron",
+            )
+        )
+    if best is not None and "stiffness_mev_per_nm2" in best:
+        rows.append(("stiffness per area", f"{best['stiffness_mev_per_nm2'][0][0]:.4g} meV/nm^2"))
+    return rows
+
+
 def sample_text(summary: Mapping[str, Any]) -> str:
     """Lines for `mcgeo.runs.sample_summary.sample_summary`; energies per electron."""
     state = summary["state"]
@@ -56,6 +86,7 @@ def sample_text(summary: Mapping[str, Any]) -> str:
         ("energy, this cell", f"{_estimate(summary['energy_torus'])} {ENERGY_UNIT}"),
         ("energy, infinite liquid", f"{_estimate(summary['energy_plane'])} {ENERGY_UNIT}"),
         ("moves per second", f"{summary['moves_per_second']:.3g}"),
+        *_unit_rows(summary),
         *_health_rows(summary["diagnostics"]),
     ]
     return _lines(rows)
@@ -73,6 +104,7 @@ def droplet_text(summary: Mapping[str, Any]) -> str:
         ("background with itself", f"{energy['background_background']:.8g}"),
         ("<x^2>, <y^2>, <xy>", ", ".join(_estimate(moments[key]) for key in ("xx", "yy", "xy")) + " l_B^2"),
         ("moves per second", f"{summary['moves_per_second']:.3g}"),
+        *_unit_rows(summary),
         *_health_rows(summary["diagnostics"]),
     ]
     return _lines(rows)
@@ -101,6 +133,7 @@ def scan_text(summary: Mapping[str, Any]) -> str:
         ("stiffness along, across", _stiffness(best)),
         ("response to weak mass", _pair(best, "response")),
         ("verdict on the shape", _VERDICTS[best["shape_verdict"]]),
+        *_unit_rows(summary),
         *_health_rows(summary["diagnostics"]),
     ]
     return _lines(rows)
@@ -119,6 +152,7 @@ def torus_text(summary: Mapping[str, Any]) -> str:
         ("stiffness along", _pair(best, "stiffness_along")),
         ("polynomial", f"degree {best['fit_degree']}, probability of its chi-square {best['fit_probability']:.2f}"),
         ("minimum", "inside the range" if best["interior"] else "none inside the range: widen scan.stretch"),
+        *_unit_rows(summary),
         *_health_rows(summary["diagnostics"]),
     ]
     return _lines(rows)
