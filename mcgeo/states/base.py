@@ -38,6 +38,12 @@ class WalkerGroup(Protocol):
     def drift(self) -> float:
         """Largest relative error that the stored values have gathered since the last `refresh`."""
 
+    def forces(self) -> Array | None:
+        """Gradient of log |Psi|^2 in isotropic coordinates with x along L1, in 1/l_B; None where it is not derived.
+
+        Shape (2 n_electrons, 8): rows 2i and 2i + 1 hold the derivatives by x_i and y_i.
+        """
+
 
 class SampledState(Protocol):
     """What sampling needs of a state: a lowest-level trial state, isotropic in its own metric."""

@@ -123,6 +123,9 @@ class FermiSeaGroup:
         self.refresh()
         return float(np.max(np.abs(kept - self._kept.log_det)))
 
+    def forces(self) -> None:
+        """Not derived for the determinant."""
+
 
 @dataclass(frozen=True, eq=False)
 class FermiSea(OnTorus):

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.kernels.lanes import LANES
+from mcgeo.kernels.laughlin_forces import laughlin_forces
 from mcgeo.kernels.laughlin_torus import (
     LARGEST_IMAGINARY_TAU,
     LaughlinTorusTables,
@@ -56,6 +57,12 @@ class LaughlinGroup:
         self.refresh()
         scale = np.maximum(np.abs(self._sums).max(axis=0), 1.0)
         return float(np.max(np.abs(kept - self._sums) / scale))
+
+    def forces(self) -> Array:
+        """Gradient of log |Psi|^2, from the stored phases."""
+        forces = np.empty((2 * len(self.a), LANES))
+        laughlin_forces(self._tables, self.b, self._phases, self._sums, forces)
+        return forces
 
 
 @dataclass(frozen=True, eq=False)

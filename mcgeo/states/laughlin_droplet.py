@@ -42,6 +42,9 @@ class LaughlinDropletGroup:
         """Zero: no stored value can go astray."""
         return 0.0
 
+    def forces(self) -> None:
+        """Not derived in the plane."""
+
 
 @dataclass(frozen=True)
 class LaughlinDroplet:

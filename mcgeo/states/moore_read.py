@@ -28,6 +28,7 @@ from numpy.typing import NDArray
 from mcgeo.errors import GeometryError
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.kernels.lanes import LANES
+from mcgeo.kernels.moore_read_forces import moore_read_forces
 from mcgeo.kernels.moore_read_inverses import log_weights, moore_read_storage, refresh
 from mcgeo.kernels.moore_read_pairs import (
     LARGEST_IMAGINARY_TAU,
@@ -66,6 +67,12 @@ class MooreReadGroup:
         self.refresh()
         made = self._storage.inverses
         return float(np.max(np.abs(kept - made).max(axis=(1, 2, 3)) / np.abs(made).max(axis=(1, 2, 3))))
+
+    def forces(self) -> Array:
+        """Gradient of log |Psi|^2, from the stored phases and inverse matrices."""
+        forces = np.empty((2 * len(self.a), LANES))
+        moore_read_forces(self._tables, self.b, self._storage, forces)
+        return forces
 
 
 @dataclass(frozen=True, eq=False)

@@ -55,6 +55,9 @@ class MooreReadDropletGroup:
         error = np.abs(kept - self._inverse).max(axis=(0, 2, 3))
         return float(np.max(error / np.abs(self._inverse).max(axis=(0, 2, 3))))
 
+    def forces(self) -> None:
+        """Not derived in the plane."""
+
 
 @dataclass(frozen=True)
 class MooreReadDroplet:
