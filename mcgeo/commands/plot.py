@@ -49,7 +49,7 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     if arguments.what in COMMON:
         axes, table = COMMON[arguments.what](result)
     elif isinstance(result, Droplet):
-        axes, table = _of_droplet(result, arguments.what, path)
+        axes, table = _of_droplet(result, arguments.what, path, keys)
     else:
         axes, table = LIQUID[arguments.what](as_liquid(result, path), keys)
     figure = axes.get_figure(root=True)
@@ -86,7 +86,7 @@ def _hole(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     return axes, map_table(image.x, image.y, image.g, ("x [l_B]", "y [l_B]", "g"))
 
 
-def _energy(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+def _energy(liquid: Liquid | Droplet, keys: Mapping[str, Any]) -> Drawing:
     found = scan(liquid, keys["problem"], keys["scan"])
     curve, mass = found.curve, found.problem.mass_metric
     axes = figures.energy_curve(
@@ -164,9 +164,11 @@ def _trace(result: Sampled) -> Drawing:
     return axes, {"block": np.arange(1, len(blocks) + 1), **table}
 
 
-def _of_droplet(droplet: Droplet, what: str, path: Path) -> Drawing:
+def _of_droplet(droplet: Droplet, what: str, path: Path, keys: Mapping[str, Any]) -> Drawing:
+    if what == "energy":
+        return _energy(droplet, keys)
     if what != "density":
-        raise StorageError(f"{path} holds a droplet, of which density and trace can be drawn, not {what}")
+        raise StorageError(f"{path} holds a droplet, of which energy, density and trace can be drawn, not {what}")
     density = droplet.density
     radius = droplet.state.background.radius
     middle = 0.5 * (density.edges[1:] + density.edges[:-1])

@@ -11,11 +11,15 @@ from mcgeo.commands.run import Answer, as_json, default_folder, exit_code, read_
 from mcgeo.errors import ConfigError
 from mcgeo.report.tables import write_csv, write_json
 from mcgeo.report.text import comparison_text, scan_text, torus_text
+from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.config import Config
+from mcgeo.runs.droplet import Droplet
+from mcgeo.runs.droplet_scan import require_droplet_problem
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import sample
+from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import scan, scan_summary
-from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_liquid
+from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
 from mcgeo.runs.torus_road import compare_roads, torus_road
 from mcgeo.runs.torus_summary import comparison_summary, torus_summary
 from mcgeo.variational.variation import PROJECTED
@@ -28,6 +32,8 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
     config = read_config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
     keys = config.model_dump(mode="json", by_alias=True)
+    if config.geometry.kind == "disk":
+        _require_disk_problem(arguments, keys)
     if arguments.compare:
         if config.problem.variation != PROJECTED:
             raise ConfigError(["--compare needs problem.variation: projected, the one problem that both roads share"])
@@ -38,7 +44,8 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
         summary = torus_summary(road, keys["problem"])
         text = torus_text(summary)
     else:
-        liquid = _liquid_of(arguments, config, folder)
+        sampled = _sampled(arguments, config, folder)
+        liquid = sampled if isinstance(sampled, Droplet) else as_liquid(sampled, folder)
         summary = scan_summary(liquid, keys["problem"], scan(liquid, keys["problem"], keys["scan"]))
         text = scan_text(summary)
     write_json(folder / "scan.json", summary)
@@ -46,12 +53,23 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
     return as_json(summary) if arguments.json else text, exit_code(summary)
 
 
-def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:
+def _require_disk_problem(arguments: argparse.Namespace, keys: Mapping[str, Any]) -> None:
+    """Refuse, before anything is sampled, what a droplet cannot answer."""
+    if arguments.compare or keys["scan"]["road"] == "torus":
+        raise ConfigError(["the torus road needs geometry.kind: torus, not disk"])
+    require_droplet_problem(problem_from(keys["problem"]), variation_from(keys["problem"]))
+
+
+def _sampled(arguments: argparse.Namespace, config: Config, folder: Path) -> Sampled:
     if arguments.liquid is not None:
-        return read_liquid(arguments.liquid)
+        return read_result(arguments.liquid)
     if arguments.config.suffix == RESULT_SUFFIX:
-        return read_liquid(arguments.config)
-    return as_liquid(sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet), folder)
+        return read_result(arguments.config)
+    return sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+
+
+def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:
+    return as_liquid(_sampled(arguments, config, folder), arguments.liquid or folder)
 
 
 def _on_both_roads(

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.estimate.droplet import DropletEnergies, RadialDensity, droplet_energies, radial_density
+from mcgeo.estimate.droplet_occupations import DropletOccupations, fit_droplet_occupations
 from mcgeo.estimate.statistics import Estimate, mean_estimate
 from mcgeo.runs.build import droplet_state
 from mcgeo.runs.sampled import Sampled
@@ -16,11 +17,15 @@ from mcgeo.sampling.droplet_measurement import (
     ELECTRON_BACKGROUND,
     ELECTRON_ELECTRON,
     ELECTRON_ELECTRON_LAB,
+    PAIR_BIN_WIDTH,
+    PAIRS,
     RADIAL,
     RADIAL_BIN_WIDTH,
     SECOND_MOMENTS,
+    configurations_counted,
 )
 from mcgeo.states.droplet import DropletState
+from mcgeo.variational.droplet_surface import DropletInteraction
 
 Array = NDArray[np.float64]
 
@@ -40,14 +45,17 @@ class Droplet(Sampled):
 
     @property
     def axes(self) -> dict[str, tuple[NDArray[Any], str]]:
-        """Middle of the radial bins, in isotropic coordinates."""
-        n_bins = self.blocks.counts[RADIAL].shape[-1]
-        return {"radius": (RADIAL_BIN_WIDTH * (np.arange(n_bins) + 0.5), "l_B")}
+        """Middle of the bins of r' and of |r'_ij|, in isotropic coordinates."""
+        n_bins, n_pair_bins = (self.blocks.counts[name].shape[-1] for name in (RADIAL, PAIRS))
+        return {
+            "radius": (RADIAL_BIN_WIDTH * (np.arange(n_bins) + 0.5), "l_B"),
+            "pair_distance": (PAIR_BIN_WIDTH * (np.arange(n_pair_bins) + 0.5), "l_B"),
+        }
 
     @property
     def scaled_axes(self) -> dict[str, tuple[str, int]]:
-        """Radial counts along the radius."""
-        return {"radius": (f"counts/{RADIAL}", 2)}
+        """Radial counts along the radius, pair counts along the distance."""
+        return {"radius": (f"counts/{RADIAL}", 2), "pair_distance": (f"counts/{PAIRS}", 2)}
 
     def samples(self, name: str) -> Array:
         """Independent samples of a measured mean."""
@@ -73,3 +81,18 @@ class Droplet(Sampled):
         """Mean density on rings of the isotropic coordinates."""
         counts = self.independent(self.blocks.counts[RADIAL])
         return radial_density(counts, self.schedule.measurements_per_block, RADIAL_BIN_WIDTH)
+
+    @cached_property
+    def occupations(self) -> DropletOccupations:
+        """Occupations of orbitals and of relative angular momenta, with their samples."""
+        n = self.state.n_electrons
+        measured = self.schedule.measurements_per_block
+        n_pairs = configurations_counted(measured) * n * (n - 1) / 2.0
+        radial = self.independent(self.blocks.counts[RADIAL]) / measured
+        pairs = self.independent(self.blocks.counts[PAIRS]) / n_pairs
+        return fit_droplet_occupations(self.state, radial, pairs, (RADIAL_BIN_WIDTH, PAIR_BIN_WIDTH))
+
+    @cached_property
+    def interaction(self) -> DropletInteraction:
+        """Energies for any orbit, interaction and metric."""
+        return DropletInteraction(self.occupations)

@@ -14,6 +14,9 @@ from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import problem_from, variation_from
+from mcgeo.runs.droplet import Droplet
+from mcgeo.runs.droplet_scan import droplet_surface
+from mcgeo.runs.droplet_summary import droplet_state_summary
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample_summary import state_summary
@@ -71,18 +74,22 @@ class Scan:
     curve: EnergyCurve
 
 
-def scan(liquid: Liquid, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
-    """Scan of a liquid.
+def scan(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
+    """Scan of a liquid or a droplet.
 
     Raises
     ------
     GeometryError
         If the range of stretches goes farther from the mass metric than the quadrature resolves.
+    ConfigError
+        If a droplet has no answer to the problem.
     """
     problem = problem_from(problem_keys)
     variation = variation_from(problem_keys)
 
     def surface_for(other: Problem) -> Surface:
+        if isinstance(liquid, Droplet):
+            return droplet_surface(liquid, other, variation)
         return surface_of(liquid.occupations, other, variation)
 
     surface = surface_for(problem)
@@ -174,11 +181,11 @@ def optimum_summary(found: Scan) -> dict[str, Any]:
     }
 
 
-def scan_summary(liquid: Liquid, problem_keys: Mapping[str, Any], found: Scan) -> dict[str, Any]:
+def scan_summary(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], found: Scan) -> dict[str, Any]:
     """The JSON object of ``scan``."""
     curve = found.curve
     return {
-        "state": state_summary(liquid),
+        "state": droplet_state_summary(liquid) if isinstance(liquid, Droplet) else state_summary(liquid),
         "problem": problem_summary(found.problem, problem_keys),
         "optimum": optimum_summary(found),
         "curve": [

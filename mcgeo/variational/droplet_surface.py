@@ -29,6 +29,7 @@ from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.landau_level import laguerre
 from mcgeo.problem.problem import Problem
+from mcgeo.variational.energy_surface import DirectSurface
 from mcgeo.variational.radial_rule import RadialRule, radial_rule
 
 Array = NDArray[np.float64]
@@ -122,11 +123,6 @@ class DropletInteraction:
         tail = 0.5 * w * t * 4.0 * n**2 / (math.pi * radius**3 * largest**2)
         return np.concatenate([rule.nodes, largest / t]), np.concatenate([weights, tail])
 
-    @property
-    def n_samples(self) -> int:
-        """Number of block samples."""
-        return len(self.occupations.pair_samples)
-
     def parts(self, problem: Problem, metric: UnimodularMetric) -> EnergyParts:
         """The three energies of every block sample."""
         pair_weights, charge_weights = self._weights(problem, metric)
@@ -168,16 +164,11 @@ class DropletInteraction:
 
 
 @dataclass(frozen=True, eq=False)
-class DropletSurface:
+class DropletSurface(DirectSurface):
     """E(g) of one droplet in a projected problem; see `mcgeo.variational.energy_surface.Surface`."""
 
     interaction: DropletInteraction
     problem: Problem
-
-    @property
-    def n_samples(self) -> int:
-        """Number of block samples."""
-        return self.interaction.n_samples
 
     def sample_energies(self, metric: UnimodularMetric) -> Array:
         """E(g) of every block sample, shape (n_samples,)."""
