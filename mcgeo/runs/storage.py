@@ -139,14 +139,3 @@ def as_liquid(result: Sampled, path: Path) -> Liquid:
     if not isinstance(result, Liquid):
         raise StorageError(f"{path} holds a droplet; this needs a liquid on the torus")
     return result
-
-
-def read_liquid(path: Path) -> Liquid:
-    """Read a result file that must hold a liquid on the torus.
-
-    Raises
-    ------
-    StorageError
-        As `read_result` and `as_liquid`.
-    """
-    return as_liquid(read_result(path), path)
