@@ -57,7 +57,7 @@ def test_a_state_is_all_that_is_needed(write):
             "variation": "projected",
             "level_mixing": None,
         },
-        "scan": {"stretch": {"from": 0.0, "to": 2.0, "points": 41}, "angle_degrees": None},
+        "scan": {"stretch": {"from": 0.0, "to": 2.0, "points": 41}, "angle_degrees": None, "road": "plane"},
     }
 
 
