@@ -9,10 +9,11 @@ from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import droplet_state, problem_from, schedule_from, torus_frame
 from mcgeo.runs.experiment import experiment_of
 
-# Seconds per pair factor and per wave and electron of one core, measured on a processor with 512-bit registers at
-# 2.3 GHz; an estimate within a factor of two elsewhere.
+# Seconds per pair factor, per wave and electron, and per pair measured in a droplet, of one core, measured on a processor
+# with 512-bit registers at 2.3 GHz; an estimate within a factor of two elsewhere.
 _SECONDS_PER_PAIR = 1.0e-9
 _SECONDS_PER_WAVE_AND_ELECTRON = 0.25e-9
+_SECONDS_PER_MEASURED_PAIR = 1.7e-9
 # Numbers per block and walker beside the waves and the trace: histograms.
 _KEPT_BESIDE_WAVES = 200
 
@@ -29,11 +30,11 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
     state = experiment.states[0]
     schedule = schedule_from(resolved, state)
     n, n_components = state.n_electrons, len(experiment.states)
-    surface, n_waves = _surface(resolved)
+    surface, n_waves, seconds_per_measurement = _surface(resolved)
     problem = problem_from(resolved["problem"])
     sweeps = schedule.sweeps_per_walker + 2 * schedule.equilibration
     per_walker = sweeps * n * (n - 1.0) * state.proposals_per_sweep * state.cost_per_pair * _SECONDS_PER_PAIR
-    per_walker += sweeps / schedule.sweeps_between * n * n_waves * _SECONDS_PER_WAVE_AND_ELECTRON
+    per_walker += sweeps / schedule.sweeps_between * seconds_per_measurement
     cores = min(schedule.threads, -(-schedule.n_walkers // LANES))
     kept = n_waves + _KEPT_BESIDE_WAVES + n_components * schedule.measurements_per_block
     return {
@@ -55,13 +56,15 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
     }
 
 
-def _surface(resolved: Mapping[str, Any]) -> tuple[dict[str, Any], int]:
-    """Where the electrons live, and the number of waves measured."""
+def _surface(resolved: Mapping[str, Any]) -> tuple[dict[str, Any], int, float]:
+    """Where the electrons live, the number of waves measured, and the seconds that a measurement takes."""
+    n = resolved["state"]["electrons"]
     if resolved["geometry"]["kind"] == "disk":
-        background = droplet_state(resolved).background
-        return {"droplet_radius": f"{background.radius:.5g} l_B in the state's metric"}, 0
+        words = f"{droplet_state(resolved).background.radius:.5g} l_B in the state's metric"
+        return {"droplet_radius": words}, 0, 0.5 * n * (n - 1.0) * _SECONDS_PER_MEASURED_PAIR
     frame = torus_frame(resolved)
     tau = frame.isotropic.tau
     n_waves = len(frame.waves(resolved["sampling"]["q_max"]).integers)
     words = f"side {frame.isotropic.side:.5g} l_B, tau {tau.real:.5g} {tau.imag:+.5g}i in the state's metric"
-    return {"flux_quanta": frame.lab.n_flux, "cell": words, "wavevectors": n_waves}, n_waves
+    found = {"flux_quanta": frame.lab.n_flux, "cell": words, "wavevectors": n_waves}
+    return found, n_waves, n * n_waves * _SECONDS_PER_WAVE_AND_ELECTRON
