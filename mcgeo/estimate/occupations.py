@@ -31,6 +31,7 @@ Array = NDArray[np.float64]
 _FIT_RANGE = 6.0
 _ERROR_FLOOR = 0.02
 _LARGEST_M = 45
+_LARGEST_M_TIMES_FILLING = 15.0
 # Weight of the sum rules against the data while the bounds in force are looked for; they hold exactly afterwards.
 _RULE_WEIGHT = 1e5
 
@@ -105,10 +106,15 @@ class PairOccupations:
 
 
 def largest_m(state: TrialState) -> int:
-    """Largest relative angular momentum fitted: its pair distance 2 sqrt(m) stays inside the cell, 45 at most."""
+    """Largest relative angular momentum fitted.
+
+    45, or 15/nu at low filling, where the correlations reach farther; but no pair distance 2 sqrt(m) beyond about 1.4
+    times what folding in the cell resolves: there the sum rules and the penalty decide.
+    """
     start = state.first_occupied
-    inside = int((state.frame.isotropic.largest_radius) ** 2 / 4.0)
-    m = min(_LARGEST_M, max(inside, start + 8))
+    resolved = (state.frame.isotropic.largest_radius) ** 2 / 4.0
+    wanted = max(_LARGEST_M, round(_LARGEST_M_TIMES_FILLING / float(state.filling)))
+    m = min(wanted, max(int(2.0 * resolved), start + 8))
     return m - (m - start) % 2
 
 

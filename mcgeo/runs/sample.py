@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import secrets
 import time
+from contextlib import suppress
 from pathlib import Path
 from typing import Any, NoReturn
 
@@ -16,7 +17,7 @@ from mcgeo.runs.experiment import experiment_of, result_class
 from mcgeo.runs.progress import Progress, say
 from mcgeo.runs.sampled import Blocks, Sampled
 from mcgeo.runs.signals import StopFlag, stop_on_signals
-from mcgeo.runs.storage import read_result, write_result
+from mcgeo.runs.storage import read_result, require_writable, write_result
 from mcgeo.sampling.blocks import BlockRecord, Interrupted
 from mcgeo.sampling.chain import equilibrated, next_block
 
@@ -31,7 +32,7 @@ def sample(config: Config, folder: Path, *, overwrite: bool = False, quiet: bool
     Raises
     ------
     StorageError
-        If the folder holds a liquid of another configuration and ``overwrite`` is not set.
+        If the folder cannot be written, or holds a liquid of another configuration and ``overwrite`` is not set.
     RunInterrupted
         On Ctrl-C or a request to terminate; whole blocks are in the file.
     """
@@ -48,7 +49,9 @@ def sample(config: Config, folder: Path, *, overwrite: bool = False, quiet: bool
             return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
     if keys["sampling"]["seed"] is None:
         keys["sampling"]["seed"] = secrets.randbits(63)
-    return _Run(keys, path, earlier, quiet).finish()
+    run = _Run(keys, path, earlier, quiet)
+    require_writable(folder)
+    return run.finish()
 
 
 def _require_same(path: Path, keys: dict[str, Any], earlier: Sampled) -> None:
@@ -111,8 +114,9 @@ class _Run:
                 "(kernels are compiled once, which takes some seconds)"
             )
         for state, schedule in zip(self._experiment.states, self._schedules, strict=True):
-            self._chains.append(equilibrated(state, schedule))
-            if stop.is_set():
+            try:
+                self._chains.append(equilibrated(state, schedule, stop))
+            except Interrupted:
                 self._give_up(stop, 0)
 
     def _one_block(self, stop: StopFlag) -> None:
@@ -131,6 +135,8 @@ class _Run:
             said = f"{blocks_done} whole blocks are in {self._path}; the same command goes on from there"
         else:
             said = "not one block was whole yet, nothing is kept"
+            with suppress(OSError):
+                self._path.parent.rmdir()
         raise RunInterrupted(f"interrupted: {said}", stop.signal_number)
 
     def _save(self, *, complete: bool) -> Sampled:

@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Callable
 from dataclasses import dataclass
 
-from mcgeo.sampling.blocks import BlockRecord, Measurement, merged
+from mcgeo.sampling.blocks import BlockRecord, Interrupted, Measurement, merged
 from mcgeo.sampling.tuning import tuned_step
 from mcgeo.sampling.walkers import WalkerArrays, arrays_of, for_each_group, groups_of, start_walkers
 from mcgeo.states.base import SampledState, WalkerGroup
@@ -56,23 +55,37 @@ class ChainState:
 
 
 _LEAST_TUNING_SWEEPS = 8
+# Between two looks at whether the run is to stop.
+_SWEEPS_PER_LOOK = 10
 
 
-def equilibrated(state: SampledState, schedule: Schedule) -> ChainState:
-    """Walkers in equilibrium and a frozen step."""
+def equilibrated(state: SampledState, schedule: Schedule, stop: threading.Event) -> ChainState:
+    """Walkers in equilibrium and a frozen step.
+
+    Raises
+    ------
+    Interrupted
+        When ``stop`` was set meanwhile.
+    """
     groups = groups_of(state, start_walkers(state, schedule.n_walkers, schedule.seed, schedule.component))
     first = schedule.step or min(state.first_step, state.largest_step)
     half = schedule.equilibration // 2
 
-    def advance(step: float, n_sweeps: int) -> Callable[[WalkerGroup], None]:
-        return lambda group: group.advance(step, n_sweeps)
+    def advance(step: float) -> None:
+        def run(group: WalkerGroup) -> None:
+            for done in range(0, half, _SWEEPS_PER_LOOK):
+                if stop.is_set():
+                    raise Interrupted
+                group.advance(step, min(_SWEEPS_PER_LOOK, half - done))
 
-    for_each_group(advance(first, half), groups, schedule.threads)
+        for_each_group(run, groups, schedule.threads)
+
+    advance(first)
     step = schedule.step
     if step is None:
         sweeps = max(_LEAST_TUNING_SWEEPS, half // 16)
         step, _ = tuned_step(state, groups, sweeps, schedule.threads)
-    for_each_group(advance(step, half), groups, schedule.threads)
+    advance(step)
     return ChainState(arrays_of(groups), step, 0)
 
 

@@ -55,7 +55,8 @@ class Sampled:
 
 def run(state: DropletState, seed: int, n_blocks: int, measurements: int = 200) -> Sampled:
     schedule = Schedule(32, n_blocks, measurements, state.sweeps_per_measurement, 400, None, seed, 1)
-    chain, stop = equilibrated(state, schedule), threading.Event()
+    stop = threading.Event()
+    chain = equilibrated(state, schedule, stop)
     measurement, records, positions = DropletMeasurement(state), [], []
     for _ in range(n_blocks):
         chain, record = next_block(state, measurement, schedule, chain, stop)

@@ -177,7 +177,7 @@ def energy_with_tables(**changes: float) -> Estimate:
     energy = torus_energy(frame, 8.0, Coulomb())
     measurement = torus_measurement(state, frame.waves(8.0), energy.weights)
     schedule = Schedule(32, 4, 250, 4, 400, None, 5, 1)
-    chain, means = equilibrated(state, schedule), []
+    chain, means = equilibrated(state, schedule, threading.Event()), []
     for _ in range(schedule.n_blocks):
         chain, record = next_block(state, measurement, schedule, chain, threading.Event())
         means.append(energy.of(record.means[STRUCTURE]))
