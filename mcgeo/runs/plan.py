@@ -9,7 +9,7 @@ from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import droplet_state, problem_from, schedule_from, torus_frame
 from mcgeo.runs.experiment import experiment_of
 
-# Seconds per pair factor, per wave and electron, and per pair measured in a droplet, of one core, measured on a processor
+# Seconds per pair factor, per wave and electron, and per pair measured in a droplet, of one core, on a processor
 # with 512-bit registers at 2.3 GHz; an estimate within a factor of two elsewhere.
 _SECONDS_PER_PAIR = 1.0e-9
 _SECONDS_PER_WAVE_AND_ELECTRON = 0.25e-9
