@@ -16,6 +16,7 @@ from mcgeo.runs.droplet_summary import droplet_summary
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sample_summary import sample_summary
 from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
+from mcgeo.runs.units import with_units
 
 CONVERGED_CODE, NOT_CONVERGED_CODE = 0, 3
 
@@ -49,10 +50,9 @@ def run_sample(arguments: argparse.Namespace) -> Answer:
     folder = arguments.out or default_folder(arguments.config)
     result = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
     if isinstance(result, Droplet):
-        summary = droplet_summary(result)
-        text = droplet_text(summary)
+        summary, words = droplet_summary(result), droplet_text
     else:
-        summary = sample_summary(as_liquid(result, folder))
-        text = sample_text(summary)
+        summary, words = sample_summary(as_liquid(result, folder)), sample_text
+    summary = with_units(summary, result.resolved)
     write_json(folder / "sample.json", summary)
-    return as_json(summary) if arguments.json else text, exit_code(summary)
+    return as_json(summary) if arguments.json else words(summary), exit_code(summary)

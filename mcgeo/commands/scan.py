@@ -22,6 +22,7 @@ from mcgeo.runs.scan import scan, scan_summary
 from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
 from mcgeo.runs.torus_road import compare_roads, torus_road
 from mcgeo.runs.torus_summary import comparison_summary, torus_summary
+from mcgeo.runs.units import with_units
 from mcgeo.variational.variation import PROJECTED
 
 _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
@@ -37,20 +38,19 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
     if arguments.compare:
         if config.problem.variation != PROJECTED:
             raise ConfigError(["--compare needs problem.variation: projected, the one problem that both roads share"])
-        summary = _on_both_roads(arguments, config, folder, keys)
-        text = comparison_text(summary)
+        summary, words = _on_both_roads(arguments, config, folder, keys), comparison_text
     elif config.scan.road == "torus":
         road = torus_road(config, folder / "torus", overwrite=arguments.overwrite, quiet=arguments.quiet)
-        summary = torus_summary(road, keys["problem"])
-        text = torus_text(summary)
+        summary, words = torus_summary(road, keys["problem"]), torus_text
     else:
         sampled = _sampled(arguments, config, folder)
         liquid = sampled if isinstance(sampled, Droplet) else as_liquid(sampled, folder)
         summary = scan_summary(liquid, keys["problem"], scan(liquid, keys["problem"], keys["scan"]))
-        text = scan_text(summary)
+        words = scan_text
+    summary = with_units(summary, keys)
     write_json(folder / "scan.json", summary)
     write_csv(folder / "curve.csv", _columns(summary["curve"]), _provenance(summary))
-    return as_json(summary) if arguments.json else text, exit_code(summary)
+    return as_json(summary) if arguments.json else words(summary), exit_code(summary)
 
 
 def _require_disk_problem(arguments: argparse.Namespace, keys: Mapping[str, Any]) -> None:

@@ -142,14 +142,21 @@ def estimate_pair(name: str, estimate: Estimate) -> dict[str, float]:
     return {name: estimate.value, f"{name}_error": estimate.error}
 
 
+def _interaction_name(problem: Problem) -> str:
+    if problem.tilt is None:
+        return problem.interaction.name
+    tilt = problem.tilt
+    return f"{problem.interaction.name}, field tilted by {math.degrees(tilt.angle):.3g} degrees, subband {tilt.subband}"
+
+
 def problem_summary(problem: Problem, keys: Mapping[str, Any]) -> dict[str, Any]:
     """``problem`` of the JSON output: its keys and the mass metric."""
     return {
         **without_contents(keys),
-        "interaction_name": problem.interaction.name,
+        "interaction_name": _interaction_name(problem),
         "mass_stretch": problem.mass_metric.stretch,
         "mass_angle_degrees": problem.mass_metric.angle_degrees,
-        "orbit_aspect_ratio": problem.mass_metric.aspect_ratio,
+        "orbit_aspect_ratio": problem.orbit.metric.aspect_ratio,
     }
 
 
