@@ -17,6 +17,7 @@ from mcgeo.errors import StorageError
 from mcgeo.estimate.pair_correlation import counted_pair_correlation, radial_pair_correlation
 from mcgeo.estimate.statistics import mean_estimate
 from mcgeo.estimate.structure_factor import shell_means
+from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.report import figures
 from mcgeo.report.figures import MeasuredShape
 from mcgeo.report.tables import map_table
@@ -30,6 +31,7 @@ from mcgeo.runs.scan import scan
 from mcgeo.runs.storage import as_liquid, read_result
 from mcgeo.runs.table_file import without_contents
 from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
+from mcgeo.variational.variation import PROJECTED
 
 Drawing = tuple[Axes, Mapping[str, Any]]
 
@@ -72,14 +74,19 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
 
 def _hole(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     found = scan(liquid, keys["problem"], keys["scan"])
-    image = hole_image(liquid.occupations, found.problem, found.minimum)
+    # Where the orbit varies, the map is that of its optimum.
+    orbit = UnimodularMetric(found.orbit_stretch.value, found.orbit_angle.value)
+    varied = found.variation.kind != PROJECTED
+    seen = found.problem.with_mass(orbit) if varied else found.problem
+    image = hole_image(liquid.occupations, seen, found.minimum)
     axes = figures.hole_map(
         image.x,
         image.y,
         image.g,
         contour_level=image.level,
         contour_radius=image.ellipse.radius if image.ellipse else 1.0,
-        mass_metric=MeasuredShape.exact(found.problem.mass_metric),
+        mass_metric=MeasuredShape(found.orbit_stretch, found.orbit_angle),
+        mass_label="orbit" if varied else "mass orbit",
         hole_metric=MeasuredShape(found.minimum.stretch, found.minimum.angle),
         fitted_metric=MeasuredShape(image.stretch, image.angle) if image.ellipse else None,
     )

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import logging
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -13,6 +14,9 @@ from numpy.typing import ArrayLike
 from mcgeo.report.atomic import write_whole
 from mcgeo.report.style import styled
 from mcgeo.report.tables import csv_bytes
+
+# The font library warns of the missing time stamps that make files reproducible.
+logging.getLogger("fontTools").setLevel(logging.ERROR)
 
 # Where each format keeps free text, and its time stamp; without the stamp the same figure gives the same bytes.
 _PROVENANCE_KEY = {"pdf": "Subject", "svg": "Description", "png": "Description"}

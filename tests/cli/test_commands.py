@@ -10,6 +10,7 @@ from pathlib import Path
 
 import pytest
 
+from mcgeo.cli import main
 from tests.cli.conftest import ROOT, SMALL, Answer, python_process
 
 Command = Callable[..., Answer]
@@ -216,3 +217,22 @@ def test_help_imports_no_numerical_library(arguments: list[str], tmp_path: Path)
     out, err = python_process(tmp_path, "-c", code).communicate(timeout=60)
     assert err == "0 []\n"
     assert "mcgeo" in out
+
+
+def test_units_of_a_sample_reach_the_results(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """GaAs at 10 T: l_B = 25.6556418 nm/sqrt(10), Coulomb energy 4.35090 meV sqrt(10) (CODATA 2022 constants)."""
+    config = tmp_path / "well.yaml"
+    config.write_text(
+        "state: {kind: laughlin, exponent: 3, electrons: 8}\n"
+        "sampling: {walkers: 8, sweeps: 400, blocks: 4, seed: 5, threads: 1}\n"
+        "material: {name: GaAs, field_tesla: 10.0}\n"
+    )
+    assert main(["scan", str(config), "--out", str(tmp_path / "out"), "--json", "-q"]) in (0, 3)
+    found = json.loads(capsys.readouterr().out)
+    units, best = found["units"], found["optimum"]
+    assert units["magnetic_length_nm"] == pytest.approx(25.6556418 / math.sqrt(10.0), rel=1e-8)
+    assert units["coulomb_energy_mev"] == pytest.approx(4.35090 * math.sqrt(10.0), rel=2e-6)
+    assert units["density_per_cm2"] == pytest.approx(2.41798924e10 * 10.0 / 3.0, rel=1e-8)
+    assert best["energy_mev"] == pytest.approx(best["energy"] * units["coulomb_energy_mev"], rel=1e-12)
+    per_area = units["coulomb_energy_mev"] * units["density_per_cm2"] * 1e-14
+    assert best["stiffness_mev_per_nm2"][0][0] == pytest.approx(best["stiffness"][0][0] * per_area, rel=1e-8)
