@@ -43,8 +43,20 @@ def _health_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
         ("acceptance", f"{keys['acceptance']:.3f}"),
         ("autocorrelation time", f"{keys['autocorrelation_time']:.1f} sweeps"),
         ("independent energies", f"{keys['effective_samples']:.3g}"),
+        *_control_rows(keys),
         ("verdict on the run", _HEALTH[keys["verdict"]]),
     ]
+
+
+def _control_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
+    if "controls" not in keys:
+        return []
+    said = {
+        "used": f"used; variance of the energy {keys['variance_reduction']:.1f} times smaller",
+        "few_blocks": "not used: too few blocks; raise sampling.blocks or sampling.walkers",
+        "not_zero": "not used: their mean is not zero, walkers are not in equilibrium; raise sampling.equilibration",
+    }
+    return [("control variates", said[keys["controls"]])]
 
 
 def _unit_rows(summary: Mapping[str, Any]) -> list[tuple[str, str]]:

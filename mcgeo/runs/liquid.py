@@ -9,14 +9,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.estimate.conjugate import conjugate_occupations, conjugate_structure
+from mcgeo.estimate.control_variates import Cleared, cleared, control_z
 from mcgeo.estimate.occupations import PairOccupations, fit_occupations
 from mcgeo.estimate.statistics import Estimate, mean_estimate
 from mcgeo.estimate.torus_energy import torus_energy
 from mcgeo.geometry.frame import TorusFrame
-from mcgeo.problem.interaction import Interaction
+from mcgeo.problem.interaction import Coulomb, Interaction
 from mcgeo.runs.build import torus_frame, torus_states
 from mcgeo.runs.sampled import Sampled
-from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS, STRUCTURE, configurations_counted
+from mcgeo.sampling.measurement import BIN_WIDTH, CONTROLS, PAIRS, STRUCTURE, configurations_counted
 from mcgeo.states.base import TrialState
 
 Array = NDArray[np.float64]
@@ -85,8 +86,38 @@ class Liquid(Sampled):
         return self.frame.lab.n_flux - sampled if self.is_conjugate else sampled
 
     @cached_property
+    def control_variates(self) -> Cleared | None:
+        """Block means of S(q) after regression on the controls, if the state has any; see `Cleared`."""
+        controls = self.blocks.means.get(CONTROLS)
+        if controls is None:
+            return None
+        return cleared(self.blocks.means[STRUCTURE], controls, control_z(self.independent(controls)))
+
+    @cached_property
+    def variance_reduction(self) -> float:
+        """Variance of the Coulomb energy's block means without controls over that with them; 1 where none are used."""
+        found = self.control_variates
+        if found is None:
+            return 1.0
+        energy = torus_energy(self.frame, self.q_max, Coulomb())
+        return float(energy.of(self.blocks.means[STRUCTURE]).var() / energy.of(found.blocks).var())
+
+    @property
+    def control_summary(self) -> dict[str, Any]:
+        """Whether the controls were used, their means in standard errors, and what the energy's variance gained."""
+        found = self.control_variates
+        if found is None:
+            return {}
+        return {
+            "controls": found.verdict,
+            "control_z": found.z.tolist(),
+            "variance_reduction": self.variance_reduction,
+        }
+
+    @cached_property
     def _sampled_structure(self) -> Array:
-        return self.independent(self.blocks.means[STRUCTURE])
+        found = self.control_variates
+        return self.independent(self.blocks.means[STRUCTURE] if found is None else found.blocks)
 
     @cached_property
     def structure_samples(self) -> Array:

@@ -29,4 +29,5 @@ def diagnostics_summary(result: Sampled) -> dict[str, Any]:
         "r_hat": health.r_hat,
         "drift": float(result.blocks.drift.max()),
         "verdict": health.verdict if result.complete else "short",
+        **result.control_summary,
     }

@@ -140,6 +140,11 @@ class Sampled(ABC):
         )
 
     @property
+    def control_summary(self) -> Mapping[str, Any]:
+        """What the diagnostics say of control variates; nothing where none were measured."""
+        return {}
+
+    @property
     def moves(self) -> int:
         """Proposals of the whole production so far."""
         schedule, state = self.schedule, self.sampled_states[0]

@@ -1,4 +1,4 @@
-"""What is measured on the torus while walkers run: |rho_q|^2, pair distances, and one scalar trace."""
+"""What is measured on the torus while walkers run: |rho_q|^2, pair distances, control variates, one scalar trace."""
 
 from __future__ import annotations
 
@@ -11,13 +11,14 @@ from numpy.typing import NDArray
 from mcgeo.geometry.cell import Waves
 from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.pair_histogram import add_pair_counts
+from mcgeo.kernels.stein import POWERS, SteinTables, add_controls, stein_tables
 from mcgeo.kernels.structure import WaveTables, add_structure_factor, wave_sums, wave_tables
 from mcgeo.sampling.blocks import BlockRecord, Interrupted
 from mcgeo.states.base import TrialState, WalkerGroup
 
 Array = NDArray[np.float64]
 
-STRUCTURE, PAIRS = "structure", "pairs"
+STRUCTURE, CONTROLS, PAIRS = "structure", "controls", "pairs"
 BIN_WIDTH = 0.1
 # Pair distances are a second look at what |rho_q|^2 already holds; they need not be taken every time.
 _MEASUREMENTS_PER_HISTOGRAM = 4
@@ -37,13 +38,15 @@ class TorusMeasurement:
     tables: WaveTables
     trace_weights: Array
     n_bins: int
+    stein: SteinTables
 
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
     ) -> BlockRecord:
         """Run one block of one group; see `mcgeo.sampling.blocks.Measurement`.
 
-        Means: ``structure``, S(q) = |rho_q|^2 / N, shape (n_walkers, n_waves). Counts: ``pairs``, pair distances in
+        Means: ``structure``, S(q) = |rho_q|^2 / N, shape (n_walkers, n_waves); ``controls``, of mean zero, at the same
+        configurations where the state has forces, shape (n_walkers, n_controls). Counts: ``pairs``, pair distances in
         bins of `BIN_WIDTH` l_B, summed over `configurations_counted`, shape (n_walkers, n_bins). Trace: the weighted
         sum of S(q).
 
@@ -56,7 +59,9 @@ class TorusMeasurement:
         cell = self.state.frame.isotropic
         sums = wave_sums(self.tables, self.trace_weights / n, n)
         counts = np.zeros((self.n_bins, LANES), dtype=np.int64)
+        controls = np.zeros((len(POWERS), LANES))
         trace = np.empty((n_measurements, LANES))
+        forces = None
         group.refresh()
         group.accepted[:] = 0.0
         for k in range(n_measurements):
@@ -66,13 +71,19 @@ class TorusMeasurement:
             sums.scalar[:] = 0.0
             add_structure_factor(self.tables, group.a, group.b, sums)
             trace[k] = sums.scalar[0]
+            forces = group.forces()
+            if forces is not None:
+                add_controls(self.stein, group.a, group.b, forces, controls)
             if k % _MEASUREMENTS_PER_HISTOGRAM == 0:
                 add_pair_counts(
                     group.a, group.b, cell.tau.real, cell.tau.imag, cell.side, BIN_WIDTH, counts
                 )
         proposals = n_measurements * sweeps_between * n * self.state.proposals_per_sweep
+        means = {STRUCTURE: sums.total.T / (n * n_measurements)}
+        if forces is not None:
+            means[CONTROLS] = controls[: self.stein.n_controls].T / n_measurements
         return BlockRecord(
-            {STRUCTURE: sums.total.T / (n * n_measurements)},
+            means,
             {PAIRS: counts.T.copy()},
             trace.T.copy(),
             group.accepted[0] / proposals,
@@ -85,4 +96,5 @@ def torus_measurement(state: TrialState, waves: Waves, trace_weights: Array) -> 
     cell = state.frame.isotropic
     tables = wave_tables(waves.integers, cell.tau.real)
     n_bins = int(cell.largest_radius / BIN_WIDTH)
-    return TorusMeasurement(state, waves, tables, np.asarray(trace_weights, dtype=float), n_bins)
+    stein = stein_tables(cell.tau, cell.side, state.n_electrons)
+    return TorusMeasurement(state, waves, tables, np.asarray(trace_weights, dtype=float), n_bins, stein)
