@@ -11,7 +11,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.interpolate import CubicSpline, RectBivariateSpline
+from scipy.interpolate import BSpline, RectBivariateSpline, make_interp_spline
 
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.pair_potential import IsotropicPotential, PairPotential
@@ -19,17 +19,18 @@ from mcgeo.problem.table_text import Table, parse_table
 
 Array = NDArray[np.float64]
 
-# In steps of the grid: nearer to the origin the spline feels its edge; points that a cubic continues inwards.
-_INNER = 2.0
-_RAY = np.array([1.0, 1.5, 2.0, 2.5])
+# Points of a grid, on each of four lines through the origin, that tell V(q) next to it.
+_ON_LINE = 5
+# A tail 1/|q| below this part of the largest |q| V is none.
+_LEAST_TAIL = 0.02
 
 
 @dataclass(frozen=True, eq=False)
 class IsotropicTable(IsotropicPotential):
     """V(q) from a table of q and V.
 
-    A cubic spline without prescribed slopes joins the values of q V. Below the first q it continues as the cubic
-    through the first four points, so that V = c/q + c' + ... there. Beyond the last q it continues as a + b/q + c/q^2
+    A quintic spline joins the values of q V. Below the first q its first piece continues, a polynomial, so that V = c/q
+    + c' + ... there. Beyond the last q it continues as a + b/q + c/q^2
     with the value, slope and curvature of the end; the orbit's form factor leaves nothing of that in energies.
 
     Parameters
@@ -42,12 +43,12 @@ class IsotropicTable(IsotropicPotential):
 
     table: Table
     label: str
-    _spline: CubicSpline = field(init=False, repr=False)
+    _spline: BSpline = field(init=False, repr=False)
     _tail: Array = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
         q = np.array(self.table.axes[0])
-        spline = CubicSpline(q, q * np.array(self.table.values[0]) / (2.0 * math.pi))
+        spline = make_interp_spline(q, q * np.array(self.table.values[0]) / (2.0 * math.pi), k=5)
         last = q[-1]
         # Polynomial in last/q with the three derivatives: rows are its value, q d/dq, q^2 d^2/dq^2 at the end.
         conditions = np.array([[1.0, 1.0, 1.0], [0.0, -1.0, -2.0], [0.0, 2.0, 6.0]])
@@ -72,10 +73,11 @@ class IsotropicTable(IsotropicPotential):
 class GridTable(PairPotential):
     """V(q) from a table of q_x, q_y and V on a rectangular grid.
 
-    A bicubic spline joins the values of |q|_h V, h the metric in which V is most nearly isotropic next to the origin:
-    a dielectric's V is then smooth there but for the edge of |q|_h. Within two steps of the origin V continues along
-    every direction as the cubic in |q|_h through four points farther out. Beyond the grid |q|_h V keeps
-    the value at the edge in the same direction; the orbit's form factor leaves little of that in energies.
+    Next to the origin |q| V = a(u) + c(u) |q| + ..., u the direction of q, has an edge, or jumps. a and c are taken
+    from the polynomials through the first five points on the two axes and the two diagonals. The metric h with |q|_h
+    ~ |q|/a(u) takes the jump away, as that of an anisotropic dielectric; the edge (q.C.q)/|q| e^(-q^2), C fitted to
+    c(u), is subtracted; a bicubic spline joins what is left of |q|_h V. Beyond the grid |q|_h V keeps the value at the
+    edge of the grid in the same direction; the orbit's form factor leaves little of that in energies.
 
     Parameters
     ----------
@@ -88,23 +90,28 @@ class GridTable(PairPotential):
     table: Table
     label: str
     _metric: UnimodularMetric = field(init=False, repr=False)
+    _edge: Array = field(init=False, repr=False)
     _spline: RectBivariateSpline = field(init=False, repr=False)
-    _inner: float = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
         x, y = (np.array(axis) for axis in self.table.axes)
         points = np.stack(np.meshgrid(x, y, indexing="ij"), axis=-1)
         values = np.array(self.table.values)
-        step = max(x[1] - x[0], y[1] - y[0])
-        metric = _innermost_metric(points, values, step)
-        reduced = np.sqrt(metric.wavevector_norm_sq(points)) * values
-        # At the origin |q| V jumps or has an edge; the inner cubic replaces what the spline makes of it.
-        near = np.hypot(points[..., 0], points[..., 1])
-        ring = [reduced[(near > 0.5 * k * step) & (near < (k + 0.45) * step)].mean() for k in (1, 2)]
-        reduced[near == 0.0] = 2.0 * ring[0] - ring[1]
+        directions, tails, slopes = _at_origin(points, values)
+        largest = np.max(np.hypot(points[..., 0], points[..., 1]) * values)
+        metric = _tail_metric(directions, tails, _LEAST_TAIL * largest)
+        norms = np.sqrt(metric.wavevector_norm_sq(directions))
         object.__setattr__(self, "_metric", metric)
+        object.__setattr__(self, "_edge", _form(directions, slopes * norms))
+        reduced = np.sqrt(metric.wavevector_norm_sq(points)) * values - self._edge_part(points)
+        reduced[len(x) // 2, len(y) // 2] = np.mean(tails * norms)
         object.__setattr__(self, "_spline", RectBivariateSpline(x, y, reduced))
-        object.__setattr__(self, "_inner", _INNER * step * math.exp(0.5 * metric.stretch))
+
+    def _edge_part(self, wavevectors: Array) -> Array:
+        """(q.C.q)/|q| e^(-q^2)."""
+        norm_sq = np.sum(wavevectors**2, axis=-1)
+        form = np.einsum("...a,ab,...b->...", wavevectors, self._edge, wavevectors)
+        return np.asarray(form * np.exp(-norm_sq) / np.sqrt(np.where(norm_sq > 0.0, norm_sq, 1.0)))
 
     @property
     def name(self) -> str:
@@ -119,45 +126,43 @@ class GridTable(PairPotential):
     def potential(self, wavevectors: Array) -> Array:
         """Interpolated V(q)."""
         q = np.asarray(wavevectors, dtype=float)
-        norm = np.sqrt(self._metric.wavevector_norm_sq(q))
-        scale = np.maximum(norm, self._inner) / norm
-        reduced = self._on_grid(q * scale[..., None])
-        inside = norm < self._inner
-        if np.any(inside):
-            outwards = q[inside] * (self._inner / norm[inside])[:, None]
-            samples = self._on_grid(_RAY[:, None, None] * outwards)
-            reduced[inside] = np.sum(_lagrange_weights(norm[inside] / self._inner) * samples, axis=0)
-        return np.asarray(reduced / norm)
-
-    def _on_grid(self, wavevectors: Array) -> Array:
-        """|q|_h V of the spline, at the edge in the same direction for points beyond it."""
         limits = np.array([axis[-1] for axis in self.table.axes])
-        beyond = np.maximum(1.0, np.max(np.abs(wavevectors) / limits, axis=-1))
-        inside = wavevectors / beyond[..., None]
-        return np.asarray(self._spline(inside[..., 0], inside[..., 1], grid=False))
+        beyond = np.maximum(1.0, np.max(np.abs(q) / limits, axis=-1))
+        inside = q / beyond[..., None]
+        reduced = self._spline(inside[..., 0], inside[..., 1], grid=False) + self._edge_part(inside)
+        return np.asarray(reduced / np.sqrt(self._metric.wavevector_norm_sq(q)))
 
 
-def _innermost_metric(points: Array, values: Array, step: float) -> UnimodularMetric:
-    """The metric of 1/V^2 = q.G.q fitted to the points next to the origin; isotropic if that is no metric."""
-    near = np.hypot(points[..., 0], points[..., 1])
-    ring = (near > 0.0) & (near < 1.5 * step)
-    if not np.all(values[ring] > 0.0):
+def _at_origin(points: Array, values: Array) -> tuple[Array, Array, Array]:
+    """Directions (4, 2) of axes and diagonals, and |q| V and its derivative by |q| at the origin along each."""
+    middle = np.array(values.shape) // 2
+    steps = np.arange(1, _ON_LINE + 1)[:, None]
+    directions, tails, slopes = [], [], []
+    for line in ((1, 0), (0, 1), (1, 1), (1, -1)):
+        index = tuple((middle + steps * np.array(line)).T)
+        length = np.hypot(*points[index].T)
+        polynomial = np.linalg.solve(np.vander(length, increasing=True), length * values[index])
+        directions.append(points[index][0] / length[0])
+        tails.append(polynomial[0])
+        slopes.append(polynomial[1])
+    return np.array(directions), np.array(tails), np.array(slopes)
+
+
+def _form(directions: Array, values: Array) -> Array:
+    """The symmetric matrix M of least squares with u.M.u = values, shape (2, 2)."""
+    x, y = directions.T
+    xx, xy, yy = np.linalg.lstsq(np.stack([x * x, 2.0 * x * y, y * y], axis=-1), values, rcond=None)[0]
+    return np.array([[xx, xy], [xy, yy]])
+
+
+def _tail_metric(directions: Array, tails: Array, least: float) -> UnimodularMetric:
+    """The metric h of V = const/|q|_h at small q, 1/tail^2 being a form of q; isotropic if there is no such tail."""
+    if np.any(tails < least):
         return ISOTROPIC
-    x, y = points[ring].T
-    form = np.stack([x**2, 2.0 * x * y, y**2], axis=-1) * values[ring, None] ** 2
-    xx, xy, yy = np.linalg.lstsq(form, np.ones(len(form)), rcond=None)[0]
-    if xx <= 0.0 or xx * yy - xy**2 <= 0.0:
+    form = _form(directions, tails**-2.0)
+    if not (form[0, 0] > 0.0 and np.linalg.det(form) > 0.0):
         return ISOTROPIC
-    return UnimodularMetric.from_matrix([[xx, xy], [xy, yy]]).inverse
-
-
-def _lagrange_weights(position: Array) -> Array:
-    """Weights of the four points of a ray, shape (4, n), at fractions of the inner radius."""
-    weights = np.ones((len(_RAY), len(position)))
-    for j, own in enumerate(_RAY):
-        for other in np.delete(_RAY, j):
-            weights[j] *= (position - other) / (own - other)
-    return weights
+    return UnimodularMetric.from_matrix(form).inverse
 
 
 def tabulated(file: Mapping[str, str]) -> PairPotential:

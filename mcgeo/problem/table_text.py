@@ -8,7 +8,8 @@ are comments.
   holds -q with every q and reaches 8 at least. V at the origin is not used and may be ``inf`` or ``nan``.
 
 Either must be smooth: no value of q V may depart by more than 1 % of the largest from the cubic through its four
-neighbours.
+neighbours. And it must resolve V at small q: the polynomials through the first four and five points have to agree on
+q V at q = 0 within 1 % of the largest.
 """
 
 from __future__ import annotations
@@ -22,9 +23,12 @@ from mcgeo.errors import McgeoError
 
 HEADERS = ("q [1/l_B], V [e^2 l_B/(4 pi eps)]", "q_x [1/l_B], q_y [1/l_B], V [e^2 l_B/(4 pi eps)]")
 
+_LEAST_ROWS = 8
 _LARGEST_FIRST, _LEAST_LAST, _LARGEST_STEP = 0.25, 10.0, 0.5
 _LARGEST_GRID_STEP, _LEAST_GRID_END = 0.25, 8.0
 _ROUGHNESS = 0.01
+# So many steps from the origin of a grid the jump or edge of |q| V there is felt no more.
+_EDGE_STEPS = 10.0
 _SYMMETRY = 1e-6
 _ROUNDING = 1e-6
 
@@ -90,8 +94,8 @@ def _numbers(number: int, line: str, n_columns: int) -> Row:
 
 
 def _isotropic(rows: list[tuple[int, Row]]) -> Table:
-    if len(rows) < 5:
-        raise TableError(f"a table of V(q) needs five rows at least, not {len(rows)}")
+    if len(rows) < _LEAST_ROWS:
+        raise TableError(f"a table of V(q) needs {_LEAST_ROWS} rows at least, not {len(rows)}")
     q = [row[0] for _, row in rows]
     for (_, (before, _)), (number, (after, _)) in pairwise(rows):
         if after <= before:
@@ -109,7 +113,26 @@ def _isotropic(rows: list[tuple[int, Row]]) -> Table:
     worst = max(range(len(q)), key=excess.__getitem__)
     if excess[worst] > _ROUGHNESS * max(map(abs, reduced)):
         raise TableError(f"line {rows[worst][0]}: V is not smooth here: it departs from the rows around it; correct it")
+    _check_small_q(q, reduced, max(map(abs, reduced)))
     return Table((tuple(q),), (tuple(row[1] for _, row in rows),))
+
+
+def _check_small_q(lengths: list[float], reduced: list[float], scale: float) -> None:
+    four, five = (_value_at(0.0, lengths[:n], reduced[:n]) for n in (4, 5))
+    if abs(five - four) > _ROUGHNESS * scale:
+        raise TableError("V changes too much between the points of smallest q to be continued to q = 0; add smaller q")
+
+
+def _value_at(x: float, nodes: list[float], values: list[float]) -> float:
+    """Polynomial through the nodes, at x."""
+    total = 0.0
+    for j, value in enumerate(values):
+        weight = 1.0
+        for k, node in enumerate(nodes):
+            if k != j:
+                weight *= (x - node) / (nodes[j] - node)
+        total += weight * value
+    return total
 
 
 def _roughness(x: list[float], y: list[float]) -> list[float]:
@@ -117,14 +140,7 @@ def _roughness(x: list[float], y: list[float]) -> list[float]:
     found = [0.0] * len(x)
     for i in range(2, len(x) - 2):
         others = (i - 2, i - 1, i + 1, i + 2)
-        cubic = 0.0
-        for j in others:
-            weight = 1.0
-            for k in others:
-                if k != j:
-                    weight *= (x[i] - x[k]) / (x[j] - x[k])
-            cubic += weight * y[j]
-        found[i] = abs(y[i] - cubic)
+        found[i] = abs(y[i] - _value_at(x[i], [x[j] for j in others], [y[j] for j in others]))
     return found
 
 
@@ -143,6 +159,9 @@ def _grid(rows: list[tuple[int, Row]]) -> Table:
         for j, value in enumerate(row):
             if abs(value - reduced[-1 - i][-1 - j]) > _SYMMETRY * scale:
                 raise TableError(f"line {place[x[i], y[j]][0]}: V(-q) must be V(q), as that of any two particles is")
+    middle = len(x) // 2, len(y) // 2
+    _check_small_q(list(x[middle[0] + 1 :]), [row[middle[1]] for row in reduced[middle[0] + 1 :]], scale)
+    _check_small_q(list(y[middle[1] + 1 :]), reduced[middle[0]][middle[1] + 1 :], scale)
     _check_grid_smoothness(x, y, reduced, scale, {point: n for point, (n, _) in place.items()})
     return Table((x, y), tuple(tuple(place[qx, qy][1] for qy in y) for qx in x))
 
@@ -166,7 +185,7 @@ def _check_grid_smoothness(
     for along, across, transposed in ((y, x, False), (x, y, True)):
         for i, fixed in enumerate(across):
             values = [row[i] for row in reduced] if transposed else reduced[i]
-            far = 4.0 * max(along[-1] - along[-2], across[-1] - across[-2])
+            far = _EDGE_STEPS * max(along[-1] - along[-2], across[-1] - across[-2])
             for j, excess in enumerate(_roughness(list(along), values)):
                 if excess > _ROUGHNESS * scale and math.hypot(fixed, along[j]) > far:
                     point = (along[j], fixed) if transposed else (fixed, along[j])

@@ -11,7 +11,7 @@ from mcgeo.runs.config_types import Group, ListOf, Positive, Real, rule
 from mcgeo.runs.state_config import MetricConfig
 from mcgeo.runs.table_file import ReadTable, TableFile
 
-LARGEST_MOMENTUM = 30
+LARGEST_MOMENTUM = 15
 
 NonNegative = Annotated[Real, Field(ge=0.0)]
 

@@ -78,7 +78,7 @@ plain_interactions = st.one_of(
     st.fixed_dictionaries(
         {
             "kind": st.just("pseudopotentials"),
-            "values": st.dictionaries(st.integers(0, 30).map(str), st.floats(-9, 9), min_size=1),
+            "values": st.dictionaries(st.integers(0, 15).map(str), st.floats(-9, 9), min_size=1),
         },
         optional={"metric": metrics},
     ),
