@@ -5,20 +5,13 @@ from __future__ import annotations
 from typing import Any
 
 from mcgeo.runs.droplet import Droplet
-from mcgeo.runs.run_summary import diagnostics_summary, run_summary
+from mcgeo.runs.run_summary import diagnostics_summary, run_summary, state_summary
 from mcgeo.states.droplet import mean_square_radius
 
 
 def droplet_state_summary(droplet: Droplet) -> dict[str, Any]:
     """``state`` of the JSON output."""
-    state = droplet.state
-    return {
-        **droplet.resolved["state"],
-        "filling": str(state.filling),
-        "statistics": state.statistics,
-        "label": state.label,
-        "liquid_electrons": state.n_electrons,
-    }
+    return state_summary(droplet, droplet.state, droplet.state.n_electrons)
 
 
 def droplet_summary(droplet: Droplet) -> dict[str, Any]:

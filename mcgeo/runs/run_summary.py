@@ -2,9 +2,37 @@
 
 from __future__ import annotations
 
-from typing import Any
+from fractions import Fraction
+from typing import Any, Protocol
 
 from mcgeo.runs.sampled import Sampled
+
+
+class Described(Protocol):
+    """What says which liquid a result is of."""
+
+    @property
+    def label(self) -> str:
+        """Words for reports."""
+
+    @property
+    def filling(self) -> Fraction:
+        """Electrons per flux quantum."""
+
+    @property
+    def statistics(self) -> str:
+        """``fermions`` or ``bosons``."""
+
+
+def state_summary(result: Sampled, found: Described, n_electrons: int) -> dict[str, Any]:
+    """``state`` of the JSON output: its keys, with the filling of what was asked for as text."""
+    return {
+        **result.resolved["state"],
+        "filling": str(found.filling),
+        "statistics": found.statistics,
+        "label": found.label,
+        "liquid_electrons": n_electrons,
+    }
 
 
 def run_summary(result: Sampled) -> dict[str, Any]:

@@ -9,20 +9,13 @@ from mcgeo.problem.landau_level import LOWEST
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import interaction_from
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.run_summary import diagnostics_summary, run_summary
+from mcgeo.runs.run_summary import diagnostics_summary, run_summary, state_summary
 from mcgeo.variational.energy_surface import EnergySurface
 
 
-def state_summary(liquid: Liquid) -> dict[str, Any]:
-    """``state`` of the JSON output: its keys, with the filling of the liquid asked for as text."""
-    found = liquid.occupations
-    return {
-        **liquid.resolved["state"],
-        "filling": str(found.filling),
-        "statistics": found.statistics,
-        "label": found.label,
-        "liquid_electrons": liquid.n_electrons,
-    }
+def liquid_state_summary(liquid: Liquid) -> dict[str, Any]:
+    """``state`` of the JSON output."""
+    return state_summary(liquid, liquid.occupations, liquid.n_electrons)
 
 
 def sample_summary(liquid: Liquid) -> dict[str, Any]:
@@ -39,7 +32,7 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
     plane = mean_estimate(surface.sample_energies(metric))
     filling = float(occupations.filling)
     return {
-        "state": state_summary(liquid),
+        "state": liquid_state_summary(liquid),
         "interaction": interaction.name,
         "energy_torus": liquid.torus_energy(interaction).as_dict(),
         "energy_plane": plane.as_dict(),

@@ -19,7 +19,7 @@ from mcgeo.runs.droplet_scan import droplet_surface
 from mcgeo.runs.droplet_summary import droplet_state_summary
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.run_summary import diagnostics_summary
-from mcgeo.runs.sample_summary import state_summary
+from mcgeo.runs.sample_summary import liquid_state_summary
 from mcgeo.runs.table_file import without_contents
 from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
@@ -192,7 +192,7 @@ def scan_summary(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], foun
     """The JSON object of ``scan``."""
     curve = found.curve
     return {
-        "state": droplet_state_summary(liquid) if isinstance(liquid, Droplet) else state_summary(liquid),
+        "state": droplet_state_summary(liquid) if isinstance(liquid, Droplet) else liquid_state_summary(liquid),
         "problem": problem_summary(found.problem, problem_keys),
         "optimum": optimum_summary(found),
         "curve": [

@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from mcgeo.runs.run_summary import diagnostics_summary
-from mcgeo.runs.sample_summary import state_summary
+from mcgeo.runs.sample_summary import liquid_state_summary
 from mcgeo.runs.scan import estimate_pair, problem_summary
 from mcgeo.runs.torus_road import Comparison, TorusRoad
 
@@ -21,7 +21,7 @@ def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str,
     aspect = math.exp(best.position.value)
     worst = min(road.points, key=lambda point: point.liquid.diagnostics.effective_samples)
     return {
-        "state": {**state_summary(worst.liquid), "metric": None},
+        "state": {**liquid_state_summary(worst.liquid), "metric": None},
         "road": "torus",
         "problem": problem_summary(road.problem, problem_keys),
         "optimum": {
