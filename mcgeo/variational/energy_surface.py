@@ -31,19 +31,34 @@ from mcgeo.variational.derivatives import LocalExpansion, expansion
 
 Array = NDArray[np.float64]
 
-_RADIAL_NODES = 200
+_LEAST_NODES = 200
+_NODES_PER_UNIT = 12.0
+# Below this |k| the nodes crowd towards 0, as far as exp(-pi sinh 5.3) = 1e-137; the last one is 1e-16 short of 1.
+_INNER = 1.0
+_INNER_RANGE = (-5.3, 3.2)
+_INNER_NODES = 96
 # delta(k) of L_m ends beyond its turning point 2 sqrt(m).
 _BEYOND_TURNING_POINT = 4.0
 _LARGEST_DISTANCE = 4.0
 
 
-def _radial_rule(largest: float, n_nodes: int) -> tuple[Array, Array]:
-    nodes, weights = np.polynomial.legendre.leggauss(n_nodes)
-    return 0.5 * largest * (nodes + 1.0), 0.5 * largest * weights
+def _radial_rule(largest: float) -> tuple[Array, Array]:
+    """Nodes and weights on (0, ``largest``), largest > 1.
+
+    Gauss-Legendre beyond 1 and the double-exponential rule below, which any power of k and any scale of V(q) at small q
+    suit (H. Takahasi and M. Mori, Publ. RIMS Kyoto Univ. 9, 721 (1974)).
+    """
+    x, weights = np.polynomial.legendre.leggauss(max(_LEAST_NODES, math.ceil(_NODES_PER_UNIT * largest)))
+    half = 0.5 * (largest - _INNER)
+    t, step = np.linspace(*_INNER_RANGE, _INNER_NODES, retstep=True)
+    inner = _INNER / (1.0 + np.exp(-math.pi * np.sinh(t)))
+    # d/dt of 1/(1 + e^-u) is 1/(2 + 2 cosh u) du/dt.
+    inner_weights = _INNER * step * math.pi * np.cosh(t) / (2.0 + 2.0 * np.cosh(math.pi * np.sinh(t)))
+    return np.concatenate([inner, _INNER + half * (x + 1.0)]), np.concatenate([inner_weights, half * weights])
 
 
 def _n_angles(distance: float) -> int:
-    """Equidistant angles on half a turn that resolve exp(-k^2 ...) between two metrics ``distance`` apart."""
+    """Equidistant angles on half a turn that resolve one metric's norm, or exp(-k^2 ...), in another's frame."""
     return 16 * math.ceil(3.0 * math.exp(0.75 * distance))
 
 
@@ -61,7 +76,8 @@ def angular_mean(problem: Problem, metric: UnimodularMetric, radii: Array) -> Ar
             f"hole and orbit metric are {distance:.3g} apart (relative aspect ratio {math.exp(distance):.3g}); "
             f"at most {_LARGEST_DISTANCE:g} works"
         )
-    phi = math.pi * (np.arange(_n_angles(distance)) + 0.5) / _n_angles(distance)
+    n_angles = _n_angles(max(distance, *(metric.distance(other) for other in problem.interaction.metrics)))
+    phi = math.pi * (np.arange(n_angles) + 0.5) / n_angles
     directions = np.stack([np.cos(phi), np.sin(phi)], axis=-1) @ metric.linear_map.T
     return np.asarray(problem.effective_potential(radii[:, None, None] * directions).mean(axis=1))
 
@@ -125,7 +141,7 @@ class InteractionEnergy:
 
     def __post_init__(self) -> None:
         largest = 2.0 * math.sqrt(float(self.occupations.m[-1])) + _BEYOND_TURNING_POINT
-        radii, weights = _radial_rule(largest, _RADIAL_NODES)
+        radii, weights = _radial_rule(largest)
         samples = self.occupations.samples @ self.occupations.basis(radii)
         object.__setattr__(self, "_radii", radii)
         object.__setattr__(self, "_measure", weights * radii / (4.0 * math.pi))
@@ -134,7 +150,7 @@ class InteractionEnergy:
 
     def background(self, problem: Problem) -> float:
         """(e nu/2) int d^2q/(2 pi)^2 v(q): what does not depend on the hole."""
-        radii, weights = _radial_rule(problem.reach, _RADIAL_NODES)
+        radii, weights = _radial_rule(problem.reach)
         mean = angular_mean(problem, problem.orbit.metric, radii)
         factor = self.occupations.statistics_sign * float(self.occupations.filling)
         return float(factor * np.sum(weights * radii * mean) / (4.0 * math.pi))

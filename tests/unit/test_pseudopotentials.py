@@ -76,7 +76,7 @@ def test_gaussian_in_the_lowest_level(parity, width):
     momenta = np.arange(parity, 16, 2)
     p = 1.0 + width**2 / 2.0
     found = pair_energies(Problem(ISOTROPIC, Gaussian(width)), ISOTROPIC, momenta)
-    np.testing.assert_allclose(found, (p - 1.0) ** momenta / (2.0 * p ** (momenta + 1.0)), rtol=1e-10, atol=1e-15)
+    np.testing.assert_allclose(found, (p - 1.0) ** momenta / (2.0 * p ** (momenta + 1.0)), rtol=1e-10, atol=2e-14)
 
 
 # Coulomb pairs of the isotropic relative oscillator seen through the orbit of the mass metric diag(a, 1/a);
