@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from mcgeo.errors import GeometryError
 from mcgeo.geometry.cell import lattice_points
 from mcgeo.geometry.frame import TorusFrame
+from mcgeo.kernels.fermi_sea_forces import fermi_sea_forces
 from mcgeo.kernels.fermi_sea_moves import fermi_sea_store, log_weights, refresh, sweep
 from mcgeo.kernels.fermi_sea_torus import FermiSeaTables, fermi_sea_tables, largest_imaginary_tau
 from mcgeo.kernels.lanes import LANES
@@ -123,8 +124,11 @@ class FermiSeaGroup:
         self.refresh()
         return float(np.max(np.abs(kept - self._kept.log_det)))
 
-    def forces(self) -> None:
-        """Not derived for the determinant."""
+    def forces(self) -> Array:
+        """Gradient of log |Psi|^2, from the stored matrices."""
+        forces = np.empty((2 * len(self.a), LANES))
+        fermi_sea_forces(self._tables, self.b, self._kept, forces)
+        return forces
 
 
 @dataclass(frozen=True, eq=False)

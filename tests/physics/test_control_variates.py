@@ -54,6 +54,10 @@ def moore_read(filling: str, electrons: int, **keys: Any) -> dict[str, Any]:
     return {"kind": "moore_read", "filling": filling, "electrons": electrons, **keys}
 
 
+def fermi_sea(filling: str, electrons: int) -> dict[str, Any]:
+    return {"kind": "fermi_sea", "filling": filling, "electrons": electrons}
+
+
 @pytest.fixture(scope="module")
 def run(tmp_path_factory: pytest.TempPathFactory) -> Run:
     def liquid(state: dict[str, Any], cell: dict[str, Any] = HEXAGONAL, **sampling: Any) -> Liquid:
@@ -79,6 +83,8 @@ def run(tmp_path_factory: pytest.TempPathFactory) -> Run:
         (moore_read("1/2", 20, sector="all"), HEXAGONAL, 480),
         (moore_read("1/2", 12, sector=1), OBLIQUE, 960),
         (moore_read("1", 16, sector=3, metric=STRETCHED), SQUARE, 640),
+        (fermi_sea("1/2", 13), HEXAGONAL, 640),
+        (fermi_sea("1/4", 9), SQUARE, 960),
     ],
 )
 def test_means_are_zero(run: Run, state: dict[str, Any], cell: dict[str, Any], sweeps: int) -> None:
@@ -138,7 +144,8 @@ def test_forces_of_another_state_are_seen() -> None:
 
 
 @pytest.mark.parametrize(
-    ("state", "sweeps"), [(laughlin(3, 50), 1600), (moore_read("1/2", 50, sector=1), 240)]
+    ("state", "sweeps"),
+    [(laughlin(3, 50), 1600), (moore_read("1/2", 50, sector=1), 240), (fermi_sea("1/2", 19), 320)],
 )
 def test_variance_of_the_energy_falls_fivefold(run: Run, state: dict[str, Any], sweeps: int) -> None:
     liquid = run(state, sweeps=sweeps, blocks=16)

@@ -57,3 +57,16 @@ def test_moves_keep_stored_values_true(kind):
         assert np.all(group.words != words)
         assert group.drift() < 1e-9
         assert np.all(np.isfinite(state.log_weight(group.a, group.b)))
+
+
+@pytest.mark.parametrize("kind", STATES)
+def test_forces_are_slopes_of_the_weight(kind):
+    for state in torus_states(kind):
+        a, b = positions(state, 4)
+        group = state.group(a.copy(), b.copy(), np.ones((4, LANES), dtype=np.uint64))
+        step = 1e-5 / state.frame.isotropic.side
+        ahead, behind = a.copy(), a.copy()
+        ahead[1] += step
+        behind[1] -= step
+        slope = (state.log_weight(ahead, b) - state.log_weight(behind, b)) / 2e-5
+        np.testing.assert_allclose(group.forces()[2], slope, rtol=1e-5, atol=1e-5)

@@ -11,7 +11,9 @@ from mcgeo.geometry.frame import TorusFrame
 from mcgeo.kernels.lanes import LANES
 from mcgeo.states.fermi_sea import FermiSea
 from mcgeo.states.laughlin import Laughlin
+from mcgeo.states.laughlin_droplet import LaughlinDroplet
 from mcgeo.states.moore_read import MooreRead
+from mcgeo.states.moore_read_droplet import MooreReadDroplet
 
 MODULI = [1j, complex(0.5, math.sqrt(0.75)), complex(-0.4, 1.3), complex(0.2, 6.0), complex(-0.3, 20.0)]
 
@@ -75,6 +77,21 @@ def test_laughlin_against_the_weight(exponent, n_electrons, tau):
 def test_moore_read_against_the_weight(exponent, n_electrons, sector, tau):
     state = MooreRead(exponent, n_electrons, frame(exponent * n_electrons, tau), sector)
     require_gradient(state, walkers(state, 2))
+
+
+SEAS = [
+    (2, 7, complex(0.5, math.sqrt(0.75)), None),
+    (4, 7, complex(0.5, math.sqrt(0.75)), None),
+    (2, 9, 1j, None),
+    (2, 4, complex(0.2, 1.1), [[0, 0], [1, 0], [0, 1], [1, 1]]),
+    (4, 5, complex(-0.3, 2.5), [[0, 0], [1, 0], [0, 1], [1, 1], [3, 2]]),
+]
+
+
+@pytest.mark.parametrize(("exponent", "n_electrons", "tau", "points"), SEAS)
+def test_sea_against_the_weight(exponent, n_electrons, tau, points):
+    state = FermiSea(exponent, n_electrons, frame(exponent * n_electrons, tau), points)
+    require_gradient(state, walkers(state, 8))
 
 
 def test_the_comparison_sees_a_wrong_state():
@@ -168,7 +185,12 @@ def test_forces_sum_to_zero(tau):
 
 
 def test_forces_after_moves_are_those_of_fresh_walkers():
-    for state in (Laughlin(3, 20, frame(60, 1j)), MooreRead(2, 20, frame(40, 1j), 1)):
+    hexagonal = complex(0.5, math.sqrt(0.75))
+    for state in (
+        Laughlin(3, 20, frame(60, 1j)),
+        MooreRead(2, 20, frame(40, 1j), 1),
+        FermiSea(2, 13, frame(26, hexagonal)),
+    ):
         group = walkers(state, 6)
         group.advance(state.first_step, 200)
         kept = group.forces()
@@ -176,6 +198,9 @@ def test_forces_after_moves_are_those_of_fresh_walkers():
         np.testing.assert_allclose(kept, group.forces(), rtol=1e-8, atol=1e-8)
 
 
-def test_states_without_forces_say_so():
-    sea = FermiSea(2, 7, frame(14, complex(0.5, math.sqrt(0.75))))
-    assert walkers(sea, 7).forces() is None
+def test_droplets_have_none():
+    random = np.random.default_rng(7)
+    for droplet in (LaughlinDroplet(3, 4), MooreReadDroplet(2, 4)):
+        positions = np.array([droplet.start(random) for _ in range(LANES)]).transpose(1, 2, 0).copy()
+        group = droplet.group(*positions, random.integers(0, 2**64, (4, LANES), dtype=np.uint64))
+        assert group.forces() is None
