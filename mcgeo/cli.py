@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import argparse
 import importlib
+import logging
 import os
 import sys
 from collections.abc import Sequence
@@ -103,6 +104,9 @@ def _add_run_options(parser: argparse.ArgumentParser) -> None:
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code."""
     arguments = build_parser().parse_args(argv)
+    if getattr(arguments, "quiet", False):
+        # The notice that kernels are compiled is progress too.
+        logging.getLogger("mcgeo.kernels").setLevel(logging.ERROR)
     try:
         module = importlib.import_module(f"mcgeo.commands.{_MODULES[arguments.command]}")
         text, code = getattr(module, f"run_{arguments.command}")(arguments)

@@ -25,7 +25,7 @@ from mcgeo.kernels.fermi_sea_torus import (
     phase,
     row_product,
 )
-from mcgeo.kernels.lanes import LANES, load, splat, store
+from mcgeo.kernels.lanes import LANES, aligned_zeros, load, splat, store
 
 
 class FermiSeaStore(NamedTuple):
@@ -73,7 +73,9 @@ def _scratch(n: int) -> Any:
 def fermi_sea_store(n: int) -> FermiSeaStore:
     """Room for eight walkers of ``n`` electrons, to be filled by `refresh`."""
     return FermiSeaStore(
-        np.zeros((LANES, 5 * lane_vectors(n), LANES)), np.zeros((LANES, n * row_width(n), LANES)), np.zeros(LANES)
+        aligned_zeros((LANES, 5 * lane_vectors(n), LANES)),
+        aligned_zeros((LANES, n * row_width(n), LANES)),
+        np.zeros(LANES),
     )
 
 

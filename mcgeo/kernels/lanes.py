@@ -9,6 +9,7 @@ act on NumPy arrays of shape (8,).
 
 from __future__ import annotations
 
+import math
 import operator
 from typing import Any
 
@@ -19,6 +20,22 @@ from numba.core import cgutils, types
 from numba.extending import intrinsic, models, overload, register_model
 
 LANES = 8
+_ALIGNMENT = 64
+
+
+def aligned_zeros(shape: tuple[int, ...], dtype: type = np.float64) -> np.ndarray:
+    """Zeros of an eight-byte type that start at a cache line: a row across two lines takes twice as long to load."""
+    raw: np.ndarray = np.zeros(math.prod(shape) + _ALIGNMENT // 8, dtype=dtype)
+    start = (-raw.ctypes.data % _ALIGNMENT) // 8
+    return raw[start : start + math.prod(shape)].reshape(shape)
+
+
+def aligned_copy(array: np.ndarray) -> np.ndarray:
+    """Copy of an array of an eight-byte type that starts at a cache line."""
+    copy = aligned_zeros(array.shape, array.dtype.type)
+    copy[...] = array
+    return copy
+
 
 if numba.config.DISABLE_JIT:
 

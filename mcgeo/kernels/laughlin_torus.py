@@ -23,7 +23,7 @@ from typing import Any, NamedTuple
 
 import numpy as np
 
-from mcgeo.kernels._jit import kernel
+from mcgeo.kernels._jit import inlined_kernel, kernel, lean_kernel
 from mcgeo.kernels.elementary import (
     cosine_sine_of_turns,
     exponential,
@@ -44,7 +44,7 @@ from mcgeo.kernels.lanes import (
 # The product of one block of electrons must stay inside the range of a float for every position in the cell:
 # its logarithm is bounded by 6 pi Im(tau) per electron, so 28 / Im(tau) electrons keep it below 530 of 708.
 _BLOCK_RANGE = 28.0
-_LARGEST_BLOCK = 16
+_LARGEST_BLOCK = 24
 LARGEST_IMAGINARY_TAU = _BLOCK_RANGE
 
 
@@ -80,7 +80,7 @@ def laughlin_torus_tables(exponent: int, tau: complex, side: float) -> LaughlinT
     )  # fmt: skip
 
 
-@kernel
+@inlined_kernel
 def _phase(tables: Any, a: Any, b: Any) -> Any:
     """w = exp(2 pi i (a + b tau)) as (real, imaginary)."""
     cosine, sine = cosine_sine_of_turns(a + b * tables.tau_real)
@@ -88,7 +88,7 @@ def _phase(tables: Any, a: Any, b: Any) -> Any:
     return modulus * cosine, modulus * sine
 
 
-@kernel
+@lean_kernel
 def refresh_phases(tables: Any, a: np.ndarray, b: np.ndarray, phases: np.ndarray, sums: np.ndarray) -> None:
     """Phases and power sums from the positions.
 
@@ -111,7 +111,7 @@ def refresh_phases(tables: Any, a: np.ndarray, b: np.ndarray, phases: np.ndarray
         store(sums, 4 * n_powers, load(sums, 4 * n_powers) + load(b, j))
 
 
-@kernel
+@inlined_kernel
 def _add_powers(n_powers: int, sums: np.ndarray, wr: Any, wi: Any, sign: float) -> None:
     """Add ``sign`` times the powers w^k and w^-k to the sums."""
     scale = 1.0 / (wr * wr + wi * wi)
@@ -126,7 +126,7 @@ def _add_powers(n_powers: int, sums: np.ndarray, wr: Any, wi: Any, sign: float) 
         qr, qi = qr * vr - qi * vi, qr * vi + qi * vr
 
 
-@kernel
+@inlined_kernel
 def _one_body_part(tables: Any, sums: np.ndarray, n_others: int, b: Any, wr: Any, wi: Any) -> Any:
     """All of log |s|^2 summed over the others (whose sums are given) but the three near products."""
     n_powers = tables.far.shape[0]
@@ -148,43 +148,60 @@ def _one_body_part(tables: Any, sums: np.ndarray, n_others: int, b: Any, wr: Any
     return total * 2.0 + quadratic * (2.0 * math.pi * tables.tau_imag)
 
 
-@kernel
+@inlined_kernel
+def _images(tables: Any, wr: Any, wi: Any) -> Any:
+    """w, q^2 w and |q|^2 w / q^2 as six numbers."""
+    cr, ci = tables.nome_sq_real, tables.nome_sq_imag
+    scale = 1.0 / math.sqrt(cr * cr + ci * ci)
+    return (
+        wr, wi, wr * cr - wi * ci, wr * ci + wi * cr,
+        (wr * cr + wi * ci) * scale, (wi * cr - wr * ci) * scale,
+    )  # fmt: skip
+
+
+@inlined_kernel
+def _near_factors(modulus: float, xr: Any, xi: Any, images: Any) -> Any:
+    """|x - w|^2, and |x - q^2 w|^2 times |q^2 x - w|^2 = | |q|^2 x - |q|^2 w / q^2 |^2."""
+    wr, wi, inner_r, inner_i, outer_r, outer_i = images
+    dr, di = xr - wr, xi - wi
+    er, ei = xr - inner_r, xi - inner_i
+    fr, fi = xr * modulus - outer_r, xi * modulus - outer_i
+    return dr * dr + di * di, (er * er + ei * ei) * (fr * fr + fi * fi)
+
+
+@inlined_kernel
+def _gathered(near: Any, far: Any, mantissa: Any, exponent: Any) -> Any:
+    """Mantissa and exponent times the products of one block."""
+    near, shift_near = split_exponent(near)
+    far, shift_far = split_exponent(far)
+    mantissa, shift = split_exponent(mantissa * (near * far))
+    return mantissa, exponent + shift + (shift_near + shift_far)
+
+
+@inlined_kernel
 def _near_products(tables: Any, phases: np.ndarray, n_others: int, wr: Any, wi: Any) -> Any:
     """Product over electrons 0..n_others-1 of the three near factors, as mantissa and binary exponent."""
-    cr, ci = tables.nome_sq_real, tables.nome_sq_imag
-    modulus_sq = cr * cr + ci * ci
-    inner_r, inner_i = wr * cr - wi * ci, wr * ci + wi * cr
-    outer_r, outer_i = (wr * cr + wi * ci) * (1.0 / modulus_sq), (wi * cr - wr * ci) * (1.0 / modulus_sq)
+    images = _images(tables, wr, wi)
+    modulus = math.sqrt(tables.nome_sq_real**2 + tables.nome_sq_imag**2)
     mantissa, exponent = splat(1.0), splat_bits(0)
-    j = 0
-    while j < n_others:
-        stop = min(j + tables.block, n_others)
-        # |w_i - q^2 w_j|^2 is |q|^4 times the distance to w_i / q^2; its constant is put in once per block.
-        near, images = mantissa, splat(modulus_sq ** (stop - j))
-        while j < stop:
-            xr, xi = load(phases, 2 * j), load(phases, 2 * j + 1)
-            dr, di = xr - wr, xi - wi
-            er, ei = xr - inner_r, xi - inner_i
-            fr, fi = xr - outer_r, xi - outer_i
-            near = near * (dr * dr + di * di)
-            images = images * ((er * er + ei * ei) * (fr * fr + fi * fi))
-            j += 1
-        near, shift = split_exponent(near)
-        images, shift_images = split_exponent(images)
-        exponent = exponent + shift + shift_images
-        mantissa, shift = split_exponent(near * images)
-        exponent = exponent + shift
+    n_blocks = (n_others + tables.block - 1) // tables.block
+    for block in range(n_blocks):
+        near, far = splat(1.0), splat(1.0)
+        for j in range(block * n_others // n_blocks, (block + 1) * n_others // n_blocks):
+            factor, far_factor = _near_factors(modulus, load(phases, 2 * j), load(phases, 2 * j + 1), images)
+            near, far = near * factor, far * far_factor
+        mantissa, exponent = _gathered(near, far, mantissa, exponent)
     return mantissa, exponent
 
 
-@kernel
+@inlined_kernel
 def _swap_rows(array: np.ndarray, first: int, second: int) -> None:
     held = load(array, first)
     store(array, first, load(array, second))
     store(array, second, held)
 
 
-@kernel
+@lean_kernel
 def advance(
     tables: Any,
     a: np.ndarray,

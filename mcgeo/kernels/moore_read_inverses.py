@@ -8,9 +8,9 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from mcgeo.kernels._jit import kernel
-from mcgeo.kernels.lanes import LANES, float_from_integer, load, splat, store
+from mcgeo.kernels.lanes import LANES, aligned_zeros, float_from_integer, load, splat, store
 from mcgeo.kernels.moore_read_pairs import load_factors, pair_row, position_factors, store_factors
-from mcgeo.kernels.pfaffian import aligned_zeros, invert
+from mcgeo.kernels.pfaffian import invert
 
 # Rows of `MooreReadStorage.lanes`: sum of b; log of the product of |(w_i - w_j) D(c_ij)|^2 over pairs and log |det|,
 # both at the last refresh; largest squared residual since the inverse was made; marks of walkers whose inverse is to

@@ -22,15 +22,6 @@ import numpy as np
 from mcgeo.kernels._jit import kernel
 from mcgeo.kernels.lanes import LANES, load, splat, store
 
-_ALIGNMENT = 64
-
-
-def aligned_zeros(shape: tuple[int, ...]) -> np.ndarray:
-    """Zeros that start at a cache line, as the wide loads of the matrix kernels want them."""
-    raw = np.zeros(math.prod(shape) + _ALIGNMENT // 8)
-    start = (-raw.ctypes.data % _ALIGNMENT) // 8
-    return raw[start : start + math.prod(shape)].reshape(shape)
-
 
 @kernel
 def _pivot_row(real: np.ndarray, imag: np.ndarray, n: int, n_blocks: int, column: int) -> int:

@@ -10,7 +10,7 @@ from typing import TypeVar
 import numpy as np
 from numpy.typing import NDArray
 
-from mcgeo.kernels.lanes import LANES
+from mcgeo.kernels.lanes import LANES, aligned_copy
 from mcgeo.sampling.streams import generator_words, start_generator, walker_sequence
 from mcgeo.states.base import SampledState, WalkerGroup
 
@@ -50,7 +50,7 @@ def start_walkers(state: SampledState, n_walkers: int, seed: int, component: int
 def groups_of(state: SampledState, arrays: WalkerArrays) -> list[WalkerGroup]:
     """Groups at copies of the arrays."""
     return [
-        state.group(a.copy(), b.copy(), words.copy())
+        state.group(aligned_copy(a), aligned_copy(b), aligned_copy(words))
         for a, b, words in zip(arrays.a, arrays.b, arrays.words, strict=True)
     ]
 

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.geometry.frame import TorusFrame
-from mcgeo.kernels.lanes import LANES
+from mcgeo.kernels.lanes import LANES, aligned_zeros
 from mcgeo.kernels.laughlin_forces import laughlin_forces
 from mcgeo.kernels.laughlin_torus import (
     LARGEST_IMAGINARY_TAU,
@@ -36,8 +36,8 @@ class LaughlinGroup:
         self.a, self.b, self.words = a, b, words
         self.accepted = np.zeros((1, LANES))
         self._tables = tables
-        self._phases = np.empty((2 * len(a), LANES))
-        self._sums = np.empty((4 * len(tables.far) + 1, LANES))
+        self._phases = aligned_zeros((2 * len(a), LANES))
+        self._sums = aligned_zeros((4 * len(tables.far) + 1, LANES))
         self.refresh()
 
     def refresh(self) -> None:

@@ -14,7 +14,6 @@ from mcgeo.geometry.ellipse import NeutralisingEllipse
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.laughlin_disk import advance, log_weights
-from mcgeo.kernels.pfaffian import aligned_zeros
 from mcgeo.states.base import BOSONS, FERMIONS, Array
 from mcgeo.states.droplet import uniform_in_disk
 
@@ -25,9 +24,7 @@ class LaughlinDropletGroup:
     """Eight walkers; see `mcgeo.states.base.WalkerGroup`. Nothing is stored between moves but the positions."""
 
     def __init__(self, exponent: int, a: Array, b: Array, words: NDArray[np.uint64]) -> None:
-        self.a, self.b = aligned_zeros(a.shape), aligned_zeros(b.shape)
-        self.a[:], self.b[:] = a, b
-        self.words = words
+        self.a, self.b, self.words = a, b, words
         self.accepted = np.zeros((1, LANES))
         self._exponent = exponent
 

@@ -13,10 +13,9 @@ from numpy.typing import NDArray
 from mcgeo.errors import GeometryError
 from mcgeo.geometry.ellipse import NeutralisingEllipse
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
-from mcgeo.kernels.lanes import LANES
+from mcgeo.kernels.lanes import LANES, aligned_zeros
 from mcgeo.kernels.laughlin_disk import log_weights
 from mcgeo.kernels.moore_read_disk import advance, refresh_inverses
-from mcgeo.kernels.pfaffian import aligned_zeros
 from mcgeo.states.base import BOSONS, FERMIONS, Array
 from mcgeo.states.droplet import uniform_in_disk
 

@@ -4,8 +4,8 @@ import mpmath
 import numpy as np
 import pytest
 
-from mcgeo.kernels.lanes import LANES
-from mcgeo.kernels.pfaffian import aligned_zeros, exchange_row, invert
+from mcgeo.kernels.lanes import LANES, aligned_zeros
+from mcgeo.kernels.pfaffian import exchange_row, invert
 from tests.exact.moore_read_theta import pfaffian
 
 
