@@ -26,8 +26,10 @@ from mcgeo.problem.power_law import PowerLaw
 from mcgeo.problem.problem import Problem
 from mcgeo.problem.pseudopotential_sum import PseudopotentialSum
 from mcgeo.problem.screened import OneGate, TwoGates, Yukawa
+from mcgeo.runs.liquid import Liquid
 from mcgeo.variational.energy_surface import EnergySurface
 from mcgeo.variational.minimum import find_minimum
+from tests.physics.checks import require_agreement
 
 Array = NDArray[np.float64]
 NU = Fraction(1, 3)
@@ -245,3 +247,26 @@ def test_tilted_dipoles_turn_the_hole(direction: float) -> None:
     assert minimum.stretch.value > 0.05
     upright = find_minimum(EnergySurface(liquid(), Problem(ISOTROPIC, Dipole(0.3))))
     assert upright.metric == ISOTROPIC
+
+
+ON_TORUS = [
+    (Coulomb(UnimodularMetric(0.5, 0.3)), 2e-4),
+    (OneGate(2.0), 2e-5),
+    (TwoGates(2.0), 2e-5),
+    (Yukawa(0.5), 2e-5),
+    (SquareWell(2.0), 2e-4),
+    (FangHoward(2.0), 2e-4),
+    (PowerLaw(1.5), 5e-5),
+    (Dipole(0.3, 0.5), 5e-5),
+    (Combination(((0.5, OneGate(1.0)), (2.0, Gaussian(1.0)))), 2e-5),
+]
+
+
+@pytest.mark.parametrize(("interaction", "tolerance"), ON_TORUS)
+def test_torus_and_plane_agree(third: Liquid, interaction: Interaction, tolerance: float) -> None:
+    # Two roads to one number; the finite cell costs N^(-3/2), and little where V(q) is finite at q = 0.
+    on_torus = third.torus_energy(interaction)
+    plane = EnergySurface(third.occupations, Problem(ISOTROPIC, interaction)).energy(ISOTROPIC)
+    require_agreement(on_torus.value, on_torus.error, plane, tolerance)
+    # The self-energy is no small part of it.
+    assert abs(interaction.self_energy(third.frame.lab)) > 20.0 * (tolerance + 4.0 * on_torus.error)
