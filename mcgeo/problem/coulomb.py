@@ -47,8 +47,6 @@ class Coulomb(PairPotential):
 
     def potential(self, wavevectors: Array) -> Array:
         """2 pi/sqrt(q.g_eps^-1.q)."""
-        if self.dielectric.stretch == 0.0:
-            return np.asarray(2.0 * math.pi / np.hypot(wavevectors[..., 0], wavevectors[..., 1]))
         return np.asarray(2.0 * math.pi / np.sqrt(self.dielectric.wavevector_norm_sq(wavevectors)))
 
     def self_energy(self, cell: Cell) -> float:
