@@ -16,7 +16,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import norm, t
+from scipy.special import ndtri, stdtr
 
 Array = NDArray[np.float64]
 
@@ -58,7 +58,7 @@ def control_z(samples: Array) -> Array:
     error = samples.std(axis=0, ddof=1) / np.sqrt(n)
     with np.errstate(divide="ignore", invalid="ignore"):
         ratio = samples.mean(axis=0) / error
-    return np.asarray(np.sign(ratio) * norm.isf(t.sf(np.abs(ratio), n - 1)))
+    return np.asarray(-np.sign(ratio) * ndtri(stdtr(n - 1, -np.abs(ratio))))
 
 
 def _fold_labels(n_blocks: int, n_walkers: int) -> NDArray[np.int64]:

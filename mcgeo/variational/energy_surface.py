@@ -18,6 +18,7 @@ from __future__ import annotations
 import math
 from abc import ABC, abstractmethod
 from dataclasses import dataclass, field
+from functools import cache
 from typing import Protocol, Self
 
 import numpy as np
@@ -44,13 +45,21 @@ _LEAST_DISTANCE = 1e-3
 _HARMONICS_TO = 26.0
 
 
+@cache
+def _legendre(n: int) -> tuple[Array, Array]:
+    """Nodes and weights of Gauss-Legendre; finding them takes as long as twenty energies."""
+    x, weights = np.polynomial.legendre.leggauss(n)
+    x.flags.writeable = weights.flags.writeable = False
+    return x, weights
+
+
 def _radial_rule(largest: float) -> tuple[Array, Array]:
     """Nodes and weights on (0, ``largest``), largest > 1.
 
     Gauss-Legendre beyond 1 and the double-exponential rule below, which any power of k and any scale of V(q) at small q
     suit (H. Takahasi and M. Mori, Publ. RIMS Kyoto Univ. 9, 721 (1974)).
     """
-    x, weights = np.polynomial.legendre.leggauss(max(_LEAST_NODES, math.ceil(_NODES_PER_UNIT * largest)))
+    x, weights = _legendre(max(_LEAST_NODES, math.ceil(_NODES_PER_UNIT * largest)))
     half = 0.5 * (largest - _INNER)
     t, step = np.linspace(*_INNER_RANGE, _INNER_NODES, retstep=True)
     inner = _INNER / (1.0 + np.exp(-math.pi * np.sinh(t)))
