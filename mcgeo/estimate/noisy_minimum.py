@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import chi2
+from scipy.special import chdtrc
 
 from mcgeo.estimate.statistics import Estimate
 
@@ -60,7 +60,7 @@ def fitted_minimum(x: Array, y: Array, error: Array) -> CurveMinimum:
         c = covariance @ (design.T @ (y / error))
         chi_sq = float(np.sum((y / error - design @ c) ** 2))
         freedom = len(x) - degree - 1
-        probability = float(chi2.sf(chi_sq, freedom)) if freedom else 1.0
+        probability = float(chdtrc(freedom, chi_sq)) if freedom else 1.0
         if probability > _LEAST_PROBABILITY:
             break
     polynomial = np.polynomial.Polynomial(c)
