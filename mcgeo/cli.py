@@ -113,6 +113,10 @@ def main(argv: Sequence[str] | None = None) -> int:
     except McgeoError as fault:
         print(fault, file=sys.stderr)
         return fault.exit_code
+    except OSError as fault:
+        where, why = fault.filename or "output", fault.strerror or fault
+        print(f"{where}: {why}; choose another place with --out", file=sys.stderr)
+        return 2
     except KeyboardInterrupt:
         print("interrupted", file=sys.stderr)
         return 130
@@ -120,5 +124,13 @@ def main(argv: Sequence[str] | None = None) -> int:
         print(text, flush=True)
     except BrokenPipeError:
         # The reader has gone; point standard output elsewhere so that the interpreter's own flush is quiet.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _discard_output()
+    except OSError as fault:
+        print(f"standard output: {fault.strerror or fault}", file=sys.stderr)
+        _discard_output()
+        return 2
     return int(code)
+
+
+def _discard_output() -> None:
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

@@ -13,6 +13,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 import mcgeo
+from mcgeo.commands.run import result_file
 from mcgeo.errors import StorageError
 from mcgeo.estimate.pair_correlation import counted_pair_correlation, radial_pair_correlation
 from mcgeo.estimate.statistics import mean_estimate
@@ -25,7 +26,6 @@ from mcgeo.runs.config import load_config
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.hole import hole_image
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.sample import LIQUID_FILE
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import scan
 from mcgeo.runs.storage import as_liquid, read_result
@@ -43,7 +43,7 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 
 def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo plot``."""
-    path = arguments.file / LIQUID_FILE if arguments.file.is_dir() else arguments.file
+    path = result_file(arguments.file)
     result = read_result(path)
     keys = dict(result.resolved)
     if arguments.problem is not None:

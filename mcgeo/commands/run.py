@@ -13,7 +13,7 @@ from mcgeo.report.text import droplet_text, sample_text
 from mcgeo.runs.config import Config, config_from_resolved, load_config
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.droplet_summary import droplet_summary
-from mcgeo.runs.sample import sample
+from mcgeo.runs.sample import LIQUID_FILE, sample
 from mcgeo.runs.sample_summary import sample_summary
 from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
 from mcgeo.runs.units import with_units
@@ -37,6 +37,11 @@ def exit_code(summary: Mapping[str, Any]) -> int:
     return CONVERGED_CODE if summary["diagnostics"]["verdict"] == "converged" else NOT_CONVERGED_CODE
 
 
+def result_file(path: Path) -> Path:
+    """The result file in a folder, or the file itself."""
+    return path / LIQUID_FILE if path.is_dir() else path
+
+
 def read_config(path: Path, threads: int | None) -> Config:
     config = config_from_resolved(read_result(path).resolved) if path.suffix == RESULT_SUFFIX else load_config(path)
     if threads is None:
@@ -46,6 +51,7 @@ def read_config(path: Path, threads: int | None) -> Config:
 
 def run_sample(arguments: argparse.Namespace) -> Answer:
     """``mcgeo sample``."""
+    arguments.config = result_file(arguments.config)
     config = read_config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
     result = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)

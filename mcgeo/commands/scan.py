@@ -7,18 +7,18 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
-from mcgeo.commands.run import Answer, as_json, default_folder, exit_code, read_config
-from mcgeo.errors import ConfigError
+from mcgeo.commands.run import Answer, as_json, default_folder, exit_code, read_config, result_file
+from mcgeo.errors import ConfigError, StorageError
 from mcgeo.report.tables import write_csv, write_json
 from mcgeo.report.text import comparison_text, scan_text, torus_text
 from mcgeo.runs.build import problem_from, variation_from
-from mcgeo.runs.config import Config
+from mcgeo.runs.config import Config, differing_keys, resolved
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.droplet_scan import require_droplet_problem
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sampled import Sampled
-from mcgeo.runs.scan import scan, scan_summary
+from mcgeo.runs.scan import require_reach, scan, scan_summary
 from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
 from mcgeo.runs.torus_road import compare_roads, torus_road
 from mcgeo.runs.torus_summary import comparison_summary, torus_summary
@@ -30,9 +30,11 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 
 def run_scan(arguments: argparse.Namespace) -> Answer:
     """``mcgeo scan``: samples first when a liquid is missing."""
+    arguments.config = result_file(arguments.config)
     config = read_config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
     keys = config.model_dump(mode="json", by_alias=True)
+    require_reach(problem_from(keys["problem"]), keys["scan"])
     if config.geometry.kind == "disk":
         _require_disk_problem(arguments, keys)
     if arguments.compare:
@@ -62,10 +64,20 @@ def _require_disk_problem(arguments: argparse.Namespace, keys: Mapping[str, Any]
 
 def _sampled(arguments: argparse.Namespace, config: Config, folder: Path) -> Sampled:
     if arguments.liquid is not None:
-        return read_result(arguments.liquid)
+        path = result_file(arguments.liquid)
+        return _of_the_same_state(read_result(path), config, path)
     if arguments.config.suffix == RESULT_SUFFIX:
         return read_result(arguments.config)
     return sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+
+
+def _of_the_same_state(result: Sampled, config: Config, path: Path) -> Sampled:
+    """Refuse a liquid of another state: fields and lengths of the configuration belong to its own."""
+    differences = differing_keys(result.resolved, resolved(config), ("state",))
+    if differences:
+        listed = "\n  ".join(differences)
+        raise StorageError(f"{path} holds another state than the configuration (in the file and wanted):\n  {listed}")
+    return result
 
 
 def _liquid_of(arguments: argparse.Namespace, config: Config, folder: Path) -> Liquid:

@@ -53,7 +53,8 @@ def fitted_minimum(x: Array, y: Array, error: Array) -> CurveMinimum:
     x, y, error : ndarray, shape (n,), n >= 3
         Errors of different points independent.
     """
-    largest = min(_LARGEST_DEGREE, len(x) - 1)
+    # One degree of freedom is left where there are four points or more, so that chi-square can judge the fit.
+    largest = min(_LARGEST_DEGREE, len(x) - 1 if len(x) < 4 else len(x) - 2)
     for degree in range(min(_LEAST_DEGREE, largest), largest + 1):
         design = np.vander(x, degree + 1, increasing=True) / error[:, None]
         covariance = np.linalg.inv(design.T @ design)

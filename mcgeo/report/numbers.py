@@ -7,14 +7,14 @@ import math
 from mcgeo.estimate.statistics import Estimate
 
 # Smaller errors are rounding: symmetry fixes such a number.
-_EXACT_BELOW = 5e-7
+_EXACT_BELOW = 1e-10
 _EXACT_DIGITS = 6
 
 
 def value_with_error(estimate: Estimate) -> str:
     """``1.723(4)``: the error in units of the last digit, with two digits when it starts with 1.
 
-    Errors of 1 and above keep their point, ``13.1(1.4)``. An error below 5e-7 leaves the plain number; an infinite or
+    Errors of 1 and above keep their point, ``13.1(1.4)``. An error below 1e-10 leaves the plain number; an infinite or
     undefined one gives ``value(?)``.
     """
     value, error = estimate.value, estimate.error

@@ -14,8 +14,9 @@ ENERGY_UNIT = "e^2/(4 pi eps l_B)"
 _VERDICTS = {
     "stable": "stable: the hole follows the anisotropy less than in proportion",
     "soft": "soft: the response is above one, the hole exaggerates a weak anisotropy of the mass",
-    "unstable": "unstable: the isotropic hole is no minimum, or there is none within the range searched",
+    "unstable": "unstable: the isotropic hole is no minimum of the isotropic problem",
 }
+_NO_MINIMUM = "unstable: no minimum within the range searched, the energy falls to its edge"
 _HEALTH = {
     "converged": "converged",
     "short": "short: too few independent samples; raise sampling.sweeps or sampling.walkers",
@@ -80,12 +81,12 @@ def _unit_rows(summary: Mapping[str, Any]) -> list[tuple[str, str]]:
     if best is not None and "energy_mev" in best:
         rows.append(
             (
-                "gain over isotropic hole",
+                "that gain in units",
                 f"{best['gain_isotropic_mev']:.4g} meV = {best['gain_isotropic_kelvin']:.4g} K per electron",
             )
         )
-    if best is not None and "stiffness_mev_per_nm2" in best:
-        rows.append(("stiffness per area", f"{best['stiffness_mev_per_nm2'][0][0]:.4g} meV/nm^2"))
+    if best is not None and "stiffness_along_mev_per_nm2" in best:
+        rows.append(("stiffness along, per area", f"{_pair(best, 'stiffness_along_mev_per_nm2')} meV/nm^2"))
     return rows
 
 
@@ -130,21 +131,17 @@ def scan_text(summary: Mapping[str, Any]) -> str:
         ("state", f"{state['label']}, {state['liquid_electrons']} electrons"),
         ("interaction", f"{problem['interaction_name']}, level {level}"),
         ("variation", problem["variation"].replace("_", " ")),
-        (
-            "mass orbit",
-            f"stretch {problem['mass_stretch']:.5g} at {problem['mass_angle_degrees']:.4g} degrees, "
-            f"aspect ratio {problem['orbit_aspect_ratio']:.5g}",
-        ),
-        ("orbit: stretch", _pair(best, "orbit_stretch")),
+        ("mass", f"stretch {problem['mass_stretch']:.5g} at {problem['mass_angle_degrees']:.4g} degrees"),
+        ("orbit", f"stretch {_pair(best, 'orbit_stretch')} at {best['orbit_angle_degrees']:.4g} degrees"),
         ("hole: stretch", _pair(best, "stretch")),
-        ("hole: angle", f"{value_with_error(Estimate(best['angle_degrees'], best['angle_error']))} degrees"),
+        ("hole: angle", _hole_angle(best)),
         ("hole: aspect ratio", _pair(best, "aspect_ratio")),
         ("energy", f"{_pair(best, 'energy')} {ENERGY_UNIT}"),
         ("gain over isotropic hole", _pair(best, "gain_isotropic")),
         ("gain over hole like mass", _pair(best, "gain_mass")),
-        ("stiffness along, across", _stiffness(best)),
+        ("stiffness along, across", f"{_pair(best, 'stiffness_along')}, {_pair(best, 'stiffness_across')}"),
         ("response to weak mass", _pair(best, "response")),
-        ("verdict on the shape", _VERDICTS[best["shape_verdict"]]),
+        ("verdict on the shape", _VERDICTS[best["shape_verdict"]] if best["interior"] else _NO_MINIMUM),
         *_unit_rows(summary),
         *_health_rows(summary["diagnostics"]),
     ]
@@ -192,7 +189,7 @@ def comparison_text(summary: Mapping[str, Any]) -> str:
     )
 
 
-def _stiffness(best: Mapping[str, Any]) -> str:
-    """Diagonal of the stiffness in the directions of the lab's flat coordinates."""
-    pairs = [Estimate(best["stiffness"][k][k], best["stiffness_error"][k][k]) for k in (0, 1)]
-    return ", ".join(value_with_error(pair) for pair in pairs)
+def _hole_angle(best: Mapping[str, Any]) -> str:
+    if best["stretch"] == 0.0:
+        return "none (a circle)"
+    return f"{value_with_error(Estimate(best['angle_degrees'], best['angle_error']))} degrees, its short axis"

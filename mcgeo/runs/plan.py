@@ -8,6 +8,7 @@ from typing import Any
 from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import droplet_state, problem_from, schedule_from, torus_frame
 from mcgeo.runs.experiment import experiment_of
+from mcgeo.runs.scan import require_reach
 
 # Seconds per pair factor, per wave and electron, and per pair measured in a droplet, of one core, on a processor
 # with 512-bit registers at 2.3 GHz; an estimate within a factor of two elsewhere.
@@ -32,6 +33,7 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
     n, n_components = state.n_electrons, len(experiment.states)
     surface, n_waves, seconds_per_measurement = _surface(resolved)
     problem = problem_from(resolved["problem"])
+    require_reach(problem, resolved["scan"])
     sweeps = schedule.sweeps_per_walker + 2 * schedule.equilibration
     per_walker = sweeps * n * (n - 1.0) * state.proposals_per_sweep * state.cost_per_pair * _SECONDS_PER_PAIR
     per_walker += sweeps / schedule.sweeps_between * seconds_per_measurement

@@ -10,8 +10,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from mcgeo.errors import ConfigError
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
-from mcgeo.geometry.metric import UnimodularMetric
+from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.droplet import Droplet
@@ -21,7 +22,7 @@ from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample_summary import liquid_state_summary
 from mcgeo.runs.table_file import without_contents
-from mcgeo.variational.energy_surface import Surface
+from mcgeo.variational.energy_surface import LARGEST_DISTANCE, Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
 from mcgeo.variational.response import Response, mass_response, shape_verdict
 from mcgeo.variational.susceptibility import (
@@ -115,6 +116,29 @@ def scan(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], scan_keys: M
     )
 
 
+def require_reach(problem: Problem, scan_keys: Mapping[str, Any]) -> None:
+    """Refuse, before anything is sampled, metrics farther from the orbit than the quadrature resolves.
+
+    Raises
+    ------
+    ConfigError
+        Naming the keys, with the distance found and the one that works.
+    """
+    orbit = problem.orbit.metric
+    angle = scan_keys["angle_degrees"]
+    direction = math.radians(angle) if angle is not None else orbit.angle
+    ends = {key: UnimodularMetric(scan_keys["stretch"][key], direction) for key in ("from", "to")}
+    places = {"problem.mass": ISOTROPIC, **{f"scan.stretch.{key}": metric for key, metric in ends.items()}}
+    faults = [
+        f"{key}: hole and orbit metric come to be {metric.distance(orbit):.3g} apart (relative aspect ratio "
+        f"{math.exp(metric.distance(orbit)):.3g}); at most {LARGEST_DISTANCE:g} works"
+        for key, metric in places.items()
+        if metric.distance(orbit) > LARGEST_DISTANCE
+    ]
+    if faults:
+        raise ConfigError(faults)
+
+
 def _susceptibilities(surface_for: SurfaceMaker, problem: Problem, minimum: Minimum) -> dict[str, Susceptibility]:
     """To the mass and, in a field across the plane, to the shape of the interaction; none without a minimum."""
     if not minimum.interior:
@@ -173,6 +197,8 @@ def optimum_summary(found: Scan) -> dict[str, Any]:
         **estimate_pair("gain_mass", m.gain_mass),
         "stiffness": m.stiffness.tolist(),
         "stiffness_error": m.stiffness_error.tolist(),
+        **estimate_pair("stiffness_along", m.stiffness_along),
+        **estimate_pair("stiffness_across", m.stiffness_across),
         "isotropic_stiffness": found.response.isotropic_stiffness.value,
         "isotropic_stiffness_error": found.response.isotropic_stiffness.error,
         **estimate_pair("response", found.response.response),

@@ -6,6 +6,7 @@ import math
 from collections.abc import Mapping
 from typing import Any
 
+from mcgeo.estimate.diagnostics import SHORT
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample_summary import liquid_state_summary
 from mcgeo.runs.scan import estimate_pair, problem_summary
@@ -47,8 +48,16 @@ def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str,
             }
             for point in road.points
         ],
-        "diagnostics": diagnostics_summary(worst.liquid),
+        "diagnostics": {**diagnostics_summary(worst.liquid), **_curve_verdict(road)},
     }
+
+
+def _curve_verdict(road: TorusRoad) -> dict[str, str]:
+    """``short`` when the curve is no deeper than its errors: hole and orbit far apart make energies noisy."""
+    energies = [point.energy for point in road.points]
+    depth = max(e.value for e in energies) - min(e.value for e in energies)
+    noisy = 3.0 * max(e.error for e in energies) > depth or road.minimum.gain_at_zero.value < 0.0
+    return {"verdict": SHORT} if noisy else {}
 
 
 def comparison_summary(rows: list[Comparison]) -> list[dict[str, Any]]:

@@ -34,6 +34,9 @@ def with_units(summary: dict[str, Any], resolved: Mapping[str, Any]) -> dict[str
             per_area = sample.mev(1.0) * filling / (2.0 * math.pi * sample.magnetic_length_nm**2)
             for key in ("stiffness", "stiffness_error"):
                 found["optimum"][f"{key}_mev_per_nm2"] = [[per_area * k for k in row] for row in best[key]]
+            for key in ("stiffness_along", "stiffness_across"):
+                found["optimum"][f"{key}_mev_per_nm2"] = per_area * best[key]
+                found["optimum"][f"{key}_mev_per_nm2_error"] = per_area * best[f"{key}_error"]
     for key in ("energy_torus", "energy_plane", "energy_disk"):
         if key in summary:
             pair = {"value": summary[key]["value"], "error": summary[key]["error"]}

@@ -40,7 +40,7 @@ _INNER_RANGE = (-5.3, 3.2)
 _INNER_NODES = 96
 # delta(k) of L_m ends beyond its turning point 2 sqrt(m).
 _BEYOND_TURNING_POINT = 4.0
-_LARGEST_DISTANCE = 4.0
+LARGEST_DISTANCE = 4.0
 _LEAST_DISTANCE = 1e-3
 _HARMONICS_TO = 26.0
 
@@ -90,10 +90,10 @@ def angular_mean(problem: Problem, metric: UnimodularMetric, radii: Array) -> Ar
         If metric and orbit are farther apart than 4 (relative aspect ratio 55).
     """
     distance = _distance(metric, problem.orbit.metric)
-    if distance > _LARGEST_DISTANCE:
+    if distance > LARGEST_DISTANCE:
         raise GeometryError(
             f"hole and orbit metric are {distance:.3g} apart (relative aspect ratio {math.exp(distance):.3g}); "
-            f"at most {_LARGEST_DISTANCE:g} works"
+            f"at most {LARGEST_DISTANCE:g} works"
         )
     n_angles = _n_angles(max(distance, *(_distance(metric, other) for other in problem.interaction.metrics)))
     phi = math.pi * (np.arange(n_angles) + 0.5) / n_angles

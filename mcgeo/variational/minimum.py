@@ -21,6 +21,7 @@ SEARCH_RADIUS = 2.5
 _RINGS = 6
 _NEWTON_STEPS = 20
 _TOLERANCE = 1e-9
+_ROUNDING = 1e-7
 
 
 @dataclass(frozen=True, eq=False)
@@ -38,6 +39,8 @@ class Minimum:
     stiffness : ndarray, shape (2, 2)
         Hessian in the flat coordinates about the minimum: the directions (Q cos 2 theta, Q sin 2 theta) of the lab.
     stiffness_error : ndarray, shape (2, 2)
+    stiffness_along, stiffness_across : Estimate
+        The same along the optimum's own stretch and across it (a turn of the hole).
     gain_isotropic, gain_mass : Estimate
         Energy of the isotropic hole, and of a hole that follows the orbit (the mass), above the minimum's.
     """
@@ -49,6 +52,8 @@ class Minimum:
     energy: Estimate
     stiffness: Array
     stiffness_error: Array
+    stiffness_along: Estimate
+    stiffness_across: Estimate
     gain_isotropic: Estimate
     gain_mass: Estimate
 
@@ -80,6 +85,7 @@ def find_minimum(surface: Surface) -> Minimum:
     stretch, angle = metric_estimates(metric, steps)
     at_isotropic = surface.sample_energies(ISOTROPIC) - expansion.energy
     at_mass = surface.sample_energies(surface.problem.orbit.metric) - expansion.energy
+    along, across = _own_stiffness(metric, expansion.hessian.mean(axis=0), hessians)
     return Minimum(
         metric,
         interior,
@@ -88,9 +94,21 @@ def find_minimum(surface: Surface) -> Minimum:
         _mean(expansion.energy),
         expansion.hessian.mean(axis=0),
         jackknife_error(hessians),
+        along,
+        across,
         _mean(at_isotropic),
         _mean(at_mass),
     )
+
+
+def _own_stiffness(metric: UnimodularMetric, mean: Array, replicas: Array) -> tuple[Estimate, Estimate]:
+    """Second derivatives along (cos 2 theta, sin 2 theta) and perpendicular to it."""
+    c, s = math.cos(2 * metric.angle), math.sin(2 * metric.angle)
+
+    def along(u: Array) -> Estimate:
+        return Estimate(float(u @ mean @ u), float(jackknife_error(np.einsum("nab,a,b->n", replicas, u, u))))
+
+    return along(np.array([c, s])), along(np.array([-s, c]))
 
 
 def _mean(samples: Array) -> Estimate:
@@ -159,7 +177,9 @@ def metric_estimates(metric: UnimodularMetric, steps: Array) -> tuple[Estimate, 
     along = steps @ np.array([c, s])
     # A displacement across moves 2 theta by its length over sinh Q.
     across = steps @ np.array([-s, c]) / (2.0 * math.sinh(metric.stretch))
+    angle_error = float(jackknife_error(across))
     return (
         Estimate(metric.stretch, float(jackknife_error(along))),
-        Estimate(metric.angle, float(jackknife_error(across))),
+        # An angle that symmetry fixes has no error but the rounding of differences.
+        Estimate(metric.angle, angle_error if angle_error > _ROUNDING else 0.0),
     )

@@ -79,6 +79,9 @@ def shape_verdict(problem: Problem, minimum: Minimum, response: Response) -> str
     exaggerates the mass.
     """
     elsewhere = problem.is_symmetric and minimum.metric.stretch > 0.0
-    if not minimum.interior or elsewhere or response.isotropic_stiffness.value <= 0.0:
+    # With an anisotropic interaction the isotropic hole is not even stationary, and its curvature says nothing.
+    symmetry = problem.interaction.symmetry
+    no_minimum = symmetry is not None and symmetry.stretch == 0.0 and response.isotropic_stiffness.value <= 0.0
+    if not minimum.interior or elsewhere or no_minimum:
         return UNSTABLE
     return SOFT if response.response.value > 1.0 else STABLE

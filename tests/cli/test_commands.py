@@ -178,13 +178,26 @@ def test_scan_works_from_the_result_file_alone(mcgeo: Command, small: Path) -> N
 
 def test_scan_of_another_problem_with_a_given_liquid(mcgeo: Command, small: Path) -> None:
     mcgeo("sample", "run.yaml")
-    other = SMALL.replace("ratio: 2.0", "ratio: 5.0").replace("electrons: 4", "electrons: 30")
+    other = SMALL.replace("ratio: 2.0", "ratio: 5.0").replace("sweeps: 480", "sweeps: 960")
     Path("other.yaml").write_text(other)
     answer = mcgeo("scan", "other.yaml", "--liquid", "run_results/liquid.h5", "--json")
     found = json.loads(answer.out)
     assert found["problem"]["mass"]["ratio"] == 5.0
     assert found["state"]["electrons"] == 4
     assert not Path("other_results/liquid.h5").exists()
+    Path("third.yaml").write_text(other.replace("exponent: 3", "exponent: 5"))
+    refused = mcgeo("scan", "third.yaml", "--liquid", "run_results")
+    assert refused.code == 2 and refused.out == ""
+    assert "state.exponent: 3 and 5" in refused.err
+    assert not Path("third_results").exists()
+
+
+def test_metrics_out_of_reach_are_refused_before_sampling(mcgeo: Command, small: Path) -> None:
+    Path("far.yaml").write_text(SMALL.replace("ratio: 2.0", "ratio: 20000.0"))
+    for command in ("check", "scan"):
+        answer = mcgeo(command, "far.yaml")
+        assert answer.code == 2 and "problem.mass" in answer.err and "4 works" in answer.err
+    assert not Path("far_results").exists()
 
 
 @pytest.mark.parametrize("path", sorted((ROOT / "configs").glob("*.yaml")), ids=lambda path: path.name)

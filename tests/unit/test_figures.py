@@ -62,6 +62,7 @@ def _minimum(**changes):
         metric=metric, interior=True, stretch=Estimate(0.4, 0.02), angle=Estimate(0.0, 0.0),
         energy=Estimate(-0.41, 0.0003), stiffness=np.array([[0.07, 0.01], [0.01, 0.03]]),
         stiffness_error=np.array([[0.002, 0.001], [0.001, 0.004]]),
+        stiffness_along=Estimate(0.07, 0.002), stiffness_across=Estimate(0.03, 0.004),
         gain_isotropic=Estimate(0.0056, 0.0002), gain_mass=Estimate(0.0012, 0.0001),
     )  # fmt: skip
     return replace(minimum, **changes)
