@@ -109,10 +109,7 @@ class _Run:
             return
         first = self._schedules[0]
         if not self._quiet:
-            say(
-                f"equilibrating {first.n_walkers} walkers on {first.threads} threads "
-                "(kernels are compiled once, which takes some seconds)"
-            )
+            say(f"equilibrating {first.n_walkers} walkers on {first.threads} threads")
         for state, schedule in zip(self._experiment.states, self._schedules, strict=True):
             try:
                 self._chains.append(equilibrated(state, schedule, stop))
