@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from mcgeo.errors import ConfigError
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
+from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.droplet import Droplet
@@ -140,13 +141,20 @@ def require_reach(problem: Problem, scan_keys: Mapping[str, Any]) -> None:
 
 
 def _susceptibilities(surface_for: SurfaceMaker, problem: Problem, minimum: Minimum) -> dict[str, Susceptibility]:
-    """To the mass and, in a field across the plane, to the shape of the interaction; none without a minimum."""
+    """To the mass and, in a field across the plane, to the interaction's shape, for Coulomb the permittivity's.
+
+    None without a minimum.
+    """
     if not minimum.interior:
         return {}
     causes = {"mass": with_deformed_mass}
     if problem.tilt is None:
         causes["interaction"] = with_deformed_interaction
-    return {name: susceptibility(surface_for, problem, minimum.metric, cause) for name, cause in causes.items()}
+    found = {name: susceptibility(surface_for, problem, minimum.metric, cause) for name, cause in causes.items()}
+    if isinstance(problem.interaction, Coulomb) and "interaction" in found:
+        # Stretching 1/r as a whole is what an anisotropic permittivity does.
+        found["dielectric"] = found["interaction"]
+    return found
 
 
 def _curve(surface: Surface, minimum: Minimum, angle: float, stretches: Array) -> EnergyCurve:
