@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
-from fractions import Fraction
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,7 +23,8 @@ from mcgeo.kernels.laughlin_torus import (
     log_weights,
     refresh_phases,
 )
-from mcgeo.states.base import BOSONS, FERMIONS, Array, OnTorus
+from mcgeo.states.base import Array, OnTorus
+from mcgeo.states.liquids import LaughlinLiquid
 
 _PROPOSALS_PER_VISIT = 2
 
@@ -66,7 +66,7 @@ class LaughlinGroup:
 
 
 @dataclass(frozen=True, eq=False)
-class Laughlin(OnTorus):
+class Laughlin(LaughlinLiquid, OnTorus):
     """Laughlin 1/m of ``n_electrons`` on ``frame``; see `mcgeo.states.base.TrialState`.
 
     Raises
@@ -94,16 +94,6 @@ class Laughlin(OnTorus):
     def label(self) -> str:
         """Laughlin 1/m."""
         return f"Laughlin {self.filling}"
-
-    @property
-    def filling(self) -> Fraction:
-        """1/m."""
-        return Fraction(1, self.exponent)
-
-    @property
-    def statistics(self) -> str:
-        """Fermions for odd m."""
-        return FERMIONS if self.exponent % 2 else BOSONS
 
     @property
     def shift(self) -> int:

@@ -5,7 +5,6 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from fractions import Fraction
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,8 +13,9 @@ from mcgeo.geometry.ellipse import NeutralisingEllipse
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.laughlin_disk import advance, log_weights
-from mcgeo.states.base import BOSONS, FERMIONS, Array
+from mcgeo.states.base import Array
 from mcgeo.states.droplet import uniform_in_disk
+from mcgeo.states.liquids import LaughlinLiquid
 
 _PROPOSALS_PER_VISIT = 2
 
@@ -44,7 +44,7 @@ class LaughlinDropletGroup:
 
 
 @dataclass(frozen=True)
-class LaughlinDroplet:
+class LaughlinDroplet(LaughlinLiquid):
     """Droplet of ``n_electrons`` at filling 1/``exponent``; see `mcgeo.states.droplet.DropletState`."""
 
     exponent: int
@@ -60,16 +60,6 @@ class LaughlinDroplet:
     def label(self) -> str:
         """Laughlin droplet 1/m."""
         return f"Laughlin droplet {self.filling}"
-
-    @property
-    def filling(self) -> Fraction:
-        """1/m."""
-        return Fraction(1, self.exponent)
-
-    @property
-    def statistics(self) -> str:
-        """Fermions for odd m."""
-        return FERMIONS if self.exponent % 2 else BOSONS
 
     @property
     def background(self) -> NeutralisingEllipse:

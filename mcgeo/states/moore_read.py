@@ -20,7 +20,6 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
-from fractions import Fraction
 
 import numpy as np
 from numpy.typing import NDArray
@@ -36,7 +35,8 @@ from mcgeo.kernels.moore_read_pairs import (
     moore_read_torus_tables,
 )
 from mcgeo.kernels.moore_read_torus import advance
-from mcgeo.states.base import BOSONS, FERMIONS, Array, OnTorus
+from mcgeo.states.base import Array, OnTorus
+from mcgeo.states.liquids import MooreReadLiquid
 
 
 class MooreReadGroup:
@@ -76,7 +76,7 @@ class MooreReadGroup:
 
 
 @dataclass(frozen=True, eq=False)
-class MooreRead(OnTorus):
+class MooreRead(MooreReadLiquid, OnTorus):
     """Moore-Read state at filling 1/m of ``n_electrons`` on ``frame``; see `mcgeo.states.base.TrialState`.
 
     Parameters
@@ -118,16 +118,6 @@ class MooreRead(OnTorus):
     def label(self) -> str:
         """Moore-Read 1/m; the sector is in the state's keys."""
         return f"Moore-Read {self.filling}"
-
-    @property
-    def filling(self) -> Fraction:
-        """1/m."""
-        return Fraction(1, self.exponent)
-
-    @property
-    def statistics(self) -> str:
-        """Fermions for even m: the Pfaffian is antisymmetric itself."""
-        return BOSONS if self.exponent % 2 else FERMIONS
 
     @property
     def shift(self) -> int:

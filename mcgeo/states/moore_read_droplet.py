@@ -5,7 +5,6 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from fractions import Fraction
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,8 +15,9 @@ from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.kernels.lanes import LANES, aligned_zeros
 from mcgeo.kernels.laughlin_disk import log_weights
 from mcgeo.kernels.moore_read_disk import advance, refresh_inverses
-from mcgeo.states.base import BOSONS, FERMIONS, Array
+from mcgeo.states.base import Array
 from mcgeo.states.droplet import uniform_in_disk
+from mcgeo.states.liquids import MooreReadLiquid
 
 _PROPOSALS_PER_VISIT = 3
 
@@ -59,7 +59,7 @@ class MooreReadDropletGroup:
 
 
 @dataclass(frozen=True)
-class MooreReadDroplet:
+class MooreReadDroplet(MooreReadLiquid):
     """Droplet of an even number of electrons at filling 1/``exponent``; see `mcgeo.states.droplet.DropletState`.
 
     Raises
@@ -85,16 +85,6 @@ class MooreReadDroplet:
     def label(self) -> str:
         """Moore-Read droplet 1/m."""
         return f"Moore-Read droplet {self.filling}"
-
-    @property
-    def filling(self) -> Fraction:
-        """1/m."""
-        return Fraction(1, self.exponent)
-
-    @property
-    def statistics(self) -> str:
-        """Fermions for even m: the Pfaffian is antisymmetric."""
-        return BOSONS if self.exponent % 2 else FERMIONS
 
     @property
     def background(self) -> NeutralisingEllipse:
