@@ -7,8 +7,8 @@ from fractions import Fraction
 from mcgeo.states.base import BOSONS, FERMIONS
 
 
-class LaughlinLiquid:
-    """Laughlin 1/m."""
+class _OneOverExponent:
+    """Filling 1/m of a Jastrow exponent m."""
 
     exponent: int
 
@@ -16,6 +16,10 @@ class LaughlinLiquid:
     def filling(self) -> Fraction:
         """1/m."""
         return Fraction(1, self.exponent)
+
+
+class LaughlinLiquid(_OneOverExponent):
+    """Laughlin 1/m."""
 
     @property
     def statistics(self) -> str:
@@ -23,15 +27,8 @@ class LaughlinLiquid:
         return FERMIONS if self.exponent % 2 else BOSONS
 
 
-class MooreReadLiquid:
+class MooreReadLiquid(_OneOverExponent):
     """Moore-Read 1/m."""
-
-    exponent: int
-
-    @property
-    def filling(self) -> Fraction:
-        """1/m."""
-        return Fraction(1, self.exponent)
 
     @property
     def statistics(self) -> str:
