@@ -109,12 +109,12 @@ def mass_metric(keys: Keys) -> UnimodularMetric:
     return mass_metric_from_ratio(keys["ratio"], angle)
 
 
-def problem_from(keys: Keys) -> Problem:
-    """The projected problem."""
+def problem_from(keys: Keys, interaction: Interaction | None = None) -> Problem:
+    """The projected problem; ``interaction`` where it has been made before."""
     tilt = keys.get("tilt")
     return Problem(
         mass_metric(keys["mass"]),
-        interaction_from(keys["interaction"]),
+        interaction or interaction_from(keys["interaction"]),
         keys["level"],
         None if tilt is None else tilted_field(tilt),
     )

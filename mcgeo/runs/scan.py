@@ -2,23 +2,26 @@
 
 from __future__ import annotations
 
+import dataclasses
+import json
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from mcgeo.errors import ConfigError
-from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
+from mcgeo.estimate.occupations import PairOccupations
+from mcgeo.estimate.statistics import Estimate
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
-from mcgeo.problem.interaction import Coulomb
+from mcgeo.problem.interaction import Coulomb, Interaction
 from mcgeo.problem.problem import Problem
-from mcgeo.runs.build import problem_from, variation_from
+from mcgeo.runs.build import interaction_from, problem_from, variation_from
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.droplet_scan import droplet_surface
 from mcgeo.runs.droplet_summary import droplet_state_summary
+from mcgeo.runs.energy_curve import EnergyCurve, energy_curve
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample_summary import liquid_state_summary
@@ -35,68 +38,117 @@ from mcgeo.variational.susceptibility import (
 )
 from mcgeo.variational.variation import Variation, orbit_estimates, surface_of
 
-Array = NDArray[np.float64]
-
 
 @dataclass(frozen=True, eq=False)
-class EnergyCurve:
-    """E along one direction of the metric.
+class Optimum:
+    """The best metric of one liquid in one problem.
 
     Attributes
     ----------
-    stretch : ndarray, shape (n,)
-        Signed Q along ``angle``: negative means the same |Q| turned by a right angle.
-    angle : float
-        theta in radians.
-    energy, error : ndarray, shape (n,)
-    difference_error : ndarray, shape (n,)
-        Error of E(Q) - E(Q*): the errors along the curve are strongly correlated.
+    problem : Problem
+    variation : Variation
+    surface : Surface
+    minimum : Minimum
+    orbit_stretch, orbit_angle : Estimate
+        Of the Landau orbit at the minimum, radians.
+    response : Response
+    verdict : str
+        ``stable``, ``soft`` or ``unstable``; see `mcgeo.variational.response.shape_verdict`.
     """
-
-    stretch: Array
-    angle: float
-    energy: Array
-    error: Array
-    difference_error: Array
-
-
-@dataclass(frozen=True, eq=False)
-class Scan:
-    """Everything one scan found."""
 
     problem: Problem
     variation: Variation
+    surface: Surface
     minimum: Minimum
     orbit_stretch: Estimate
     orbit_angle: Estimate
     response: Response
-    susceptibilities: Mapping[str, Susceptibility]
     verdict: str
-    surface: Surface
+
+
+@dataclass(frozen=True, eq=False)
+class Scan(Optimum):
+    """Everything one scan found: the optimum, its susceptibilities and the energy along a line."""
+
+    susceptibilities: Mapping[str, Susceptibility]
     curve: EnergyCurve
 
 
-def scan(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
-    """Scan of a liquid or a droplet.
+class SharedAnswers:
+    """What many problems put to one liquid share, kept between calls of `optimum`: interactions and responses.
+
+    Neither depends on the mass; the results are those without it, to the last bit.
+    """
+
+    def __init__(self) -> None:
+        self._interactions: dict[str, Interaction] = {}
+        self._responses: dict[str, Response] = {}
+
+    def problem(self, keys: Mapping[str, Any]) -> Problem:
+        """The problem, its interaction made once."""
+        name = json.dumps(keys["interaction"], sort_keys=True)
+        if name not in self._interactions:
+            self._interactions[name] = interaction_from(keys["interaction"])
+        return problem_from(keys, self._interactions[name])
+
+    def response(self, keys: Mapping[str, Any], surface_for: SurfaceMaker, problem: Problem) -> Response:
+        """Response at the isotropic working point of the problem."""
+        name = json.dumps({key: value for key, value in keys.items() if key != "mass"}, sort_keys=True)
+        if name not in self._responses:
+            self._responses[name] = mass_response(surface_for, problem)
+        return self._responses[name]
+
+
+def optimum(
+    liquid: Liquid | Droplet | PairOccupations, problem_keys: Mapping[str, Any], shared: SharedAnswers | None = None
+) -> Optimum:
+    """The optimum of a liquid, of a droplet or of pair occupations by themselves.
+
+    Parameters
+    ----------
+    liquid : Liquid, Droplet or PairOccupations
+    problem_keys : mapping
+        ``problem`` of a resolved configuration.
+    shared : SharedAnswers, optional
+        Kept by the caller while it puts many problems to this one liquid.
 
     Raises
     ------
     GeometryError
-        If the range of stretches goes farther from the mass metric than the quadrature resolves.
+        If hole and orbit go farther apart than the quadrature resolves.
     ConfigError
         If a droplet has no answer to the problem.
     """
-    problem = problem_from(problem_keys)
-    variation = variation_from(problem_keys)
-
-    def surface_for(other: Problem) -> Surface:
-        if isinstance(liquid, Droplet):
-            return droplet_surface(liquid, other, variation)
-        return surface_of(liquid.occupations, other, variation)
-
+    shared = shared or SharedAnswers()
+    problem, variation = shared.problem(problem_keys), variation_from(problem_keys)
+    surface_for = _surface_maker(liquid, variation)
     surface = surface_for(problem)
     minimum = find_minimum(surface)
-    response = mass_response(surface_for, problem)
+    response = shared.response(problem_keys, surface_for, problem)
+    verdict = shape_verdict(problem, minimum, response)
+    return Optimum(problem, variation, surface, minimum, *orbit_estimates(surface, minimum), response, verdict)
+
+
+def _surface_maker(liquid: Liquid | Droplet | PairOccupations, variation: Variation) -> SurfaceMaker:
+    def surface_for(problem: Problem) -> Surface:
+        if isinstance(liquid, Droplet):
+            return droplet_surface(liquid, problem, variation)
+        occupations = liquid if isinstance(liquid, PairOccupations) else liquid.occupations
+        return surface_of(occupations, problem, variation)
+
+    return surface_for
+
+
+def scan(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
+    """The optimum of a liquid or a droplet, its susceptibilities, and the energy along a line of metrics.
+
+    Raises
+    ------
+    GeometryError, ConfigError
+        As `optimum`.
+    """
+    found = optimum(liquid, problem_keys)
+    problem, minimum = found.problem, found.minimum
     angle = scan_keys["angle_degrees"]
     if angle is not None:
         direction = math.radians(angle)
@@ -105,15 +157,9 @@ def scan(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], scan_keys: M
     span = scan_keys["stretch"]
     stretches = np.linspace(span["from"], span["to"], span["points"])
     return Scan(
-        problem,
-        variation,
-        minimum,
-        *orbit_estimates(surface, minimum),
-        response,
-        _susceptibilities(surface_for, problem, minimum),
-        shape_verdict(problem, minimum, response),
-        surface,
-        _curve(surface, minimum, direction, stretches),
+        **{field.name: getattr(found, field.name) for field in dataclasses.fields(found)},
+        susceptibilities=_susceptibilities(_surface_maker(liquid, found.variation), problem, minimum),
+        curve=energy_curve(found.surface, minimum, direction, stretches),
     )
 
 
@@ -157,18 +203,6 @@ def _susceptibilities(surface_for: SurfaceMaker, problem: Problem, minimum: Mini
     return found
 
 
-def _curve(surface: Surface, minimum: Minimum, angle: float, stretches: Array) -> EnergyCurve:
-    at_minimum = surface.sample_energies(minimum.metric)
-    samples = np.stack([surface.sample_energies(UnimodularMetric(q, angle)) for q in stretches], axis=-1)
-    return EnergyCurve(
-        stretches,
-        angle,
-        samples.mean(axis=0),
-        jackknife_error(jackknife_means(samples)),
-        jackknife_error(jackknife_means(samples - at_minimum[:, None])),
-    )
-
-
 def estimate_pair(name: str, estimate: Estimate) -> dict[str, float]:
     """``name`` and ``name_error``."""
     return {name: estimate.value, f"{name}_error": estimate.error}
@@ -192,9 +226,18 @@ def problem_summary(problem: Problem, keys: Mapping[str, Any]) -> dict[str, Any]
     }
 
 
-def optimum_summary(found: Scan) -> dict[str, Any]:
-    """``optimum`` of the JSON output; the error of an angle without meaning (a circle's) is infinite, null in JSON."""
+def optimum_summary(found: Optimum) -> dict[str, Any]:
+    """``optimum`` of the JSON output; the error of an angle without meaning (a circle's) is infinite, null in JSON.
+
+    ``susceptibility`` is among its keys where the optimum is that of a `Scan`.
+    """
     m = found.minimum
+    susceptibilities = {}
+    if isinstance(found, Scan):
+        susceptibilities["susceptibility"] = {
+            name: {"matrix": value.matrix.tolist(), "error": value.error.tolist()}
+            for name, value in found.susceptibilities.items()
+        }
     return {
         **estimate_pair("stretch", m.stretch),
         "angle_degrees": math.degrees(m.angle.value),
@@ -210,10 +253,7 @@ def optimum_summary(found: Scan) -> dict[str, Any]:
         "isotropic_stiffness": found.response.isotropic_stiffness.value,
         "isotropic_stiffness_error": found.response.isotropic_stiffness.error,
         **estimate_pair("response", found.response.response),
-        "susceptibility": {
-            name: {"matrix": value.matrix.tolist(), "error": value.error.tolist()}
-            for name, value in found.susceptibilities.items()
-        },
+        **susceptibilities,
         **estimate_pair("orbit_stretch", found.orbit_stretch),
         "orbit_angle_degrees": math.degrees(found.orbit_angle.value),
         "orbit_angle_error": math.degrees(found.orbit_angle.error),
