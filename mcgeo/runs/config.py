@@ -23,6 +23,9 @@ from mcgeo.runs.table_file import FOLDER
 from mcgeo.runs.tilt_config import tilt_remarks
 from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
 
+# Keys of ``sampling`` that say how a run is done and change none of its results.
+UNRELATED_TO_RESULTS = ("threads", "checkpoint_seconds")
+
 
 class Config(Group):
     """Everything a run is told."""
@@ -172,13 +175,14 @@ def config_from_resolved(data: Mapping[str, Any]) -> Config:
 def state_identity(config: Config) -> dict[str, Any]:
     """The part of the resolved configuration that determines a sampling: state, geometry, cell and sampling.
 
-    The number of threads is left out, because results do not depend on it.
+    Keys that results do not depend on are left out.
     """
     data = resolved(config)
     identity: dict[str, Any] = {
         key: data[key] for key in ("state", "geometry", "cell", "sampling") if key in data
     }
-    del identity["sampling"]["threads"]
+    for key in UNRELATED_TO_RESULTS:
+        del identity["sampling"][key]
     return identity
 
 

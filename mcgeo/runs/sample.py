@@ -12,10 +12,11 @@ import numpy as np
 
 from mcgeo.errors import RunInterrupted, StorageError
 from mcgeo.runs.build import schedule_from
-from mcgeo.runs.config import Config, differing_keys, resolved
+from mcgeo.runs.config import UNRELATED_TO_RESULTS, Config, differing_keys, resolved
 from mcgeo.runs.experiment import experiment_of, result_class
 from mcgeo.runs.progress import Progress, say
 from mcgeo.runs.sampled import Blocks, Sampled
+from mcgeo.runs.save_clock import SaveClock
 from mcgeo.runs.signals import StopFlag, stop_on_signals
 from mcgeo.runs.storage import read_result, require_writable, write_result
 from mcgeo.sampling.blocks import BlockRecord, Interrupted
@@ -23,7 +24,6 @@ from mcgeo.sampling.chain import equilibrated, next_block
 
 LIQUID_FILE = "liquid.h5"
 _SECTIONS = ("state", "geometry", "cell", "sampling")
-_SECONDS_BETWEEN_SAVES = 60.0
 
 
 def sample(config: Config, folder: Path, *, overwrite: bool = False, quiet: bool = False) -> Sampled:
@@ -55,11 +55,12 @@ def sample(config: Config, folder: Path, *, overwrite: bool = False, quiet: bool
 
 
 def _require_same(path: Path, keys: dict[str, Any], earlier: Sampled) -> None:
-    """Threads do not matter, and a seed left open agrees with whichever was drawn."""
+    """What changes no result does not matter, and a seed left open agrees with whichever was drawn."""
     stored = {section: dict(earlier.resolved.get(section) or {}) for section in _SECTIONS}
     wanted = {section: dict(keys.get(section) or {}) for section in _SECTIONS}
     for group in (stored, wanted):
-        group["sampling"].pop("threads", None)
+        for key in UNRELATED_TO_RESULTS:
+            group["sampling"].pop(key, None)
         if keys["sampling"]["seed"] is None:
             group["sampling"].pop("seed", None)
     differences = differing_keys(stored, wanted, _SECTIONS)
@@ -88,7 +89,7 @@ class _Run:
         n_blocks = self._schedules[0].n_blocks
         with stop_on_signals() as stop:
             self._equilibrate(stop)
-            last_save = time.monotonic()
+            clock = SaveClock(self._keys["sampling"]["checkpoint_seconds"])
             done = self._chains[0].blocks_done
             with Progress(n_blocks, done, self._quiet) as progress:
                 for block in range(done, n_blocks):
@@ -99,9 +100,9 @@ class _Run:
                         self._give_up(stop, block)
                     self._seconds += time.monotonic() - started
                     progress.step(f"acceptance {np.mean([r.accepted.mean() for r in self._records[-1]]):.3f}")
-                    if time.monotonic() - last_save > _SECONDS_BETWEEN_SAVES:
-                        self._save(complete=False)
-                        last_save = time.monotonic()
+                    if clock.due:
+                        with clock.writing():
+                            self._save(complete=False)
         return self._save(complete=True)
 
     def _equilibrate(self, stop: StopFlag) -> None:

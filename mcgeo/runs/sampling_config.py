@@ -36,6 +36,11 @@ class SamplingConfig(Group):
         default=None,
         description="Threads; null: the cores this process may use. Results do not depend on it [1].",
     )
+    checkpoint_seconds: Annotated[Real, Field(ge=0.0)] = Field(
+        default=60.0,
+        description="Time between two checkpoints of a running sampling; more when writing one takes over a "
+        "twentieth of it. Results do not depend on it [s].",
+    )
     q_max: Annotated[Real, Field(ge=4.0, le=12.0)] = Field(
         default=8.0, description="Largest wavevector, in the state's metric, of the structure factor [1/l_B]."
     )

@@ -46,6 +46,7 @@ def test_a_state_is_all_that_is_needed(write):
             "step": None,
             "seed": 1,
             "threads": None,
+            "checkpoint_seconds": 60.0,
             "q_max": 8.0,
         },
         "material": None,
@@ -123,13 +124,13 @@ def test_configurations_made_in_python_are_held_to_the_same_rules():
 def test_identity_of_a_sampling(write):
     first = load_config(write(LAUGHLIN))
     second = load_config(
-        write(LAUGHLIN + "sampling: {threads: 2}\nproblem: {level: 1}\nscan: {angle_degrees: 0}\n")
+        write(LAUGHLIN + "sampling: {threads: 2, checkpoint_seconds: 5}\nproblem: {level: 1}\nscan: {road: torus}\n")
     )
     other = load_config(write(LAUGHLIN + "sampling: {seed: 2}\n"))
     assert state_identity(first) == state_identity(second)
     assert state_identity(first) != state_identity(other)
     assert set(state_identity(first)) == {"state", "geometry", "cell", "sampling"}
-    assert "threads" not in state_identity(first)["sampling"]
+    assert not {"threads", "checkpoint_seconds"} & set(state_identity(first)["sampling"])
 
 
 def test_differing_keys_name_both_values(write):
