@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import secrets
 import time
-from contextlib import suppress
 from pathlib import Path
 from typing import Any, NoReturn
 
@@ -14,11 +13,12 @@ from mcgeo.errors import RunInterrupted, StorageError
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.config import UNRELATED_TO_RESULTS, Config, differing_keys, resolved
 from mcgeo.runs.experiment import experiment_of, result_class
+from mcgeo.runs.lock import run_lock
 from mcgeo.runs.progress import Progress, say
 from mcgeo.runs.sampled import Blocks, Sampled
 from mcgeo.runs.save_clock import SaveClock
 from mcgeo.runs.signals import StopFlag, stop_on_signals
-from mcgeo.runs.storage import read_result, require_writable, write_result
+from mcgeo.runs.storage import read_result, write_result
 from mcgeo.sampling.blocks import BlockRecord, Interrupted
 from mcgeo.sampling.chain import equilibrated, next_block
 
@@ -32,26 +32,39 @@ def sample(config: Config, folder: Path, *, overwrite: bool = False, quiet: bool
     Raises
     ------
     StorageError
-        If the folder cannot be written, or holds a liquid of another configuration and ``overwrite`` is not set.
+        If the folder cannot be written, is being written by another process, or holds a liquid of another
+        configuration and ``overwrite`` is not set.
     RunInterrupted
         On Ctrl-C or a request to terminate; whole blocks are in the file.
     """
     path = folder / LIQUID_FILE
     keys = resolved(config)
-    earlier = None
-    if path.exists() and not overwrite:
-        earlier = read_result(path)
-        _require_same(path, keys, earlier)
-        keys["sampling"]["seed"] = earlier.resolved["sampling"]["seed"]
-        if earlier.complete:
-            if not quiet:
-                say(f"{path} holds this liquid already")
-            return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
+    earlier = _earlier(path, keys, overwrite)
+    if earlier is None or not earlier.complete:
+        with run_lock(path):
+            # Another process may have gone on meanwhile.
+            earlier = _earlier(path, keys, overwrite)
+            if earlier is None or not earlier.complete:
+                return _run(keys, path, earlier, quiet)
+    if not quiet:
+        say(f"{path} holds this liquid already")
+    return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
+
+
+def _earlier(path: Path, keys: dict[str, Any], overwrite: bool) -> Sampled | None:
+    """What the folder holds of this liquid; its seed is taken over into ``keys``."""
+    if overwrite or not path.exists():
+        return None
+    earlier = read_result(path)
+    _require_same(path, keys, earlier)
+    keys["sampling"]["seed"] = earlier.resolved["sampling"]["seed"]
+    return earlier
+
+
+def _run(keys: dict[str, Any], path: Path, earlier: Sampled | None, quiet: bool) -> Sampled:
     if keys["sampling"]["seed"] is None:
         keys["sampling"]["seed"] = secrets.randbits(63)
-    run = _Run(keys, path, earlier, quiet)
-    require_writable(folder)
-    return run.finish()
+    return _Run(keys, path, earlier, quiet).finish()
 
 
 def _require_same(path: Path, keys: dict[str, Any], earlier: Sampled) -> None:
@@ -133,8 +146,6 @@ class _Run:
             said = f"{blocks_done} whole blocks are in {self._path}; the same command goes on from there"
         else:
             said = "not one block was whole yet, nothing is kept"
-            with suppress(OSError):
-                self._path.parent.rmdir()
         raise RunInterrupted(f"interrupted: {said}", stop.signal_number)
 
     def _save(self, *, complete: bool) -> Sampled:

@@ -27,22 +27,6 @@ def _versions() -> dict[str, str]:
     return {name: version(name) for name in ("numpy", "numba", "scipy", "h5py")}
 
 
-def require_writable(folder: Path) -> None:
-    """Make the folder, and find out before the sampling whether files can be written there.
-
-    Raises
-    ------
-    StorageError
-        If they cannot.
-    """
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-        with tempfile.TemporaryFile(dir=folder):
-            pass
-    except OSError as fault:
-        raise StorageError(f"{folder}: cannot be written: {fault}; choose another folder with --out") from fault
-
-
 def write_result(path: Path, result: Sampled) -> None:
     """Write the file whole or not at all.
 
