@@ -11,9 +11,9 @@ from typing import Any
 from matplotlib.figure import Figure
 from numpy.typing import ArrayLike
 
-from mcgeo.report.atomic import write_whole
 from mcgeo.report.style import styled
 from mcgeo.report.tables import csv_bytes
+from mcgeo.runs.atomic import write_whole
 
 # The font library warns of the missing time stamps that make files reproducible.
 logging.getLogger("fontTools").setLevel(logging.ERROR)

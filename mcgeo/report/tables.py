@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from mcgeo.report.atomic import write_whole
+from mcgeo.runs.atomic import write_whole
 
 
 def map_table(x: ArrayLike, y: ArrayLike, values: ArrayLike, headings: tuple[str, str, str]) -> dict[str, NDArray[Any]]:

@@ -19,6 +19,7 @@ from mcgeo.runs.material_config import MaterialConfig
 from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
 from mcgeo.runs.sampling_config import SamplingConfig
 from mcgeo.runs.state_config import StateConfig
+from mcgeo.runs.sweep_config import SweepConfig
 from mcgeo.runs.table_file import FOLDER
 from mcgeo.runs.tilt_config import tilt_remarks
 from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
@@ -43,6 +44,10 @@ class Config(Group):
     problem: ProblemConfig = Field(default=ProblemConfig(), description="Mass, interaction and level.")
     scan: ScanConfig = Field(
         default=ScanConfig(), description="Hole metrics at which the energy is tabulated."
+    )
+    # What a run is told holds for one point: the grid is no part of it and is left out when it is written.
+    sweep: SweepConfig | None = Field(
+        default=None, exclude=True, description="Grid of many configurations; null: this one alone."
     )
 
     @model_validator(mode="before")
@@ -127,14 +132,24 @@ def load_config(path: str | os.PathLike[str]) -> Config:
         order of the file.
     """
     source, faults = parse_yaml(path)
-    config, remarks = _validate(source.data, Path(path).parent)
+    if source.data.get("sweep") is not None:
+        fault = Fault(source.locate(("sweep",), at_key=True), ("sweep",), "here are many runs; use mcgeo sweep or check")
+        raise ConfigError([fault.line(source.path)])
+    config, remarks = validated(source.data, Path(path).parent)
     faults += [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks]
     if config is None or faults:
         raise ConfigError([fault.line(source.path) for fault in sorted(faults, key=lambda fault: fault.mark)])
     return config
 
 
-def _validate(data: Mapping[str, Any], folder: Path = Path()) -> tuple[Config | None, list[Remark]]:
+def validated(data: Mapping[str, Any], folder: Path = Path()) -> tuple[Config | None, list[Remark]]:
+    """The configuration of plain data, or None and what is wrong with them.
+
+    Parameters
+    ----------
+    folder : Path
+        Where files named in the configuration are looked for.
+    """
     context = {FOLDER: folder}
     try:
         return Config.model_validate(data, context=context), []
@@ -164,7 +179,7 @@ def config_from_resolved(data: Mapping[str, Any]) -> Config:
     ConfigError
         With one line ``key.path: what is wrong`` per fault, if the data are not of a valid configuration.
     """
-    config, remarks = _validate(data)
+    config, remarks = validated(data)
     if config is None:
         raise ConfigError(
             [f"{dotted(remark.path) or 'configuration'}: {remark.message}" for remark in remarks]

@@ -166,10 +166,15 @@ def _form_hint(schema: Schema, root: Schema) -> str:
 def _list_words(schema: Schema, root: Schema, head: str = "a list") -> str:
     entries = [_deref(entry, root) for entry in schema.get("prefixItems") or [schema["items"]]]
     count = f"{len(entries)} " if "prefixItems" in schema else ""
+    if not entries[0]:
+        return f"{head} of values"
+    if "oneOf" in entries[0]:
+        return f"{head} of groups of keys{_form_hint(entries[0], root)}"
     if entries[0]["type"] == "array":
         return f"{head} of {count}{_list_words(entries[0], root, 'lists')}"
     if entries[0]["type"] == "object":
-        return f"{head} of {count}groups of keys ({', '.join(entries[0]['properties'])})"
+        listed = ", ".join(entries[0].get("properties", ()))
+        return f"{head} of {count}groups of keys{f' ({listed})' if listed else ''}"
     return f"{head} of {count}{'whole ' if entries[0]['type'] == 'integer' else ''}numbers"
 
 

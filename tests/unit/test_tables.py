@@ -10,9 +10,9 @@ import numpy as np
 import pytest
 
 from mcgeo.estimate.statistics import Estimate
-from mcgeo.report.atomic import write_whole
 from mcgeo.report.numbers import degrees_with_error, value_with_error
 from mcgeo.report.tables import json_ready, map_table, write_csv, write_json
+from mcgeo.runs.atomic import write_whole
 
 
 @pytest.mark.parametrize(

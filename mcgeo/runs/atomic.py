@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import uuid
 from pathlib import Path
 
 
@@ -17,7 +18,8 @@ def write_whole(path: Path, data: bytes) -> None:
         If the folder cannot be written.
     """
     path.parent.mkdir(parents=True, exist_ok=True)
-    temporary = path.with_name(f".{path.name}.{os.getpid()}.part")
+    # Processes of several machines may write the same file on a shared disk: a process number would not do.
+    temporary = path.with_name(f".{path.name}.{uuid.uuid4().hex}.part")
     try:
         temporary.write_bytes(data)
         os.replace(temporary, path)
