@@ -133,7 +133,7 @@ def load_config(path: str | os.PathLike[str]) -> Config:
     """
     source, faults = parse_yaml(path)
     if source.data.get("sweep") is not None:
-        fault = Fault(source.locate(("sweep",), at_key=True), ("sweep",), "here are many runs; use mcgeo sweep or check")
+        fault = Fault(source.locate(("sweep",), at_key=True), ("sweep",), "makes many runs of this; use mcgeo sweep")
         raise ConfigError([fault.line(source.path)])
     config, remarks = validated(source.data, Path(path).parent)
     faults += [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks]

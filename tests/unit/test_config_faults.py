@@ -258,8 +258,8 @@ def test_long_values_are_cut_in_messages(write):
         (
             None,
             [
-                "configuration: must be a group of keys (state, geometry, cell, sampling, material, problem, scan, sweep), "
-                "not null"
+                "configuration: must be a group of keys (state, geometry, cell, sampling, material, problem, scan, "
+                "sweep), not null"
             ],
         ),
         (

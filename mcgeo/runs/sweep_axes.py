@@ -1,0 +1,296 @@
+"""Axes of a sweep: the values that keys of the configuration take, and where the file says so."""
+
+from __future__ import annotations
+
+import csv
+import io
+import math
+import re
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path as FilePath
+from typing import Any
+
+from pydantic_core import PydanticCustomError
+
+from mcgeo.runs.config_faults import Remark
+from mcgeo.runs.material_table import path_inside
+from mcgeo.runs.sweep_config import (
+    AxisConfig,
+    FileAxisConfig,
+    ListAxisConfig,
+    RangeAxisConfig,
+    SingleAxisConfig,
+    SweepConfig,
+    TogetherAxisConfig,
+)
+from mcgeo.runs.yaml_nodes import looks_like_number
+from mcgeo.runs.yaml_source import Path
+
+_STEP = re.compile(r"([^.\[\]]+)((?:\[[0-9]+\])*)")
+# Digits kept of the values of a range: its rounding would else show in tables and file names.
+_DIGITS = 12
+_MAX_BYTES = 10_000_000
+_NOT_SWEPT = {
+    "sweep": "a sweep cannot hold another",
+    "sampling.threads": "threads do not change a result; give them once, in sampling or by --threads",
+}
+_WORDS = {"true": True, "false": False, "null": None}
+
+
+@dataclass(frozen=True)
+class SweptKey:
+    """One key of an axis.
+
+    Attributes
+    ----------
+    name : str
+        As written, ``problem.mass.ratio``.
+    path : tuple
+        Its steps, whole numbers for positions in lists.
+    values : tuple
+        One per position along the axis.
+    place : tuple
+        Path in the file of the entry that says so.
+    """
+
+    name: str
+    path: Path
+    values: tuple[Any, ...]
+    place: Path
+
+
+@dataclass(frozen=True)
+class Axis:
+    """One dimension of a sweep: a key, or several that change together.
+
+    Attributes
+    ----------
+    keys : tuple of SweptKey
+        All with as many values.
+    spacing : str
+        ``linear``, ``logarithmic``, ``list`` or ``file``.
+    """
+
+    keys: tuple[SweptKey, ...]
+    spacing: str
+
+    @property
+    def name(self) -> str:
+        """Of the dimension: its first key."""
+        return self.keys[0].name
+
+    def __len__(self) -> int:
+        return len(self.keys[0].values)
+
+
+def key_path(name: str) -> Path:
+    """Steps of a key: ``problem.interaction.terms[0].weight`` gives five.
+
+    Raises
+    ------
+    ValueError
+        If the text is no key.
+    """
+    steps: list[str | int] = []
+    for part in name.split("."):
+        match = _STEP.fullmatch(part)
+        if match is None:
+            raise ValueError(name)
+        steps += [match[1], *(int(position) for position in re.findall("[0-9]+", match[2]))]
+    return tuple(steps)
+
+
+def range_values(keys: RangeAxisConfig) -> tuple[float, ...]:
+    """Values of a range, both ends exactly as given."""
+    first, last, n = keys.from_, keys.to, keys.points
+    if keys.spacing == "logarithmic":
+        inner = [first * (last / first) ** (i / (n - 1)) for i in range(1, n - 1)]
+    else:
+        inner = [first + (last - first) * (i / (n - 1)) for i in range(1, n - 1)]
+    return (first, *(float(f"{value:.{_DIGITS}g}") for value in inner), last)
+
+
+def axes_of(sweep: SweepConfig, folder: FilePath) -> tuple[list[Axis], list[Remark]]:
+    """The axes, and what is wrong with them; paths of remarks are those of the file."""
+    axes: list[Axis] = []
+    remarks: list[Remark] = []
+    for position, keys in enumerate(sweep.axes):
+        try:
+            axes.append(_axis(keys, ("sweep", "axes", position), folder))
+        except _AxisFault as fault:
+            remarks.append(fault.remark)
+    return axes, [*remarks, *_clashes(axes)]
+
+
+class _AxisFault(Exception):
+    """Carries the remark on an axis that cannot be read."""
+
+    def __init__(self, path: Path, message: str) -> None:
+        super().__init__(message)
+        self.remark = Remark(path, message)
+
+
+def _axis(keys: AxisConfig, place: Path, folder: FilePath) -> Axis:
+    if isinstance(keys, FileAxisConfig):
+        return Axis(tuple(_from_file(keys, place, folder)), "file")
+    if not isinstance(keys, TogetherAxisConfig):
+        return Axis((_single(keys, place),), keys.spacing if isinstance(keys, RangeAxisConfig) else "list")
+    found = [_single(single, (*place, "together", i)) for i, single in enumerate(keys.together)]
+    for key in found[1:]:
+        if len(key.values) != len(found[0].values):
+            raise _AxisFault(
+                key.place,
+                f"{key.name} has {_count(key)}, but {found[0].name}, which changes together with it, has "
+                f"{_count(found[0])}",
+            )
+    return Axis(tuple(found), "list")
+
+
+def _count(key: SweptKey) -> str:
+    return f"{len(key.values)} value{'s' * (len(key.values) != 1)}"
+
+
+def _single(keys: SingleAxisConfig, place: Path) -> SweptKey:
+    values = keys.values if isinstance(keys, ListAxisConfig) else range_values(keys)
+    return _swept_key(keys.key, values, place, (*place, "key"))
+
+
+def _swept_key(name: str, values: tuple[Any, ...], place: Path, key_place: Path) -> SweptKey:
+    try:
+        path = key_path(name)
+    except ValueError:
+        raise _AxisFault(
+            key_place, f"must be a key of the configuration, as problem.mass.ratio, not {name!r}"
+        ) from None
+    for refused, why in _NOT_SWEPT.items():
+        if name == refused or name.startswith(f"{refused}."):
+            raise _AxisFault(key_place, f"{name} cannot take part: {why}")
+    return SweptKey(name, path, values, place)
+
+
+def _from_file(keys: FileAxisConfig, place: Path, folder: FilePath) -> Iterator[SweptKey]:
+    headings, rows = _table(keys.file, (*place, "file"), folder)
+    for name, heading in keys.columns.items():
+        if headings.count(heading) != 1:
+            raise _AxisFault(
+                (*place, "columns", name),
+                f"{keys.file} has {'no' if heading not in headings else 'more than one'} column {heading!r}; "
+                f"its columns are {', '.join(headings)}",
+            )
+        column = headings.index(heading)
+        yield _swept_key(name, tuple(_value(row[column]) for row in rows), place, (*place, "columns", name))
+
+
+def _table(file: str, place: Path, folder: FilePath) -> tuple[list[str], list[list[str]]]:
+    """Headings and rows of a file of comma-separated values; empty lines and those that begin with # are no rows."""
+    try:
+        path = path_inside(file, folder)
+        raw = path.read_bytes()
+        if len(raw) > _MAX_BYTES:
+            raise _AxisFault(place, f"{file}: is larger than {_MAX_BYTES // 1_000_000} MB")
+        text = raw.decode("utf-8-sig")
+        lines = [line for line in text.splitlines() if line.strip() and not line.startswith("#")]
+        table = [[cell.strip() for cell in row] for row in csv.reader(io.StringIO("\n".join(lines)), strict=True)]
+    except PydanticCustomError as error:
+        raise _AxisFault(place, error.message()) from None
+    except OSError as error:
+        raise _AxisFault(place, f"{file}: cannot be read: {error.strerror}") from None
+    except (UnicodeDecodeError, csv.Error) as error:
+        raise _AxisFault(place, f"{file}: is no UTF-8 text of comma-separated values: {error}") from None
+    if len(table) < 2:
+        raise _AxisFault(place, f"{file}: needs a line of headings and at least one row")
+    for number, row in enumerate(table[1:], start=1):
+        if len(row) != len(table[0]):
+            raise _AxisFault(place, f"{file}: row {number} has {len(row)} entries, the headings have {len(table[0])}")
+    return table[0], table[1:]
+
+
+def _value(cell: str) -> Any:
+    if looks_like_number(cell):
+        number = float(cell)
+        return int(cell) if number.is_integer() and re.fullmatch("[-+]?[0-9]+", cell) else number
+    return _WORDS.get(cell, cell)
+
+
+def _clashes(axes: list[Axis]) -> Iterator[Remark]:
+    """A key swept twice, or one that would wipe out what an earlier one set inside it."""
+    earlier: list[SweptKey] = []
+    for key in (key for axis in axes for key in axis.keys):
+        for other in earlier:
+            if key.path == other.path:
+                yield Remark(key.place, f"{key.name} is swept twice; put all its values on one axis")
+            elif other.path[: len(key.path)] == key.path:
+                yield Remark(key.place, f"{key.name} holds {other.name}, an earlier axis; put that axis after this one")
+        earlier.append(key)
+
+
+def replaced(tree: Any, path: Path, value: Any) -> Any:
+    """The tree with another value at a path, copied along it; groups that are missing are made.
+
+    Raises
+    ------
+    KeyError
+        If a list is too short, or something that is no group or list stands on the way.
+    """
+    if not path:
+        return value
+    step = path[0]
+    if isinstance(step, int):
+        if not isinstance(tree, list | tuple) or step >= len(tree):
+            raise KeyError(step)
+        return [*tree[:step], replaced(tree[step], path[1:], value), *tree[step + 1 :]]
+    if tree is None:
+        tree = {}
+    if not isinstance(tree, Mapping):
+        raise KeyError(step)
+    return {**tree, step: replaced(tree.get(step), path[1:], value)}
+
+
+def same_value(a: Any, b: Any) -> bool:
+    """Equal, numbers up to rounding."""
+    if all(isinstance(value, int | float) and not isinstance(value, bool) for value in (a, b)):
+        return math.isclose(a, b, rel_tol=1e-9, abs_tol=0.0)
+    return bool(a == b)
+
+
+class NoSuchPlaceError(Exception):
+    """A swept key that points into something that is no group, or beyond the end of a list."""
+
+    def __init__(self, key: SweptKey) -> None:
+        super().__init__(key.name)
+        self.key = key
+
+
+def indices_at(shape: Sequence[int], position: int) -> tuple[int, ...]:
+    """Positions along the axes of a position in the grid."""
+    indices = []
+    for length in reversed(shape):
+        position, index = divmod(position, length)
+        indices.append(index)
+    return tuple(reversed(indices))
+
+
+def named_values(axes: Sequence[Axis], indices: Sequence[int]) -> Iterator[tuple[str, Any]]:
+    """Swept keys and their values."""
+    for axis, index in zip(axes, indices, strict=True):
+        for key in axis.keys:
+            yield key.name, key.values[index]
+
+
+def data_at(base: Mapping[str, Any], axes: Sequence[Axis], indices: Sequence[int]) -> Any:
+    """The base with the swept keys replaced.
+
+    Raises
+    ------
+    NoSuchPlaceError
+        If a key points beyond the end of a list, or into something that is no group.
+    """
+    data: Any = base
+    for axis, index in zip(axes, indices, strict=True):
+        for key in axis.keys:
+            try:
+                data = replaced(data, key.path, key.values[index])
+            except KeyError:
+                raise NoSuchPlaceError(key) from None
+    return data
