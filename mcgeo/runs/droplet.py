@@ -11,7 +11,10 @@ from numpy.typing import NDArray
 from mcgeo.estimate.droplet import DropletEnergies, RadialDensity, droplet_energies, radial_density
 from mcgeo.estimate.droplet_occupations import DropletOccupations, fit_droplet_occupations
 from mcgeo.estimate.statistics import Estimate, mean_estimate
+from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import droplet_state
+from mcgeo.runs.droplet_scan import require_droplet_problem
+from mcgeo.runs.run_summary import state_summary
 from mcgeo.runs.sampled import Sampled
 from mcgeo.sampling.droplet_measurement import (
     ELECTRON_BACKGROUND,
@@ -25,7 +28,8 @@ from mcgeo.sampling.droplet_measurement import (
     configurations_counted,
 )
 from mcgeo.states.droplet import DropletState
-from mcgeo.variational.droplet_surface import DropletInteraction
+from mcgeo.variational.droplet_surface import DropletInteraction, DropletSurface
+from mcgeo.variational.variation import Variation
 
 Array = NDArray[np.float64]
 
@@ -96,3 +100,18 @@ class Droplet(Sampled):
     def interaction(self) -> DropletInteraction:
         """Energies for any orbit, interaction and metric."""
         return DropletInteraction(self.occupations)
+
+    def state_summary(self) -> dict[str, Any]:
+        """``state`` of the JSON output."""
+        return state_summary(self, self.state, self.state.n_electrons)
+
+    def energy_surface(self, problem: Problem, variation: Variation) -> DropletSurface:
+        """Energy of every sample over the droplet's metric, its background included.
+
+        Raises
+        ------
+        ConfigError
+            As `require_droplet_problem`.
+        """
+        require_droplet_problem(problem, variation)
+        return DropletSurface(self.interaction, problem)

@@ -1,4 +1,4 @@
-"""The energy over the metric of a sampled droplet."""
+"""What a droplet and its background cannot answer."""
 
 from __future__ import annotations
 
@@ -6,8 +6,6 @@ import numpy as np
 
 from mcgeo.errors import ConfigError
 from mcgeo.problem.problem import Problem
-from mcgeo.runs.droplet import Droplet
-from mcgeo.variational.droplet_surface import DropletSurface
 from mcgeo.variational.variation import PROJECTED, Variation
 
 _ANY_WAVE = np.array([[0.7, 0.4]])
@@ -34,15 +32,3 @@ def require_droplet_problem(problem: Problem, variation: Variation) -> None:
         )
     if faults:
         raise ConfigError(faults)
-
-
-def droplet_surface(droplet: Droplet, problem: Problem, variation: Variation) -> DropletSurface:
-    """Energy surface of a droplet.
-
-    Raises
-    ------
-    ConfigError
-        As `require_droplet_problem`.
-    """
-    require_droplet_problem(problem, variation)
-    return DropletSurface(droplet.interaction, problem)

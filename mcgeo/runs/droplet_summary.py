@@ -5,13 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 from mcgeo.runs.droplet import Droplet
-from mcgeo.runs.run_summary import diagnostics_summary, run_summary, state_summary
+from mcgeo.runs.run_summary import run_summary
 from mcgeo.states.droplet import mean_square_radius
-
-
-def droplet_state_summary(droplet: Droplet) -> dict[str, Any]:
-    """``state`` of the JSON output."""
-    return state_summary(droplet, droplet.state, droplet.state.n_electrons)
 
 
 def droplet_summary(droplet: Droplet) -> dict[str, Any]:
@@ -19,7 +14,7 @@ def droplet_summary(droplet: Droplet) -> dict[str, Any]:
     energies = droplet.energies
     xx, yy, xy = droplet.second_moments
     return {
-        "state": droplet_state_summary(droplet),
+        "state": droplet.state_summary(),
         "interaction": "Coulomb",
         "energy_disk": {
             **energies.total.as_dict(),
@@ -34,5 +29,5 @@ def droplet_summary(droplet: Droplet) -> dict[str, Any]:
         "second_moments": {"xx": xx.as_dict(), "yy": yy.as_dict(), "xy": xy.as_dict()},
         "mean_square_radius_exact": mean_square_radius(droplet.state),
         **run_summary(droplet),
-        "diagnostics": diagnostics_summary(droplet),
+        "diagnostics": droplet.diagnostics_summary(),
     }

@@ -15,10 +15,14 @@ from mcgeo.estimate.statistics import Estimate, mean_estimate
 from mcgeo.estimate.torus_energy import torus_energy
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.problem.interaction import Coulomb, Interaction
+from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import torus_frame, torus_states
+from mcgeo.runs.run_summary import state_summary
 from mcgeo.runs.sampled import Sampled
 from mcgeo.sampling.measurement import BIN_WIDTH, CONTROLS, PAIRS, STRUCTURE, configurations_counted
 from mcgeo.states.base import TrialState
+from mcgeo.variational.energy_surface import Surface
+from mcgeo.variational.variation import Variation, surface_of
 
 Array = NDArray[np.float64]
 
@@ -131,6 +135,14 @@ class Liquid(Sampled):
         """Pair occupations of the liquid asked for, with their samples."""
         fitted = fit_occupations(self.states[0], self.norm, self._sampled_structure)
         return conjugate_occupations(fitted) if self.is_conjugate else fitted
+
+    def state_summary(self) -> dict[str, Any]:
+        """``state`` of the JSON output."""
+        return state_summary(self, self.occupations, self.n_electrons)
+
+    def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
+        """Energy of every sample over the hole's metric, of the infinite liquid."""
+        return surface_of(self.occupations, problem, variation)
 
     def torus_energy(self, interaction: Interaction) -> Estimate:
         """Energy per electron of the sampled state on its cell, straight from S(q)."""

@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from fractions import Fraction
-from typing import Any, Protocol
+from typing import TYPE_CHECKING, Any, Protocol
 
-from mcgeo.runs.sampled import Sampled
+if TYPE_CHECKING:
+    from mcgeo.runs.sampled import Sampled
 
 
 class Described(Protocol):

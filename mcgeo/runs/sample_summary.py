@@ -9,13 +9,8 @@ from mcgeo.problem.landau_level import LOWEST
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import interaction_from
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.run_summary import diagnostics_summary, run_summary, state_summary
+from mcgeo.runs.run_summary import run_summary
 from mcgeo.variational.energy_surface import EnergySurface
-
-
-def liquid_state_summary(liquid: Liquid) -> dict[str, Any]:
-    """``state`` of the JSON output."""
-    return state_summary(liquid, liquid.occupations, liquid.n_electrons)
 
 
 def sample_summary(liquid: Liquid) -> dict[str, Any]:
@@ -32,7 +27,7 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
     plane = mean_estimate(surface.sample_energies(metric))
     filling = float(occupations.filling)
     return {
-        "state": liquid_state_summary(liquid),
+        "state": liquid.state_summary(),
         "interaction": interaction.name,
         "energy_torus": liquid.torus_energy(interaction).as_dict(),
         "energy_plane": plane.as_dict(),
@@ -41,5 +36,5 @@ def sample_summary(liquid: Liquid) -> dict[str, Any]:
             {"m": int(m), **occupations.occupation(index).as_dict()} for index, m in enumerate(occupations.m)
         ],
         **run_summary(liquid),
-        "diagnostics": diagnostics_summary(liquid),
+        "diagnostics": liquid.diagnostics_summary(),
     }

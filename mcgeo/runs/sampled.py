@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from mcgeo.estimate.diagnostics import Diagnostics, diagnose
 from mcgeo.estimate.statistics import independent_samples, integrated_autocorrelation_time
 from mcgeo.runs.build import schedule_from
+from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.sampling.blocks import BlockRecord
 from mcgeo.sampling.chain import ChainState, Schedule
 from mcgeo.states.base import SampledState
@@ -143,6 +144,10 @@ class Sampled(ABC):
     def control_summary(self) -> Mapping[str, Any]:
         """What the diagnostics say of control variates; nothing where none were measured."""
         return {}
+
+    def diagnostics_summary(self) -> dict[str, Any]:
+        """``diagnostics`` of the JSON output."""
+        return diagnostics_summary(self)
 
     @property
     def moves(self) -> int:

@@ -18,13 +18,8 @@ from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.interaction import Coulomb, Interaction
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import interaction_from, problem_from, variation_from
-from mcgeo.runs.droplet import Droplet
-from mcgeo.runs.droplet_scan import droplet_surface
-from mcgeo.runs.droplet_summary import droplet_state_summary
 from mcgeo.runs.energy_curve import EnergyCurve, energy_curve
-from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.run_summary import diagnostics_summary
-from mcgeo.runs.sample_summary import liquid_state_summary
+from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.table_file import without_contents
 from mcgeo.variational.energy_surface import LARGEST_DISTANCE, Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
@@ -100,13 +95,13 @@ class SharedAnswers:
 
 
 def optimum(
-    liquid: Liquid | Droplet | PairOccupations, problem_keys: Mapping[str, Any], shared: SharedAnswers | None = None
+    liquid: Scannable | PairOccupations, problem_keys: Mapping[str, Any], shared: SharedAnswers | None = None
 ) -> Optimum:
-    """The optimum of a liquid, of a droplet or of pair occupations by themselves.
+    """The optimum of a liquid, or of pair occupations by themselves.
 
     Parameters
     ----------
-    liquid : Liquid, Droplet or PairOccupations
+    liquid : Scannable or PairOccupations
     problem_keys : mapping
         ``problem`` of a resolved configuration.
     shared : SharedAnswers, optional
@@ -129,17 +124,16 @@ def optimum(
     return Optimum(problem, variation, surface, minimum, *orbit_estimates(surface, minimum), response, verdict)
 
 
-def _surface_maker(liquid: Liquid | Droplet | PairOccupations, variation: Variation) -> SurfaceMaker:
+def _surface_maker(liquid: Scannable | PairOccupations, variation: Variation) -> SurfaceMaker:
     def surface_for(problem: Problem) -> Surface:
-        if isinstance(liquid, Droplet):
-            return droplet_surface(liquid, problem, variation)
-        occupations = liquid if isinstance(liquid, PairOccupations) else liquid.occupations
-        return surface_of(occupations, problem, variation)
+        if isinstance(liquid, PairOccupations):
+            return surface_of(liquid, problem, variation)
+        return liquid.energy_surface(problem, variation)
 
     return surface_for
 
 
-def scan(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
+def scan(liquid: Scannable, problem_keys: Mapping[str, Any], scan_keys: Mapping[str, Any]) -> Scan:
     """The optimum of a liquid or a droplet, its susceptibilities, and the energy along a line of metrics.
 
     Raises
@@ -262,11 +256,11 @@ def optimum_summary(found: Optimum) -> dict[str, Any]:
     }
 
 
-def scan_summary(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], found: Scan) -> dict[str, Any]:
+def scan_summary(liquid: Scannable, problem_keys: Mapping[str, Any], found: Scan) -> dict[str, Any]:
     """The JSON object of ``scan``."""
     curve = found.curve
     return {
-        "state": droplet_state_summary(liquid) if isinstance(liquid, Droplet) else liquid_state_summary(liquid),
+        "state": liquid.state_summary(),
         "problem": problem_summary(found.problem, problem_keys),
         "optimum": optimum_summary(found),
         "curve": [
@@ -281,5 +275,5 @@ def scan_summary(liquid: Liquid | Droplet, problem_keys: Mapping[str, Any], foun
                 curve.stretch, curve.energy, curve.error, curve.difference_error, strict=True
             )
         ],
-        "diagnostics": diagnostics_summary(liquid),
+        "diagnostics": liquid.diagnostics_summary(),
     }

@@ -7,8 +7,6 @@ from collections.abc import Mapping
 from typing import Any
 
 from mcgeo.estimate.diagnostics import SHORT
-from mcgeo.runs.run_summary import diagnostics_summary
-from mcgeo.runs.sample_summary import liquid_state_summary
 from mcgeo.runs.scan import estimate_pair, problem_summary
 from mcgeo.runs.torus_road import Comparison, TorusRoad
 
@@ -22,7 +20,7 @@ def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str,
     aspect = math.exp(best.position.value)
     worst = min(road.points, key=lambda point: point.liquid.diagnostics.effective_samples)
     return {
-        "state": {**liquid_state_summary(worst.liquid), "metric": None},
+        "state": {**worst.liquid.state_summary(), "metric": None},
         "road": "torus",
         "problem": problem_summary(road.problem, problem_keys),
         "optimum": {
@@ -48,7 +46,7 @@ def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str,
             }
             for point in road.points
         ],
-        "diagnostics": {**diagnostics_summary(worst.liquid), **_curve_verdict(road)},
+        "diagnostics": {**worst.liquid.diagnostics_summary(), **_curve_verdict(road)},
     }
 
 
