@@ -46,6 +46,9 @@ def build_parser() -> argparse.ArgumentParser:
 
     sample = _command(commands, "sample", "run the walkers, write one result file", "mcgeo sample well.yaml")
     _add_run_options(sample)
+    sample.add_argument(
+        "--extend", type=_positive, metavar="SWEEPS", help="make the finished run longer by whole blocks of its own"
+    )
     scan = _command(
         commands, "scan", "energy over the metric, its minimum, stiffness and response", "mcgeo scan well.yaml --json"
     )

@@ -8,6 +8,7 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
+from mcgeo.errors import ConfigError
 from mcgeo.report.tables import json_ready, write_json
 from mcgeo.report.text import droplet_text, sample_text
 from mcgeo.runs.config import Config, config_from_resolved, load_config
@@ -54,7 +55,10 @@ def run_sample(arguments: argparse.Namespace) -> Answer:
     arguments.config = result_file(arguments.config)
     config = read_config(arguments.config, arguments.threads)
     folder = arguments.out or default_folder(arguments.config)
-    result = sample(config, folder, overwrite=arguments.overwrite, quiet=arguments.quiet)
+    if arguments.extend is not None and arguments.overwrite:
+        raise ConfigError(["--extend keeps what --overwrite throws away; give one of them"])
+    options = {"overwrite": arguments.overwrite, "extend": arguments.extend, "quiet": arguments.quiet}
+    result = sample(config, folder, **options)
     if isinstance(result, Droplet):
         summary, words = droplet_summary(result), droplet_text
     else:

@@ -3,25 +3,71 @@
 from __future__ import annotations
 
 import os
+import socket
 import uuid
+from collections.abc import Iterator
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 
-def write_whole(path: Path, data: bytes) -> None:
-    """Write under a temporary name beside ``path``, then rename; missing folders are made.
+@contextmanager
+def whole_file(path: Path) -> Iterator[Path]:
+    """A name beside ``path`` to write to; the file is on disk and called ``path`` when the context ends well.
 
-    An earlier file of that name stays as it was until the new one is complete, also when writing fails.
+    An earlier file of that name stays as it was until then, also when writing fails. Missing folders are made, and
+    what killed writers of the same file have left is removed.
 
     Raises
     ------
     OSError
-        If the folder cannot be written.
+        If the file cannot be written.
     """
     path.parent.mkdir(parents=True, exist_ok=True)
-    # Processes of several machines may write the same file on a shared disk: a process number would not do.
-    temporary = path.with_name(f".{path.name}.{uuid.uuid4().hex}.part")
+    _remove_left_over(path)
+    # Processes of several machines may write the same file on a shared disk.
+    temporary = path.with_name(f"{_head(path)}{os.getpid()}.{uuid.uuid4().hex}.part")
     try:
-        temporary.write_bytes(data)
+        yield temporary
+        with open(temporary, "rb+") as written:
+            os.fsync(written.fileno())
         os.replace(temporary, path)
     finally:
-        temporary.unlink(missing_ok=True)
+        # A full disk, or a folder that has gone: the fault that led here says more.
+        with suppress(OSError):
+            temporary.unlink(missing_ok=True)
+
+
+def write_whole(path: Path, data: bytes) -> None:
+    """Write a file by `whole_file`.
+
+    Raises
+    ------
+    OSError
+        If it cannot be written.
+    """
+    with whole_file(path) as temporary:
+        temporary.write_bytes(data)
+
+
+def _head(path: Path) -> str:
+    return f".{path.name}.{socket.gethostname()}."
+
+
+def _remove_left_over(path: Path) -> None:
+    """Remove parts of ``path`` whose writers, on this machine, have ended."""
+    head = _head(path)
+    for name in os.listdir(path.parent):
+        if name.startswith(head) and name.endswith(".part"):
+            number = name.removeprefix(head).partition(".")[0]
+            if number.isdecimal() and not _runs(int(number)):
+                path.with_name(name).unlink(missing_ok=True)
+
+
+def _runs(process: int) -> bool:
+    try:
+        os.kill(process, 0)
+    except ProcessLookupError:
+        return False
+    except (PermissionError, OverflowError):
+        pass
+    return True

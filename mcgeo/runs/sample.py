@@ -3,156 +3,98 @@
 from __future__ import annotations
 
 import secrets
-import time
 from pathlib import Path
-from typing import Any, NoReturn
+from typing import Any
 
-import numpy as np
-
-from mcgeo.errors import RunInterrupted, StorageError
-from mcgeo.runs.build import schedule_from
-from mcgeo.runs.config import UNRELATED_TO_RESULTS, Config, differing_keys, resolved
+from mcgeo.runs.config import Config, resolved
 from mcgeo.runs.experiment import experiment_of, result_class
+from mcgeo.runs.length import continued, extended
 from mcgeo.runs.lock import run_lock
-from mcgeo.runs.progress import Progress, say
-from mcgeo.runs.sampled import Blocks, Sampled
-from mcgeo.runs.save_clock import SaveClock
-from mcgeo.runs.signals import StopFlag, stop_on_signals
-from mcgeo.runs.storage import read_result, write_result
-from mcgeo.sampling.blocks import BlockRecord, Interrupted
-from mcgeo.sampling.chain import equilibrated, next_block
+from mcgeo.runs.production import Production, Standing
+from mcgeo.runs.progress import say
+from mcgeo.runs.sampled import Sampled
+from mcgeo.runs.signals import stop_on_signals
+from mcgeo.runs.start import START_FILE, equilibrated_chains, seed_of_start
+from mcgeo.runs.storage import read_result
 
 LIQUID_FILE = "liquid.h5"
-_SECTIONS = ("state", "geometry", "cell", "sampling")
 
 
-def sample(config: Config, folder: Path, *, overwrite: bool = False, quiet: bool = False) -> Sampled:
+def sample(
+    config: Config, folder: Path, *, overwrite: bool = False, extend: int | None = None, quiet: bool = False
+) -> Sampled:
     """The sampled liquid of a configuration: read when it is there, continued when cut short, otherwise run.
+
+    A file with more blocks of the same length than asked for holds the liquid too; one with fewer is continued.
+
+    Parameters
+    ----------
+    config : Config
+    folder : Path
+        Where the result file is, or comes to be.
+    overwrite : bool
+        Start anew, whatever the folder holds.
+    extend : int, optional
+        Sweeps to add to the finished run in the folder, rounded up to whole blocks.
+    quiet : bool
+        Nothing on standard error.
 
     Raises
     ------
     StorageError
         If the folder cannot be written, is being written by another process, or holds a liquid of another
-        configuration and ``overwrite`` is not set.
+        configuration and ``overwrite`` is not set; if there is no finished run to extend.
     RunInterrupted
         On Ctrl-C or a request to terminate; whole blocks are in the file.
     """
     path = folder / LIQUID_FILE
-    keys = resolved(config)
-    earlier = _earlier(path, keys, overwrite)
-    if earlier is None or not earlier.complete:
+    keys, earlier = _joined(config, path, overwrite, extend)
+    if not _whole(keys, earlier):
         with run_lock(path):
             # Another process may have gone on meanwhile.
-            earlier = _earlier(path, keys, overwrite)
-            if earlier is None or not earlier.complete:
+            keys, earlier = _joined(config, path, overwrite, extend)
+            if not _whole(keys, earlier):
                 return _run(keys, path, earlier, quiet)
+    assert earlier is not None
     if not quiet:
-        say(f"{path} holds this liquid already")
+        longer = earlier.n_blocks > config.sampling.blocks
+        said = f", longer: {earlier.n_blocks} blocks where {config.sampling.blocks} are asked for" if longer else ""
+        say(f"{path} holds this liquid already{said}")
     return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
 
 
-def _earlier(path: Path, keys: dict[str, Any], overwrite: bool) -> Sampled | None:
-    """What the folder holds of this liquid; its seed is taken over into ``keys``."""
-    if overwrite or not path.exists():
-        return None
-    earlier = read_result(path)
-    _require_same(path, keys, earlier)
-    keys["sampling"]["seed"] = earlier.resolved["sampling"]["seed"]
-    return earlier
+def _joined(
+    config: Config, path: Path, overwrite: bool, extend: int | None
+) -> tuple[dict[str, Any], Sampled | None]:
+    """Keys of the run to be made, and what the folder holds of it."""
+    keys = resolved(config)
+    earlier = None if overwrite or not path.exists() else read_result(path)
+    if extend is not None:
+        return extended(path, keys, earlier, extend), earlier
+    return (keys if earlier is None else continued(path, keys, earlier)), earlier
+
+
+def _whole(keys: dict[str, Any], earlier: Sampled | None) -> bool:
+    return earlier is not None and earlier.complete and earlier.n_blocks == keys["sampling"]["blocks"]
 
 
 def _run(keys: dict[str, Any], path: Path, earlier: Sampled | None, quiet: bool) -> Sampled:
+    start = path.with_name(START_FILE)
     if keys["sampling"]["seed"] is None:
-        keys["sampling"]["seed"] = secrets.randbits(63)
-    return _Run(keys, path, earlier, quiet).finish()
-
-
-def _require_same(path: Path, keys: dict[str, Any], earlier: Sampled) -> None:
-    """What changes no result does not matter, and a seed left open agrees with whichever was drawn."""
-    stored = {section: dict(earlier.resolved.get(section) or {}) for section in _SECTIONS}
-    wanted = {section: dict(keys.get(section) or {}) for section in _SECTIONS}
-    for group in (stored, wanted):
-        for key in UNRELATED_TO_RESULTS:
-            group["sampling"].pop(key, None)
-        if keys["sampling"]["seed"] is None:
-            group["sampling"].pop("seed", None)
-    differences = differing_keys(stored, wanted, _SECTIONS)
-    if differences:
-        listed = "\n  ".join(differences)
-        raise StorageError(
-            f"{path} holds another liquid (in the file and wanted):\n  {listed}\n"
-            "choose another folder with --out, or replace it with --overwrite"
-        )
-
-
-class _Run:
-    """One run: a chain per component, advanced block by block in turn."""
-
-    def __init__(self, keys: dict[str, Any], path: Path, earlier: Sampled | None, quiet: bool) -> None:
-        self._keys, self._path, self._earlier, self._quiet = keys, path, earlier, quiet
-        self._experiment = experiment_of(keys)
-        states = self._experiment.states
-        self._schedules = [schedule_from(keys, state, index) for index, state in enumerate(states)]
-        self._records: list[list[BlockRecord]] = []
-        self._chains = list(earlier.chains) if earlier is not None else []
-        self._seconds = earlier.seconds if earlier is not None else 0.0
-
-    def finish(self) -> Sampled:
-        """All blocks that are missing."""
-        n_blocks = self._schedules[0].n_blocks
-        with stop_on_signals() as stop:
-            self._equilibrate(stop)
-            clock = SaveClock(self._keys["sampling"]["checkpoint_seconds"])
-            done = self._chains[0].blocks_done
-            with Progress(n_blocks, done, self._quiet) as progress:
-                for block in range(done, n_blocks):
-                    started = time.monotonic()
-                    try:
-                        self._one_block(stop)
-                    except Interrupted:
-                        self._give_up(stop, block)
-                    self._seconds += time.monotonic() - started
-                    progress.step(f"acceptance {np.mean([r.accepted.mean() for r in self._records[-1]]):.3f}")
-                    if clock.due:
-                        with clock.writing():
-                            self._save(complete=False)
-        return self._save(complete=True)
-
-    def _equilibrate(self, stop: StopFlag) -> None:
-        if self._chains:
-            return
-        first = self._schedules[0]
-        if not self._quiet:
-            say(f"equilibrating {first.n_walkers} walkers on {first.threads} threads")
-        for state, schedule in zip(self._experiment.states, self._schedules, strict=True):
-            try:
-                self._chains.append(equilibrated(state, schedule, stop))
-            except Interrupted:
-                self._give_up(stop, 0)
-
-    def _one_block(self, stop: StopFlag) -> None:
-        steps = [
-            next_block(state, measurement, schedule, chain, stop)
-            for state, measurement, schedule, chain in zip(
-                self._experiment.states, self._experiment.measurements, self._schedules, self._chains, strict=True
-            )
-        ]
-        self._chains = [chain for chain, _ in steps]
-        self._records.append([record for _, record in steps])
-
-    def _give_up(self, stop: StopFlag, blocks_done: int) -> NoReturn:
-        if blocks_done:
-            self._save(complete=False)
-            said = f"{blocks_done} whole blocks are in {self._path}; the same command goes on from there"
+        drawn = seed_of_start(start, keys)
+        keys["sampling"]["seed"] = secrets.randbits(63) if drawn is None else drawn
+    experiment = experiment_of(keys)
+    with stop_on_signals() as stop:
+        if earlier is None:
+            standing = Standing(equilibrated_chains(start, keys, experiment, stop, quiet))
         else:
-            said = "not one block was whole yet, nothing is kept"
-        raise RunInterrupted(f"interrupted: {said}", stop.signal_number)
-
-    def _save(self, *, complete: bool) -> Sampled:
-        blocks = Blocks.from_records(self._records, self._experiment.trace_offset) if self._records else None
-        if self._earlier is not None:
-            blocks = self._earlier.blocks.followed_by(blocks) if blocks else self._earlier.blocks
-        assert blocks is not None
-        result = self._experiment.result(self._keys, blocks, self._chains, self._seconds, complete)
-        write_result(self._path, result)
-        return result
+            standing = Standing.of(earlier)
+        extending = earlier is not None and earlier.complete
+        resume = "the same command" + " without --extend" * extending
+        run = Production(keys, path, experiment, standing, quiet=quiet, resume=resume)
+        if extending:
+            # From now on the file says how long it shall be, and whoever comes after a kill goes on to that.
+            run.save(complete=False)
+        result = run.finish(stop)
+    start.unlink(missing_ok=True)
+    return result

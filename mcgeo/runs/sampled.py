@@ -55,12 +55,16 @@ class Blocks:
         def total(name: str) -> NDArray[np.int64]:
             return np.array([np.sum([r.counts[name] for r in block], axis=0) for block in records])
 
+        def by_component(values: list[list[Any]]) -> Array:
+            # In the order in which a file has them: sums over them are then the same to the last bit.
+            return np.ascontiguousarray(np.array(values).swapaxes(0, 1))
+
         return cls(
             {name: mean(name) for name in first.means},
             {name: total(name) for name in first.counts},
-            np.array([[r.trace for r in block] for block in records]).swapaxes(0, 1) + trace_offset,
-            np.array([[r.accepted for r in block] for block in records]).swapaxes(0, 1),
-            np.array([[r.drift for r in block] for block in records]).T,
+            by_component([[r.trace for r in block] for block in records]) + trace_offset,
+            by_component([[r.accepted for r in block] for block in records]),
+            by_component([[r.drift for r in block] for block in records]),
         )
 
     def followed_by(self, later: Blocks) -> Blocks:
@@ -112,6 +116,11 @@ class Sampled(ABC):
     def scaled_axes(self) -> Mapping[str, tuple[str, int]]:
         """Which of `axes` is the scale of which dataset (``means/NAME`` or ``counts/NAME``) along which axis."""
 
+    @property
+    def n_blocks(self) -> int:
+        """Blocks that the file holds."""
+        return int(self.blocks.drift.shape[1])
+
     @cached_property
     def schedule(self) -> Schedule:
         """How the chains ran."""
@@ -153,6 +162,6 @@ class Sampled(ABC):
     def moves(self) -> int:
         """Proposals of the whole production so far."""
         schedule, state = self.schedule, self.sampled_states[0]
-        sweeps = self.blocks.drift.shape[1] * schedule.measurements_per_block * schedule.sweeps_between
+        sweeps = self.n_blocks * schedule.sweeps_per_block
         per_sweep = schedule.n_walkers * state.n_electrons * state.proposals_per_sweep
         return int(len(self.sampled_states) * sweeps * per_sweep)

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import json
-import os
-import tempfile
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
@@ -12,6 +12,7 @@ import h5py
 
 import mcgeo
 from mcgeo.errors import StorageError
+from mcgeo.runs.atomic import whole_file
 from mcgeo.runs.experiment import result_class
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sampled import Blocks, Sampled
@@ -35,20 +36,22 @@ def write_result(path: Path, result: Sampled) -> None:
     StorageError
         If it cannot be written; an older file under the same name is then untouched.
     """
+    with written_file(path) as file:
+        _fill(file, result)
+
+
+@contextmanager
+def written_file(path: Path) -> Iterator[Any]:
+    """An HDF5 file to be filled, there whole or not at all.
+
+    Raises
+    ------
+    StorageError
+        If it cannot be written; an older file under the same name is then untouched.
+    """
     try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        handle, temporary = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
-        os.close(handle)
-        try:
-            with h5py.File(temporary, "w") as file:
-                _fill(file, result)
-            with open(temporary, "rb+") as written:
-                os.fsync(written.fileno())
-            os.chmod(temporary, 0o644)
-            os.replace(temporary, path)
-        finally:
-            if os.path.exists(temporary):
-                os.unlink(temporary)
+        with whole_file(path) as temporary, h5py.File(temporary, "w") as file:
+            yield file
     except OSError as fault:
         raise StorageError(f"{path}: cannot be written: {fault}") from fault
 
@@ -77,7 +80,12 @@ def _fill(file: Any, result: Sampled) -> None:
     _labelled(trace, ("component", "block", "walker", "measurement"))
     _labelled(file.create_dataset("blocks/accepted", data=blocks.accepted), ("component", "block", "walker"))
     _labelled(file.create_dataset("blocks/drift", data=blocks.drift), ("component", "block"))
-    for index, chain in enumerate(result.chains):
+    write_chains(file, result.chains)
+
+
+def write_chains(file: Any, chains: Sequence[ChainState]) -> None:
+    """All that is needed to continue."""
+    for index, chain in enumerate(chains):
         place = file.create_group(f"checkpoint/{index}")
         place["a"], place["b"], place["words"] = chain.walkers.a, chain.walkers.b, chain.walkers.words
         place.attrs["step"] = chain.step
@@ -118,14 +126,19 @@ def _contents(file: Any) -> Sampled:
         stored["accepted"][()],
         stored["drift"][()],
     )
+    resolved = json.loads(file.attrs["config"])
+    seconds, complete = float(file.attrs["seconds"]), bool(file.attrs["complete"])
+    return result_class(resolved)(resolved, blocks, read_chains(file), seconds, complete)
+
+
+def read_chains(file: Any) -> list[ChainState]:
+    """What `write_chains` has written."""
     chains = []
     for index in range(len(file["checkpoint"])):
         place = file["checkpoint"][str(index)]
         arrays = WalkerArrays(place["a"][()], place["b"][()], place["words"][()])
         chains.append(ChainState(arrays, float(place.attrs["step"]), int(place.attrs["blocks_done"])))
-    resolved = json.loads(file.attrs["config"])
-    seconds, complete = float(file.attrs["seconds"]), bool(file.attrs["complete"])
-    return result_class(resolved)(resolved, blocks, chains, seconds, complete)
+    return chains
 
 
 def as_liquid(result: Sampled, path: Path) -> Liquid:

@@ -40,9 +40,14 @@ class Schedule:
     component: int = 0
 
     @property
+    def sweeps_per_block(self) -> int:
+        """Sweeps of a walker in one block."""
+        return self.measurements_per_block * self.sweeps_between
+
+    @property
     def sweeps_per_walker(self) -> int:
         """Sweeps of production."""
-        return self.n_blocks * self.measurements_per_block * self.sweeps_between
+        return self.n_blocks * self.sweeps_per_block
 
 
 @dataclass(frozen=True)

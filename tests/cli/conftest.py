@@ -8,6 +8,8 @@ import sys
 from collections.abc import Callable
 from pathlib import Path
 
+import h5py
+import numpy as np
 import pytest
 
 from mcgeo.cli import main
@@ -73,3 +75,20 @@ def python_process(folder: Path, *arguments: str) -> subprocess.Popen[str]:
         [sys.executable, *arguments], cwd=folder, env=environment, text=True,
         stdout=subprocess.PIPE, stderr=subprocess.PIPE,
     )  # fmt: skip
+
+
+def contents(path: Path) -> dict[str, bytes]:
+    """Every dataset of a file to the last bit, and every attribute but the time it took."""
+    found: dict[str, bytes] = {}
+
+    def note(name: str, item: h5py.Group | h5py.Dataset) -> None:
+        if isinstance(item, h5py.Dataset):
+            found[name] = np.asarray(item[()]).tobytes()
+        for key, value in item.attrs.items():
+            if key not in {"seconds", "REFERENCE_LIST", "DIMENSION_LIST"}:
+                found[f"{name}@{key}"] = repr(value).encode()
+
+    with h5py.File(path) as file:
+        file.visititems(note)
+        note("", file)
+    return found

@@ -8,17 +8,16 @@ import subprocess
 from pathlib import Path
 
 import h5py
-import numpy as np
 import pytest
 
 from mcgeo.cli import main
-from tests.cli.conftest import SMALL, python_process
+from tests.cli.conftest import SMALL, contents, python_process
 
 # The program itself, but for a halt at the fourth block until the signal has come: in mid-run without a race.
 WAIT_IN_FOURTH_BLOCK = """
 import sys, time
-from mcgeo.runs import sample
-advance, blocks = sample.next_block, []
+from mcgeo.runs import production
+advance, blocks = production.next_block, []
 def next_block(*arguments):
     blocks.append(None)
     if len(blocks) == 4:
@@ -26,7 +25,7 @@ def next_block(*arguments):
         while not arguments[-1].is_set():
             time.sleep(0.01)
     return advance(*arguments)
-sample.next_block = next_block
+production.next_block = next_block
 from mcgeo.cli import main
 sys.exit(main(sys.argv[1:]))
 """
@@ -48,23 +47,6 @@ def stop_when(process: subprocess.Popen[str], words: str, number: signal.Signals
     finally:
         process.kill()
     return process.returncode, out, "".join(lines) + err
-
-
-def contents(path: Path) -> dict[str, bytes]:
-    """Every dataset of a file to the last bit, and every attribute but the time it took."""
-    found: dict[str, bytes] = {}
-
-    def note(name: str, item: h5py.Group | h5py.Dataset) -> None:
-        if isinstance(item, h5py.Dataset):
-            found[name] = np.asarray(item[()]).tobytes()
-        for key, value in item.attrs.items():
-            if key not in {"seconds", "REFERENCE_LIST", "DIMENSION_LIST"}:
-                found[f"{name}@{key}"] = repr(value).encode()
-
-    with h5py.File(path) as file:
-        file.visititems(note)
-        note("", file)
-    return found
 
 
 @pytest.mark.parametrize(("number", "code"), [(signal.SIGINT, 130), (signal.SIGTERM, 143)])

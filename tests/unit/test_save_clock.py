@@ -7,8 +7,9 @@ from pathlib import Path
 
 import pytest
 
-from mcgeo.runs import sample as engine
+from mcgeo.runs import production
 from mcgeo.runs.config import config_from_resolved
+from mcgeo.runs.sample import sample
 from mcgeo.runs.save_clock import SaveClock
 
 TINY = {
@@ -66,7 +67,7 @@ def test_slow_writing_takes_a_twentieth_of_the_time(clock: Clock) -> None:
 def checkpoints(folder: Path, monkeypatch: pytest.MonkeyPatch, seconds: float) -> list[int]:
     """Blocks held by each file that a run of 16 blocks writes; a block takes ten seconds."""
     written: list[int] = []
-    write, advance = engine.write_result, engine.next_block
+    write, advance = production.write_result, production.next_block
     clock = Clock()
     monkeypatch.setattr(time, "monotonic", clock)
     # Somebody sets the clock of the machine, forth and back by years.
@@ -81,16 +82,16 @@ def checkpoints(folder: Path, monkeypatch: pytest.MonkeyPatch, seconds: float) -
         written.append(result.blocks.drift.shape[1])
         write(path, result)
 
-    monkeypatch.setattr(engine, "next_block", slow_block)
-    monkeypatch.setattr(engine, "write_result", note)
+    monkeypatch.setattr(production, "next_block", slow_block)
+    monkeypatch.setattr(production, "write_result", note)
     keys = {**TINY, "sampling": {**TINY["sampling"], "checkpoint_seconds": seconds}}
-    found = engine.sample(config_from_resolved(keys), folder, quiet=True)
+    found = sample(config_from_resolved(keys), folder, quiet=True)
     assert found.seconds == 160.0
     return written
 
 
 @pytest.mark.parametrize(
-    ("seconds", "blocks"), [(60.0, [6, 12, 16]), (25.0, [3, 6, 9, 12, 15, 16]), (1e6, [16]), (0.0, [*range(1, 17), 16])]
+    ("seconds", "blocks"), [(60.0, [6, 12, 16]), (25.0, [3, 6, 9, 12, 15, 16]), (1e6, [16]), (0.0, [*range(1, 17)])]
 )
 def test_checkpoints_come_at_the_chosen_interval_whatever_the_date_does(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, seconds: float, blocks: list[int]

@@ -4,6 +4,9 @@ import csv
 import json
 import math
 import os
+import socket
+import subprocess
+import sys
 from pathlib import Path
 
 import numpy as np
@@ -84,3 +87,13 @@ def test_failed_write_keeps_the_old_file_and_leaves_no_part(tmp_path, monkeypatc
         write_whole(path, b"new")
     assert path.read_bytes() == b"old"
     assert [entry.name for entry in tmp_path.iterdir()] == ["table.csv"]
+
+
+def test_parts_of_dead_writers_are_removed_and_those_of_live_ones_left(tmp_path):
+    here, ended = socket.gethostname(), subprocess.Popen([sys.executable, "-c", ""])
+    ended.wait()
+    kept = [f".table.csv.{here}.{os.getpid()}.0a.part", f".table.csv.elsewhere.{ended.pid}.0a.part", f".other.{here}"]
+    for name in [*kept, f".table.csv.{here}.{ended.pid}.0a.part"]:
+        (tmp_path / name).write_bytes(b"half")
+    write_whole(tmp_path / "table.csv", b"new")
+    assert sorted(path.name for path in tmp_path.iterdir()) == sorted(["table.csv", *kept])

@@ -1,0 +1,140 @@
+"""Walkers advanced block by block, and the file that keeps what they measured."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Any, NoReturn
+
+import numpy as np
+
+from mcgeo.errors import RunInterrupted
+from mcgeo.runs.build import schedule_from
+from mcgeo.runs.experiment import Experiment
+from mcgeo.runs.progress import Progress
+from mcgeo.runs.sampled import Blocks, Sampled
+from mcgeo.runs.save_clock import SaveClock
+from mcgeo.runs.signals import StopFlag
+from mcgeo.runs.storage import write_result
+from mcgeo.sampling.blocks import BlockRecord, Interrupted
+from mcgeo.sampling.chain import ChainState, next_block
+
+
+@dataclass(frozen=True, eq=False)
+class Standing:
+    """Where a run stands.
+
+    Attributes
+    ----------
+    chains : sequence of ChainState
+        One per component.
+    blocks : Blocks or None
+        None before the first block.
+    seconds : float
+    """
+
+    chains: Sequence[ChainState]
+    blocks: Blocks | None = None
+    seconds: float = 0.0
+
+    @classmethod
+    def of(cls, result: Sampled) -> Standing:
+        """Where the run of a file stands."""
+        return cls(result.chains, result.blocks, result.seconds)
+
+
+class Production:
+    """One run: a chain per component, advanced block by block in turn.
+
+    Parameters
+    ----------
+    keys : mapping
+        Resolved configuration; its ``sampling`` says how many blocks there shall be.
+    path : Path
+        The result file.
+    experiment : Experiment
+    standing : Standing
+    quiet : bool
+    resume : str
+        What the user does to go on after an interruption, in words.
+    """
+
+    def __init__(
+        self,
+        keys: dict[str, Any],
+        path: Path,
+        experiment: Experiment,
+        standing: Standing,
+        *,
+        quiet: bool,
+        resume: str = "the same command",
+    ) -> None:
+        self._keys, self._path, self._experiment, self._quiet = keys, path, experiment, quiet
+        self._resume = resume
+        self._schedules = [schedule_from(keys, state, index) for index, state in enumerate(experiment.states)]
+        self._standing = standing
+        self._records: list[list[BlockRecord]] = []
+
+    @property
+    def _n_blocks(self) -> int:
+        return self._standing.chains[0].blocks_done
+
+    def finish(self, stop: StopFlag) -> Sampled:
+        """All blocks that are missing.
+
+        Raises
+        ------
+        RunInterrupted
+            When ``stop`` was set meanwhile; whole blocks are in the file.
+        """
+        n_blocks = self._schedules[0].n_blocks
+        clock = SaveClock(self._keys["sampling"]["checkpoint_seconds"])
+        with Progress(n_blocks, self._n_blocks, self._quiet) as progress:
+            while self._n_blocks < n_blocks:
+                try:
+                    acceptance = self._one_block(stop)
+                except Interrupted:
+                    self._give_up(stop)
+                progress.step(f"acceptance {acceptance:.3f}")
+                if clock.due and self._n_blocks < n_blocks:
+                    with clock.writing():
+                        self.save(complete=False)
+        return self.save(complete=True)
+
+    def _one_block(self, stop: StopFlag) -> float:
+        started = time.monotonic()
+        steps = [
+            next_block(state, measurement, schedule, chain, stop)
+            for state, measurement, schedule, chain in zip(
+                self._experiment.states, self._experiment.measurements, self._schedules, self._standing.chains,
+                strict=True,
+            )
+        ]  # fmt: skip
+        self._records.append([record for _, record in steps])
+        seconds = self._standing.seconds + time.monotonic() - started
+        self._standing = replace(self._standing, chains=[chain for chain, _ in steps], seconds=seconds)
+        return float(np.mean([record.accepted.mean() for _, record in steps]))
+
+    def _give_up(self, stop: StopFlag) -> NoReturn:
+        if self._n_blocks:
+            self.save(complete=False)
+            said = f"{self._n_blocks} whole blocks are in {self._path}; {self._resume} goes on from there"
+        else:
+            said = f"not one block was whole yet; {self._resume} goes on from the equilibrated walkers"
+        raise RunInterrupted(f"interrupted: {said}", stop.signal_number)
+
+    def save(self, *, complete: bool) -> Sampled:
+        """Write the file; what it holds."""
+        blocks = self._standing.blocks
+        if self._records:
+            later = Blocks.from_records(self._records, self._experiment.trace_offset)
+            blocks = blocks.followed_by(later) if blocks else later
+            self._records.clear()
+            self._standing = replace(self._standing, blocks=blocks)
+        assert blocks is not None
+        standing = self._standing
+        result = self._experiment.result(self._keys, blocks, list(standing.chains), standing.seconds, complete)
+        write_result(self._path, result)
+        return result
