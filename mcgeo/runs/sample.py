@@ -49,18 +49,30 @@ def sample(
     """
     path = folder / LIQUID_FILE
     keys, earlier = _joined(config, path, overwrite, extend)
-    if not _whole(keys, earlier):
+    if _whole(keys, earlier) is None:
         with run_lock(path):
             # Another process may have gone on meanwhile.
             keys, earlier = _joined(config, path, overwrite, extend)
-            if not _whole(keys, earlier):
+            if _whole(keys, earlier) is None:
                 return _run(keys, path, earlier, quiet)
-    assert earlier is not None
+    result = _whole(keys, earlier)
+    assert result is not None
     if not quiet:
-        longer = earlier.n_blocks > config.sampling.blocks
-        said = f", longer: {earlier.n_blocks} blocks where {config.sampling.blocks} are asked for" if longer else ""
+        longer = result.n_blocks > config.sampling.blocks
+        said = f", longer: {result.n_blocks} blocks where {config.sampling.blocks} are asked for" if longer else ""
         say(f"{path} holds this liquid already{said}")
-    return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
+    return result
+
+
+def held_liquid(config: Config, path: Path) -> Sampled | None:
+    """The liquid of a configuration if the file holds the whole of it.
+
+    Raises
+    ------
+    StorageError
+        If the file holds a liquid of another configuration.
+    """
+    return _whole(*_joined(config, path, overwrite=False, extend=None))
 
 
 def _joined(
@@ -74,8 +86,11 @@ def _joined(
     return (keys if earlier is None else continued(path, keys, earlier)), earlier
 
 
-def _whole(keys: dict[str, Any], earlier: Sampled | None) -> bool:
-    return earlier is not None and earlier.complete and earlier.n_blocks == keys["sampling"]["blocks"]
+def _whole(keys: dict[str, Any], earlier: Sampled | None) -> Sampled | None:
+    """What the folder holds, with the problem of the configuration, if no block is missing."""
+    if earlier is None or not earlier.complete or earlier.n_blocks < keys["sampling"]["blocks"]:
+        return None
+    return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
 
 
 def _run(keys: dict[str, Any], path: Path, earlier: Sampled | None, quiet: bool) -> Sampled:

@@ -77,6 +77,18 @@ class Blocks:
             np.concatenate([self.drift, later.drift], axis=1),
         )
 
+    @classmethod
+    def side_by_side(cls, parts: Sequence[Blocks]) -> Blocks:
+        """The same blocks of further walkers, in the order of the parts."""
+        first = parts[0]
+        return cls(
+            {name: np.concatenate([part.means[name] for part in parts], axis=1) for name in first.means},
+            {name: np.concatenate([part.counts[name] for part in parts], axis=1) for name in first.counts},
+            np.concatenate([part.trace for part in parts], axis=2),
+            np.concatenate([part.accepted for part in parts], axis=2),
+            np.max([part.drift for part in parts], axis=0),
+        )
+
 
 @dataclass(frozen=True, eq=False)
 class Sampled(ABC):
