@@ -21,8 +21,9 @@ from mcgeo.runs.build import interaction_from, problem_from, variation_from
 from mcgeo.runs.energy_curve import EnergyCurve, energy_curve
 from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.table_file import without_contents
-from mcgeo.variational.energy_surface import LARGEST_DISTANCE, Surface
+from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.minimum import Minimum, find_minimum
+from mcgeo.variational.quadrature import LARGEST_DISTANCE
 from mcgeo.variational.response import Response, mass_response, shape_verdict
 from mcgeo.variational.susceptibility import (
     SurfaceMaker,

@@ -8,7 +8,7 @@ rounding about 1e-15/h^2.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +16,8 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 
 _STEP = 0.03
+# Below it a curvature is rounding.
+_LEAST_CURVATURE = 1e-9
 _FIRST = {-2: 1.0 / 12.0, -1: -8.0 / 12.0, 1: 8.0 / 12.0, 2: -1.0 / 12.0}
 _SECOND = {-2: -1.0 / 12.0, -1: 16.0 / 12.0, 0: -30.0 / 12.0, 1: 16.0 / 12.0, 2: -1.0 / 12.0}
 
@@ -34,6 +36,17 @@ class LocalExpansion:
     energy: Array
     gradient: Array
     hessian: Array
+
+    def above(self, constant: float) -> LocalExpansion:
+        """The same with a constant added to the energy."""
+        return replace(self, energy=self.energy + constant)
+
+    def downhill_step(self, longest: float) -> Array:
+        """Newton's step of the mean, of at most this length; downhill also where a direction curves down."""
+        curvature, directions = np.linalg.eigh(self.hessian.mean(axis=0))
+        along = directions.T @ self.gradient.mean(axis=0)
+        step = -directions @ (along / np.maximum(np.abs(curvature), _LEAST_CURVATURE))
+        return np.asarray(step * min(1.0, longest / max(float(np.hypot(*step)), _LEAST_CURVATURE)))
 
 
 def expansion(samples: Callable[[Array], Array], dimension: int) -> LocalExpansion:

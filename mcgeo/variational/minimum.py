@@ -4,14 +4,14 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import minimize
 
-from mcgeo.errors import GeometryError
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
+from mcgeo.variational.derivatives import LocalExpansion
 from mcgeo.variational.energy_surface import Surface
 
 Array = NDArray[np.float64]
@@ -19,8 +19,14 @@ Array = NDArray[np.float64]
 # The search covers this distance from the orbit metric; a minimum that runs to its edge is none.
 SEARCH_RADIUS = 2.5
 _RINGS = 6
-_NEWTON_STEPS = 20
+_NEWTON_STEPS = 60
+# A Newton step longer than this is cut: far from the minimum the Hessian promises too much.
+_LONGEST_STEP = 0.5
 _TOLERANCE = 1e-9
+_ROUNDING_OF_ENERGY = 1e-14
+# A curvature of this size and either sign is none: the circle of equal holes of a symmetric problem that prefers an
+# ellipse.
+_FLAT = 1e-8
 _ROUNDING = 1e-7
 
 
@@ -70,19 +76,17 @@ class Minimum:
 
 
 def find_minimum(surface: Surface) -> Minimum:
-    """Global search on rings about the orbit metric and the isotropic one, then Newton steps, then jackknife.
+    """Global search on rings about the orbit metric, then Newton steps, then jackknife.
 
     A replica's minimum is one Newton step from the mean's: exact to second order in deviations that are a small part
     of the error. Angles of problems whose axes coincide are fixed by symmetry and come out without error.
     """
-    metric, interior = _polished(surface, _coarse_minimum(surface.search))
+    points = _rings()
+    metric, interior = _polished(surface, points[np.argmin(surface.rough_energies(points))])
     expansion = surface.expansion_about(metric)
     gradients = jackknife_means(expansion.gradient)
     hessians = jackknife_means(expansion.hessian)
-    steps = np.full(gradients.shape, np.inf)
-    if interior:
-        steps[:] = -np.linalg.solve(hessians, gradients[..., None])[..., 0]
-    stretch, angle = metric_estimates(metric, steps)
+    stretch, angle = _estimates(metric, interior, gradients, hessians)
     at_isotropic = surface.sample_energies(ISOTROPIC) - expansion.energy
     at_mass = surface.sample_energies(surface.problem.orbit.metric) - expansion.energy
     along, across = _own_stiffness(metric, expansion.hessian.mean(axis=0), hessians)
@@ -101,14 +105,35 @@ def find_minimum(surface: Surface) -> Minimum:
     )
 
 
+def _estimates(
+    metric: UnimodularMetric, interior: bool, gradients: Array, hessians: Array
+) -> tuple[Estimate, Estimate]:
+    """Stretch and angle from the replicas' derivatives at the mean's minimum."""
+    if not interior:
+        return metric_estimates(metric, np.full(gradients.shape, np.inf))
+    if np.linalg.eigvalsh(hessians.mean(axis=0))[0] > _FLAT:
+        return metric_estimates(metric, np.asarray(-np.linalg.solve(hessians, gradients[..., None])[..., 0]))
+    # A turn of the hole costs nothing: replicas move along the stretch, and the angle is any.
+    along, _ = _own_directions(metric)
+    lengths = -(gradients @ along) / np.einsum("nab,a,b->n", hessians, along, along)
+    stretch, angle = metric_estimates(metric, lengths[:, None] * along)
+    return stretch, Estimate(angle.value, math.inf)
+
+
+def _own_directions(metric: UnimodularMetric) -> tuple[Array, Array]:
+    """Unit vectors along the metric's own stretch and across it."""
+    c, s = math.cos(2 * metric.angle), math.sin(2 * metric.angle)
+    return np.array([c, s]), np.array([-s, c])
+
+
 def _own_stiffness(metric: UnimodularMetric, mean: Array, replicas: Array) -> tuple[Estimate, Estimate]:
     """Second derivatives along (cos 2 theta, sin 2 theta) and perpendicular to it."""
-    c, s = math.cos(2 * metric.angle), math.sin(2 * metric.angle)
 
-    def along(u: Array) -> Estimate:
+    def second(u: Array) -> Estimate:
         return Estimate(float(u @ mean @ u), float(jackknife_error(np.einsum("nab,a,b->n", replicas, u, u))))
 
-    return along(np.array([c, s])), along(np.array([-s, c]))
+    along, across = _own_directions(metric)
+    return second(along), second(across)
 
 
 def _mean(samples: Array) -> Estimate:
@@ -117,43 +142,50 @@ def _mean(samples: Array) -> Estimate:
     )
 
 
-def _coarse_minimum(surface: Surface) -> UnimodularMetric:
-    centre = surface.problem.orbit.metric
-    candidates = [centre, ISOTROPIC]
+@cache
+def _rings() -> Array:
+    """Flat coordinates of the centre and of points on rings about it, shape (n, 2)."""
+    points = [(0.0, 0.0)]
     for ring in range(1, _RINGS + 1):
-        radius = SEARCH_RADIUS * ring / _RINGS
-        n = 6 * ring
+        radius, n = SEARCH_RADIUS * ring / _RINGS, 6 * ring
         turns = 2.0 * math.pi * np.arange(n) / n
-        candidates += [centre.displaced(radius * math.cos(t), radius * math.sin(t)) for t in turns]
-    return min(candidates, key=surface.energy)
+        points += [(radius * math.cos(t), radius * math.sin(t)) for t in turns]
+    return np.array(points)
 
 
-def _polished(surface: Surface, start: UnimodularMetric) -> tuple[UnimodularMetric, bool]:
-    """Bounded descent in flat coordinates about the orbit metric, then Newton steps to rounding."""
-    centre, search = surface.problem.orbit.metric, surface.search
-    x, y = start.relative_to(centre).flat_coordinates
-
-    def energy(point: Array) -> float:
-        try:
-            return search.energy(centre.displaced(point[0], point[1]))
-        except GeometryError:
-            return math.inf
-
-    found = minimize(energy, (x, y), method="Nelder-Mead", options={"xatol": 1e-3, "fatol": 1e-12})
-    metric = centre.displaced(*found.x)
-    if metric.distance(centre) > SEARCH_RADIUS:
-        edge = metric.relative_to(centre)
-        return centre.composed_with(UnimodularMetric(SEARCH_RADIUS, edge.angle)), False
+def _polished(surface: Surface, start: Array) -> tuple[UnimodularMetric, bool]:
+    """Newton's descent on the mean from flat coordinates about the orbit metric, to rounding."""
+    centre = surface.problem.orbit.metric
+    metric = centre.displaced(*start)
+    at, on_edge = surface.mean_expansion(metric), False
     for _ in range(_NEWTON_STEPS):
-        expansion = surface.expansion_about(metric)
-        hessian = expansion.hessian.mean(axis=0)
-        if np.linalg.eigvalsh(hessian)[0] <= 0.0:
+        step = at.downhill_step(_LONGEST_STEP)
+        metric, at, beyond = _downhill(surface, metric, at, step)
+        if beyond and on_edge:
             return metric, False
-        step = -np.linalg.solve(hessian, expansion.gradient.mean(axis=0))
-        metric = metric.displaced(*step)
+        on_edge = beyond
         if float(np.hypot(*step)) < _TOLERANCE:
             break
+    if np.linalg.eigvalsh(at.hessian[0])[0] < -_FLAT:
+        return metric, False
     return on_axis(metric, centre), True
+
+
+def _downhill(
+    surface: Surface, metric: UnimodularMetric, at: LocalExpansion, step: Array
+) -> tuple[UnimodularMetric, LocalExpansion, bool]:
+    """A step, halved until the energy falls, and stopped at the edge of the search; True where it led beyond."""
+    centre = surface.problem.orbit.metric
+    while True:
+        moved = metric.displaced(*step)
+        relative = moved.relative_to(centre)
+        beyond = relative.stretch > SEARCH_RADIUS
+        if beyond:
+            moved = centre.composed_with(UnimodularMetric(SEARCH_RADIUS, relative.angle))
+        there = surface.mean_expansion(moved)
+        if there.energy[0] <= at.energy[0] + _ROUNDING_OF_ENERGY or float(np.hypot(*step)) < _TOLERANCE:
+            return moved, there, beyond
+        step = 0.5 * step
 
 
 def on_axis(metric: UnimodularMetric, orbit_metric: UnimodularMetric) -> UnimodularMetric:
@@ -173,13 +205,11 @@ def metric_estimates(metric: UnimodularMetric, steps: Array) -> tuple[Estimate, 
         return Estimate(metric.stretch, math.inf), Estimate(metric.angle, math.inf)
     if metric.stretch == 0.0:
         return Estimate(0.0, float(np.hypot(*jackknife_error(steps)))), Estimate(0.0, math.inf)
-    c, s = math.cos(2 * metric.angle), math.sin(2 * metric.angle)
-    along = steps @ np.array([c, s])
+    along, across = _own_directions(metric)
     # A displacement across moves 2 theta by its length over sinh Q.
-    across = steps @ np.array([-s, c]) / (2.0 * math.sinh(metric.stretch))
-    angle_error = float(jackknife_error(across))
+    angle_error = float(jackknife_error(steps @ across / (2.0 * math.sinh(metric.stretch))))
     return (
-        Estimate(metric.stretch, float(jackknife_error(along))),
+        Estimate(metric.stretch, float(jackknife_error(steps @ along))),
         # An angle that symmetry fixes has no error but the rounding of differences.
         Estimate(metric.angle, angle_error if angle_error > _ROUNDING else 0.0),
     )

@@ -11,7 +11,7 @@ wavefunction deformed as a whole. *two_metric*: both free; the surface over g is
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,8 +21,10 @@ from mcgeo.estimate.statistics import Estimate, jackknife_means
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.variational.derivatives import LocalExpansion, expansion
-from mcgeo.variational.energy_surface import DirectSurface, EnergySurface, InteractionEnergy, Surface
+from mcgeo.variational.energy_surface import DirectSurface, EnergySurface, Surface
+from mcgeo.variational.interaction_energy import InteractionEnergy, interaction_energy
 from mcgeo.variational.minimum import Minimum, metric_estimates, on_axis
+from mcgeo.variational.ray_table import rough_energies
 
 Array = NDArray[np.float64]
 
@@ -63,16 +65,19 @@ class RigidSurface(DirectSurface):
     occupations: PairOccupations
     problem: Problem
     level_mixing: float
-    _interaction: InteractionEnergy = field(init=False, repr=False)
-
-    def __post_init__(self) -> None:
-        object.__setattr__(self, "_interaction", InteractionEnergy(self.occupations))
 
     def sample_energies(self, metric: UnimodularMetric) -> Array:
         """E(g, g) of every block sample, shape (n_samples,)."""
-        rigid = self.problem.with_mass(metric)
-        constant = self._interaction.background(rigid) + kinetic_energy(self.problem, metric, self.level_mixing)
-        return constant + self._interaction.correlation_samples(rigid, metric)
+        return self._energies(metric, self.occupations.samples)
+
+    def energy(self, metric: UnimodularMetric) -> float:
+        """Mean E(g, g)."""
+        return float(self._energies(metric, interaction_energy(self.occupations).mean)[0])
+
+    def _energies(self, metric: UnimodularMetric, coefficients: Array) -> Array:
+        interaction, rigid = interaction_energy(self.occupations), self.problem.with_mass(metric)
+        constant = interaction.background(rigid) + kinetic_energy(self.problem, metric, self.level_mixing)
+        return constant + interaction.energies(rigid, metric, coefficients)
 
 
 @dataclass(frozen=True, eq=False)
@@ -81,29 +86,28 @@ class TwoMetricSurface:
 
     The orbit is the one that is best for the mean; by the envelope theorem the samples' energies are right to first
     order, and derivatives along the hole follow from those of the joint energy: the gradient is the joint one, the
-    Hessian H_hh - H_ho H_oo^-1 H_oh.
+    Hessian H_hh - H_ho H_oo^-1 H_oh. Derivatives by the hole are exact, those by the orbit taken by differences.
     """
 
     occupations: PairOccupations
     problem: Problem
     level_mixing: float
-    _interaction: InteractionEnergy = field(init=False, repr=False)
 
-    def __post_init__(self) -> None:
-        object.__setattr__(self, "_interaction", InteractionEnergy(self.occupations))
+    @property
+    def _interaction(self) -> InteractionEnergy:
+        return interaction_energy(self.occupations)
 
     def joint_samples(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> Array:
         """E(g_L, g) of every block sample, shape (n_samples,)."""
+        return self._joint(orbit_metric, metric, self.occupations.samples)
+
+    def _joint(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, coefficients: Array) -> Array:
         seen = self.problem.with_mass(orbit_metric)
-        return self._constant(orbit_metric) + self._interaction.correlation_samples(seen, metric)
+        return self._constant(orbit_metric) + self._interaction.energies(seen, metric, coefficients)
 
     def _constant(self, orbit_metric: UnimodularMetric) -> float:
         seen = self.problem.with_mass(orbit_metric)
         return self._interaction.background(seen) + kinetic_energy(self.problem, orbit_metric, self.level_mixing)
-
-    def _joint_mean(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> Array:
-        seen = self.problem.with_mass(orbit_metric)
-        return np.array([self._constant(orbit_metric) + self._interaction.correlation_mean(seen, metric)])
 
     def orbit_of(self, metric: UnimodularMetric) -> UnimodularMetric:
         """The best orbit metric for a hole of metric g, by Newton steps from the mass metric."""
@@ -111,15 +115,11 @@ class TwoMetricSurface:
         for _ in range(_NEWTON_STEPS):
 
             def mean(point: Array, orbit: UnimodularMetric = orbit) -> Array:
-                return self._joint_mean(orbit.displaced(*point), metric)
+                return self._joint(orbit.displaced(*point), metric, self._interaction.mean)
 
-            local = expansion(mean, 2)
-            curvature, directions = np.linalg.eigh(local.hessian[0])
-            # Away from the minimum a direction may curve down: go downhill along it all the same.
-            step = -directions @ ((directions.T @ local.gradient[0]) / np.maximum(np.abs(curvature), 1e-6))
-            length = float(np.hypot(*step))
-            orbit = orbit.displaced(*(step * min(1.0, _LONGEST_STEP / max(length, 1e-300))))
-            if length < _TOLERANCE:
+            step = expansion(mean, 2).downhill_step(_LONGEST_STEP)
+            orbit = orbit.displaced(*step)
+            if float(np.hypot(*step)) < _TOLERANCE:
                 break
         return orbit
 
@@ -129,17 +129,39 @@ class TwoMetricSurface:
 
     def energy(self, metric: UnimodularMetric) -> float:
         """Mean of the least E(g_L, g)."""
-        return float(self._joint_mean(self.orbit_of(metric), metric)[0])
+        return float(self._joint(self.orbit_of(metric), metric, self._interaction.mean)[0])
 
     def joint_expansion(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> LocalExpansion:
-        """Expansion in the flat coordinates of the orbit (first two) and of the hole."""
-        return expansion(
-            lambda point: self.joint_samples(orbit_metric.displaced(*point[:2]), metric.displaced(*point[2:])), 4
-        )
+        """Expansion of every sample in the flat coordinates of the orbit (first two) and of the hole."""
+        return self._joint_expansion(orbit_metric, metric, self.occupations.samples)
+
+    def _joint_expansion(
+        self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, coefficients: Array
+    ) -> LocalExpansion:
+        def along_hole(orbit: UnimodularMetric) -> LocalExpansion:
+            local = self._interaction.expansion(self.problem.with_mass(orbit), metric, coefficients)
+            return local.above(self._constant(orbit))
+
+        def energy_and_gradient(point: Array) -> Array:
+            local = along_hole(orbit_metric.displaced(*point))
+            return np.concatenate([local.energy, local.gradient.ravel()])
+
+        n, hole = len(coefficients), along_hole(orbit_metric)
+        by_orbit = expansion(energy_and_gradient, 2)
+        mixed = by_orbit.gradient[n:].reshape(n, 2, 2)
+        hessian = np.block([[by_orbit.hessian[:n], np.swapaxes(mixed, 1, 2)], [mixed, hole.hessian]])
+        return LocalExpansion(hole.energy, np.concatenate([by_orbit.gradient[:n], hole.gradient], axis=1), hessian)
 
     def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
-        """Gradient and Hessian along the hole, the orbit following."""
-        joint = self.joint_expansion(self.orbit_of(metric), metric)
+        """Gradient and Hessian of every sample along the hole, the orbit following."""
+        return self._following(metric, self.occupations.samples)
+
+    def mean_expansion(self, metric: UnimodularMetric) -> LocalExpansion:
+        """That of the mean."""
+        return self._following(metric, self._interaction.mean)
+
+    def _following(self, metric: UnimodularMetric, coefficients: Array) -> LocalExpansion:
+        joint = self._joint_expansion(self.orbit_of(metric), metric, coefficients)
         oo, oh, hh = joint.hessian[:, :2, :2], joint.hessian[:, :2, 2:], joint.hessian[:, 2:, 2:]
         # The samples' own orbits are a small step off the mean's; the gradient follows them.
         shift = np.linalg.solve(oo, np.concatenate([oh, joint.gradient[:, :2, None]], axis=-1))
@@ -147,10 +169,9 @@ class TwoMetricSurface:
         gradient = joint.gradient[:, 2:] - (transposed @ shift[..., 2:])[..., 0]
         return LocalExpansion(joint.energy, gradient, hh - transposed @ shift[..., :2])
 
-    @property
-    def search(self) -> EnergySurface:
-        """The projected surface: the minimum at two free metrics is looked for from its minimum."""
-        return EnergySurface(self.occupations, self.problem)
+    def rough_energies(self, points: Array) -> Array:
+        """Those of the projected problem: the minimum at two free metrics is looked for from its minimum."""
+        return rough_energies(self.occupations, self.problem, points)
 
 
 def surface_of(occupations: PairOccupations, problem: Problem, variation: Variation) -> Surface:

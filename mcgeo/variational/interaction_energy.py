@@ -1,0 +1,112 @@
+"""Interaction energy of one liquid for any orbit and any metric of the hole, with its derivatives by the hole.
+
+    E(g) = 1/2 int d^2q/(2 pi)^2 v(q) [Sbar(|q|_g) - 1],   v(q) = V(q) F_n(q; g_L)^2,
+    Sbar(k) - 1 = e nu + 4 nu sum_m c_m L_m(k^2) exp(-k^2/2).
+
+The constant e nu gives a background that does not depend on g. For the rest put q = S k with S^T S = g, so that |q|_g
+= |k|: the correlations delta(s), s = k^2, are then functions of |k| on one fixed radial grid. A metric displaced by the
+flat coordinates (x, y), M = x sigma_z + y sigma_x, keeps v(S k) and sees the norm
+
+    k.exp(-M).k = s [1 - x cos 2 phi - y sin 2 phi + (x^2 + y^2)/2 + ...],
+
+so that all derivatives fall upon delta, of which they are known:
+
+    dE/dx    = -<cos 2 phi, s delta'>,         d^2E/dx^2 = <1, s delta'> + <1 + cos 4 phi, s^2 delta''>/2,
+    d^2E/dxdy = <sin 4 phi, s^2 delta''>/2,    <f, h> = int d^2k/(8 pi^2) v(S k) f(phi) h(s).
+
+The angular harmonics of v(S k) give the energies, gradients and Hessians of all block samples at once.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, field
+from functools import lru_cache
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import eval_laguerre
+
+from mcgeo.estimate.occupations import PairOccupations
+from mcgeo.geometry.metric import UnimodularMetric
+from mcgeo.problem.problem import Problem
+from mcgeo.variational.derivatives import LocalExpansion
+from mcgeo.variational.quadrature import angular_harmonics, half_line_rule
+
+Array = NDArray[np.float64]
+
+# delta(k) of L_m ends beyond its turning point 2 sqrt(m).
+_BEYOND_TURNING_POINT = 4.0
+_KEPT_LIQUIDS = 4
+
+
+def basis_derivatives(occupations: PairOccupations, radii: Array) -> Array:
+    """f, s f' and s^2 f'' of f(s) = 4 nu L_m(s) exp(-s/2) at s = radii^2, shape (3, n_m, n).
+
+    By s L_m' = m (L_m - L_{m-1}) and Laguerre's equation s L'' = (s - 1) L' - m L (DLMF 18.9.23 and 18.8.1).
+    """
+    s, m = radii**2, occupations.m[:, None]
+    value = occupations.basis(radii)
+    below = np.where(m > 0, eval_laguerre(np.maximum(m - 1, 0), s), 0.0) * np.exp(-0.5 * s)
+    slope = m * (value - 4.0 * float(occupations.filling) * below)
+    return np.stack([value, slope - 0.5 * s * value, s * (0.25 * s - m) * value - slope])
+
+
+@dataclass(frozen=True, eq=False)
+class InteractionEnergy:
+    """E_int(g_L, g) of one liquid: orbit and hole metric both free.
+
+    Parameters
+    ----------
+    occupations : PairOccupations
+    """
+
+    occupations: PairOccupations
+    mean: Array = field(init=False, repr=False)
+    _radii: Array = field(init=False, repr=False)
+    _projections: Array = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        largest = 2.0 * math.sqrt(float(self.occupations.m[-1])) + _BEYOND_TURNING_POINT
+        radii, weights = half_line_rule(largest)
+        measure = weights * radii / (4.0 * math.pi)
+        object.__setattr__(self, "mean", self.occupations.coefficients[None, :])
+        object.__setattr__(self, "_radii", radii)
+        object.__setattr__(self, "_projections", measure * basis_derivatives(self.occupations, radii))
+
+    def background(self, problem: Problem) -> float:
+        """(e nu/2) int d^2q/(2 pi)^2 v(q): what does not depend on the hole."""
+        radii, weights = half_line_rule(problem.reach)
+        mean = angular_harmonics(problem, problem.orbit.metric, radii)[:, 0]
+        factor = self.occupations.statistics_sign * float(self.occupations.filling)
+        return float(factor * np.sum(weights * radii * mean) / (4.0 * math.pi))
+
+    def energies(self, problem: Problem, metric: UnimodularMetric, coefficients: Array) -> Array:
+        """Energies above the background of liquids with coefficients c_m of shape (n, n_m), shape (n,)."""
+        harmonics = angular_harmonics(problem, metric, self._radii)
+        return np.asarray(coefficients @ (self._projections[0] @ harmonics[:, 0]))
+
+    def expansion(self, problem: Problem, metric: UnimodularMetric, coefficients: Array) -> LocalExpansion:
+        """Energies above the background, gradients and Hessians in the flat coordinates about the metric."""
+        table = self._projections @ angular_harmonics(problem, metric, self._radii)
+        value, first, second = table
+        own = np.stack(
+            [
+                value[:, 0],
+                -first[:, 1],
+                -first[:, 2],
+                first[:, 0] + 0.5 * (second[:, 0] + second[:, 3]),
+                first[:, 0] + 0.5 * (second[:, 0] - second[:, 3]),
+                0.5 * second[:, 4],
+            ],
+            axis=-1,
+        )
+        found = coefficients @ own
+        hessian = found[:, [3, 5, 5, 4]].reshape(-1, 2, 2)
+        return LocalExpansion(found[:, 0], found[:, 1:3], hessian)
+
+
+@lru_cache(maxsize=_KEPT_LIQUIDS)
+def interaction_energy(occupations: PairOccupations) -> InteractionEnergy:
+    """`InteractionEnergy` of a liquid, made once."""
+    return InteractionEnergy(occupations)
