@@ -17,6 +17,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -53,7 +54,8 @@ def sum_rules(filling: Fraction, statistics: str, shift: int | None) -> tuple[ND
     return np.arange(len(values)), np.array(values)
 
 
-def _rule_matrix(order: NDArray[np.intp], m: NDArray[np.int64]) -> Array:
+def rule_matrix(order: NDArray[np.intp], m: NDArray[np.int64]) -> Array:
+    """Weights of the rules, 1, (m+1) or (m+1)(m+2) by ``order``, shape (n_rules, n_m)."""
     weights = np.stack([np.ones(len(m)), m + 1.0, (m + 1.0) * (m + 2.0)])
     return np.asarray(weights[order])
 
@@ -135,26 +137,55 @@ def fit_occupations(state: TrialState, norm: Array, samples: Array) -> PairOccup
     samples : ndarray, shape (n_samples, n_waves)
         Independent samples of S(q).
     """
+    fit = occupation_fit(state, norm, samples)
+    order, values = sum_rules(state.filling, state.statistics, state.shift)
+    rules = rule_matrix(order, fit.m)
+    pinned = fit.m < state.first_occupied
+    target = (fit.data.mean(axis=0) - fit.offset) * fit.weight
+    pinned |= _bounds_in_force(fit.basis * fit.weight[:, None], target, rules, values, fit.penalty, pinned)
+    response, constant = _linear_solution(fit.basis, fit.weight, rules, values, fit.penalty, pinned)
+    coefficients = (fit.data - fit.offset) @ response.T + constant
+    return PairOccupations(state.label, state.filling, state.statistics, fit.m, coefficients)
+
+
+class OccupationFit(NamedTuple):
+    """Least squares for c_m: S(q) = offset + basis @ c within 1/weight, c_m = 0 within 1/penalty.
+
+    Attributes
+    ----------
+    m : ndarray of int64, shape (n_m,)
+    basis : ndarray, shape (n_waves, n_m)
+    data : ndarray, shape (n_samples, n_waves)
+    offset, weight : ndarray, shape (n_waves,)
+    penalty : ndarray, shape (n_m,)
+    """
+
+    m: NDArray[np.int64]
+    basis: Array
+    data: Array
+    offset: Array
+    weight: Array
+    penalty: Array
+
+
+def occupation_fit(state: TrialState, norm: Array, samples: Array) -> OccupationFit:
+    """What `fit_occupations` minimises, without rules and bounds."""
     parity = 1 if state.statistics == FERMIONS else 0
     m = np.arange(parity, largest_m(state) + 1, 2)
     empty = PairOccupations(state.label, state.filling, state.statistics, m, np.zeros((1, len(m))))
     inside = norm < _FIT_RANGE
-    q = norm[inside]
-    data = samples[:, inside]
+    q, data = norm[inside], samples[:, inside]
     mean = data.mean(axis=0)
-    basis = empty.basis(q).T * np.exp(-0.5 * q**2)[:, None]
-    offset = 1.0 + empty.statistics_sign * float(state.filling) * np.exp(-0.5 * q**2)
     scatter = data.std(axis=0, ddof=1) / np.sqrt(len(data))
     n_eff = 1.0 / np.median((scatter / (mean + _ERROR_FLOOR)) ** 2)
-    weight = np.sqrt(n_eff) / (mean + _ERROR_FLOOR)
-    order, values = sum_rules(state.filling, state.statistics, state.shift)
-    rules = _rule_matrix(order, m)
-    penalty = 0.3 * (m / 10.0) ** 1.5
-    pinned = m < state.first_occupied
-    pinned |= _bounds_in_force(basis * weight[:, None], (mean - offset) * weight, rules, values, penalty, pinned)
-    response, constant = _linear_solution(basis, weight, rules, values, penalty, pinned)
-    coefficients = (data - offset) @ response.T + constant
-    return PairOccupations(state.label, state.filling, state.statistics, m, coefficients)
+    return OccupationFit(
+        m,
+        empty.basis(q).T * np.exp(-0.5 * q**2)[:, None],
+        data,
+        1.0 + empty.statistics_sign * float(state.filling) * np.exp(-0.5 * q**2),
+        np.sqrt(n_eff) / (mean + _ERROR_FLOOR),
+        0.3 * (m / 10.0) ** 1.5,
+    )
 
 
 def _bounds_in_force(

@@ -44,6 +44,18 @@ class Estimate:
         return {"value": self.value, "error": self.error}
 
 
+def lagged_products(chains: Array) -> Array:
+    """sum_i x_i x_(i+t) for every lag t, averaged over chains of shape (n_chains, n_steps): shape (n_steps,)."""
+    n = chains.shape[1]
+    length = 1 << (2 * n - 1).bit_length()
+    power = np.zeros(length // 2 + 1)
+    # Chain by chain: transforms of long runs would not fit into memory side by side.
+    for chain in chains:
+        transform = np.fft.rfft(chain, length)
+        power += transform.real**2 + transform.imag**2
+    return np.asarray(np.fft.irfft(power / len(chains), length)[:n])
+
+
 def integrated_autocorrelation_time(series: ArrayLike) -> float:
     """tau = 1 + 2 sum_t rho(t) of series of shape (n_chains, n_steps), in steps; 1 for independent values.
 
@@ -55,10 +67,7 @@ def integrated_autocorrelation_time(series: ArrayLike) -> float:
     n = x.shape[1]
     if n < 4:
         return math.nan
-    x = x - x.mean()
-    length = 1 << (2 * n - 1).bit_length()
-    spectrum = np.abs(np.fft.rfft(x, length, axis=1)) ** 2
-    covariance = np.fft.irfft(spectrum.mean(axis=0), length)[:n] / np.arange(n, 0, -1)
+    covariance = lagged_products(x - x.mean()) / np.arange(n, 0, -1)
     if not covariance[0] > 0.0:
         return math.nan
     times = 2.0 * np.cumsum(covariance / covariance[0]) - 1.0

@@ -17,11 +17,10 @@ _VERDICTS = {
     "unstable": "unstable: the isotropic hole is no minimum of the isotropic problem",
 }
 _NO_MINIMUM = "unstable: no minimum within the range searched, the energy falls to its edge"
-_HEALTH = {
-    "converged": "converged",
-    "short": "short: too few independent samples; raise sampling.sweeps or sampling.walkers",
-    "mixing": "mixing: the walkers disagree; raise sampling.equilibration and sampling.sweeps",
-    "stuck": "stuck: hardly a move is accepted; lower sampling.step or leave it out to have it tuned",
+_ADVICE = {
+    "short": "raise sampling.sweeps or sampling.walkers",
+    "mixing": "raise sampling.equilibration and sampling.sweeps",
+    "stuck": "lower sampling.step or leave it out to have it tuned",
 }
 
 
@@ -45,8 +44,21 @@ def _health_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
         ("autocorrelation time", f"{keys['autocorrelation_time']:.1f} sweeps"),
         ("independent energies", f"{keys['effective_samples']:.3g}"),
         *_control_rows(keys),
-        ("verdict on the run", _HEALTH[keys["verdict"]]),
+        ("verdict on the run", verdict_text(keys)),
     ]
+
+
+def verdict_text(keys: Mapping[str, Any]) -> str:
+    """Verdict on a run of ``diagnostics``, its reasons and what to do."""
+    verdict = str(keys["verdict"])
+    if verdict == "converged":
+        return verdict
+    reasons = "; ".join(keys["reasons"])
+    if reasons.startswith("incomplete"):
+        return f"{verdict}: {reasons}; the same command goes on"
+    wanted = keys["sweeps_to_add"]
+    advice = _ADVICE[verdict] if wanted is None else f"mcgeo sample CONFIG --extend {wanted}"
+    return f"{verdict}: {reasons}; {advice}"
 
 
 def _control_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:

@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from mcgeo.estimate.control_variates import control_z
 from mcgeo.estimate.droplet import DropletEnergies, RadialDensity, droplet_energies, radial_density
 from mcgeo.estimate.droplet_occupations import DropletOccupations, fit_droplet_occupations
 from mcgeo.estimate.statistics import Estimate, mean_estimate
@@ -27,7 +28,7 @@ from mcgeo.sampling.droplet_measurement import (
     SECOND_MOMENTS,
     configurations_counted,
 )
-from mcgeo.states.droplet import DropletState
+from mcgeo.states.droplet import DropletState, mean_square_radius
 from mcgeo.variational.droplet_surface import DropletInteraction, DropletSurface
 from mcgeo.variational.variation import Variation
 
@@ -79,6 +80,14 @@ class Droplet(Sampled):
     def second_moments(self) -> list[Estimate]:
         """<x^2>, <y^2>, <xy> per electron in the lab, l_B^2."""
         return [mean_estimate(column) for column in self.samples(SECOND_MOMENTS).T]
+
+    @property
+    def rules(self) -> dict[str, float]:
+        """<r'^2>, known from the angular momentum."""
+        moments = self.samples(SECOND_MOMENTS)
+        (xx, xy), (_, yy) = self.state.metric.matrix
+        radius_sq = moments @ np.array([xx, yy, 2.0 * xy]) - mean_square_radius(self.state)
+        return {"mean_square_radius": float(control_z(radius_sq[:, None])[0])}
 
     @property
     def density(self) -> RadialDensity:

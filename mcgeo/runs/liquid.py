@@ -12,6 +12,7 @@ from mcgeo.estimate.conjugate import conjugate_occupations, conjugate_structure
 from mcgeo.estimate.control_variates import Cleared, cleared, control_z
 from mcgeo.estimate.occupations import PairOccupations, fit_occupations
 from mcgeo.estimate.statistics import Estimate, mean_estimate
+from mcgeo.estimate.sum_rules import pairs_within, sum_rule_z
 from mcgeo.estimate.torus_energy import torus_energy
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.problem.interaction import Coulomb, Interaction
@@ -25,6 +26,9 @@ from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.variation import Variation, surface_of
 
 Array = NDArray[np.float64]
+
+# Beyond this |q|_g S(q) is one for every count of pairs.
+_WHOLE_STRUCTURE = 6.0
 
 
 class Liquid(Sampled):
@@ -123,6 +127,18 @@ class Liquid(Sampled):
         found = self.control_variates
         return self.independent(self.blocks.means[STRUCTURE] if found is None else found.blocks)
 
+    @property
+    def rules(self) -> dict[str, float]:
+        """Sum rules of the pair occupations; and pairs counted one by one against those that S(q) tells of."""
+        found = sum_rule_z(self.states[0], self.norm, self._sampled_structure)
+        if self.q_max >= _WHOLE_STRUCTURE:
+            counts = self.blocks.counts[PAIRS]
+            radius, electrons = BIN_WIDTH * counts.shape[-1], self.states[0].n_electrons
+            expected = pairs_within(self.frame, self.norm, self.blocks.means[STRUCTURE], electrons, radius)
+            difference = counts.sum(axis=-1) / self.configurations_per_count - expected
+            found["pair_count"] = float(control_z(self.independent(difference[..., None]))[0])
+        return found
+
     @cached_property
     def structure_samples(self) -> Array:
         """Independent samples of S(q) of the liquid asked for, shape (n_samples, n_waves)."""
@@ -151,5 +167,5 @@ class Liquid(Sampled):
             energy.value,
             energy.error,
             self.autocorrelation_time,
-            self.diagnostics.effective_samples,
+            self.effective_samples,
         )

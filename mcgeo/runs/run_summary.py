@@ -52,11 +52,24 @@ def diagnostics_summary(result: Sampled) -> dict[str, Any]:
     """``diagnostics`` of the JSON output."""
     health = result.diagnostics
     return {
+        "verdict": health.verdict,
+        "reasons": list(health.reasons),
+        "sweeps_to_add": health.sweeps_to_add,
         "acceptance": health.acceptance,
+        "least_acceptance": health.least_acceptance,
         "autocorrelation_time": health.autocorrelation_time,
         "effective_samples": health.effective_samples,
+        "bulk_samples": health.bulk_samples,
+        "tail_samples": health.tail_samples,
         "r_hat": health.r_hat,
-        "drift": float(result.blocks.drift.max()),
-        "verdict": health.verdict if result.complete else "short",
+        "r_hat_limit": health.r_hat_limit,
+        "blocking": {
+            "error": health.blocking.error,
+            "error_error": health.blocking.error_error,
+            "block_sweeps": health.blocking.block,
+            "plateau": health.blocking.reached,
+        },
+        "drift": health.drift,
+        "rules_z": dict(health.rules),
         **result.control_summary,
     }

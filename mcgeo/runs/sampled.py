@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from mcgeo.estimate.diagnostics import Diagnostics, diagnose
+from mcgeo.estimate.diagnostics import Diagnostics, RunLength, diagnose
 from mcgeo.estimate.statistics import independent_samples, integrated_autocorrelation_time
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.run_summary import diagnostics_summary
@@ -154,12 +154,23 @@ class Sampled(ABC):
         """Independent samples of block means of shape (n_blocks, n_walkers, ...)."""
         return independent_samples(blocks, self.schedule.measurements_per_block / self.time_in_measurements)
 
+    @property
+    def effective_samples(self) -> float:
+        """Independent energies in the whole run."""
+        return self.blocks.trace.size / max(self.time_in_measurements, 1.0)
+
+    @property
+    @abstractmethod
+    def rules(self) -> Mapping[str, float]:
+        """What must come out exactly, in standard errors of what was found."""
+
     @cached_property
     def diagnostics(self) -> Diagnostics:
         """Whether the run may be trusted."""
-        return diagnose(
-            self.blocks.trace, self.blocks.accepted, self.time_in_measurements, self.schedule.sweeps_between
-        )
+        schedule, blocks = self.schedule, self.blocks
+        per_block = schedule.measurements_per_block * schedule.sweeps_between
+        length = RunLength(schedule.sweeps_between, per_block, schedule.n_blocks)
+        return diagnose(blocks.trace, blocks.accepted, blocks.drift, self.rules, self.time_in_measurements, length)
 
     @property
     def control_summary(self) -> Mapping[str, Any]:

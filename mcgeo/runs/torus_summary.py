@@ -6,9 +6,9 @@ import math
 from collections.abc import Mapping
 from typing import Any
 
-from mcgeo.estimate.diagnostics import SHORT
+from mcgeo.estimate.diagnostics import CONVERGED, SHORT
 from mcgeo.runs.scan import estimate_pair, problem_summary
-from mcgeo.runs.torus_road import Comparison, TorusRoad
+from mcgeo.runs.torus_road import Comparison, TorusPoint, TorusRoad
 
 
 def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str, Any]:
@@ -18,7 +18,7 @@ def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str,
     """
     best = road.minimum
     aspect = math.exp(best.position.value)
-    worst = min(road.points, key=lambda point: point.liquid.diagnostics.effective_samples)
+    worst = min(road.points, key=_health)
     return {
         "state": {**worst.liquid.state_summary(), "metric": None},
         "road": "torus",
@@ -50,12 +50,20 @@ def torus_summary(road: TorusRoad, problem_keys: Mapping[str, Any]) -> dict[str,
     }
 
 
-def _curve_verdict(road: TorusRoad) -> dict[str, str]:
+def _health(point: TorusPoint) -> tuple[bool, float]:
+    """Worst first: what has not converged, then what has the fewest samples."""
+    found = point.liquid.diagnostics
+    return found.verdict == CONVERGED, found.effective_samples
+
+
+def _curve_verdict(road: TorusRoad) -> dict[str, Any]:
     """``short`` when the curve is no deeper than its errors: hole and orbit far apart make energies noisy."""
     energies = [point.energy for point in road.points]
     depth = max(e.value for e in energies) - min(e.value for e in energies)
     noisy = 3.0 * max(e.error for e in energies) > depth or road.minimum.gain_at_zero.value < 0.0
-    return {"verdict": SHORT} if noisy else {}
+    if not noisy:
+        return {}
+    return {"verdict": SHORT, "reasons": ["the curve is no deeper than its errors"], "sweeps_to_add": None}
 
 
 def comparison_summary(rows: list[Comparison]) -> list[dict[str, Any]]:

@@ -16,7 +16,7 @@ from mcgeo.cli import main
 
 ROOT = Path(__file__).parents[2]
 
-# Enough for 100 independent energies, and done in a moment.
+# Enough for 400 independent energies, and done in a moment.
 SMALL = """\
 state:
   kind: laughlin

@@ -21,7 +21,8 @@ SAMPLE_KEYS = {
 }  # fmt: skip
 STATE_KEYS = {"kind", "exponent", "electrons", "metric", "conjugate", "filling", "statistics", "label"}
 DIAGNOSTICS_KEYS = {
-    "acceptance", "autocorrelation_time", "effective_samples", "r_hat", "drift", "verdict"
+    "acceptance", "least_acceptance", "autocorrelation_time", "effective_samples", "bulk_samples", "tail_samples",
+    "r_hat", "r_hat_limit", "blocking", "drift", "rules_z", "verdict", "reasons", "sweeps_to_add",
 }  # fmt: skip
 PROBLEM_KEYS = {
     "mass", "interaction", "level", "interaction_name", "mass_stretch", "mass_angle_degrees",
@@ -101,9 +102,10 @@ def test_short_run_is_said_not_to_have_converged(mcgeo: Command, small: Path) ->
     small.write_text(SMALL.replace("sweeps: 480", "sweeps: 8"))
     answer = mcgeo("sample", "run.yaml", "--json")
     assert answer.code == 3
-    assert json.loads(answer.out)["diagnostics"]["verdict"] == "short"
+    found = json.loads(answer.out)["diagnostics"]
+    assert found["verdict"] == "short" and found["reasons"] and found["sweeps_to_add"] > 0
     text = mcgeo("scan", "run.yaml")
-    assert text.code == 3 and "raise sampling.sweeps" in text.out
+    assert text.code == 3 and f"mcgeo sample CONFIG --extend {found['sweeps_to_add']}" in text.out
 
 
 def test_same_command_again_takes_the_file(mcgeo: Command, small: Path) -> None:

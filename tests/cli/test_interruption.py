@@ -63,7 +63,9 @@ def test_interrupted_run_ends_like_an_uninterrupted_one(
         assert not file.attrs["complete"]
     # A result file already: it can be looked at, and says that it is short.
     assert main(["scan", str(tmp_path / "stopped/liquid.h5"), "--json"]) == 3
-    assert json.loads(capsys.readouterr().out)["diagnostics"]["verdict"] == "short"
+    found = json.loads(capsys.readouterr().out)["diagnostics"]
+    assert found["verdict"] == "short" and found["reasons"][0] == "incomplete: 3 of 8 blocks"
+    assert found["sweeps_to_add"] >= 5 * 60
 
     answers = []
     for folder in ("stopped", "whole"):

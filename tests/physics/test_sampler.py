@@ -25,6 +25,7 @@ from mcgeo.runs.liquid import Liquid
 from mcgeo.sampling.chain import Schedule, equilibrated, next_block
 from mcgeo.sampling.measurement import STRUCTURE, torus_measurement
 from mcgeo.states.laughlin import Laughlin
+from tests.physics.autoregressive import autoregressive
 from tests.physics.checks import LEAST_PROBABILITY, Sampler, require_unit_pulls
 
 Array = NDArray[np.float64]
@@ -96,15 +97,6 @@ def test_walkers_against_emcee(sampled: Sampler) -> None:
 def test_emcee_tells_a_slightly_wrong_exponent(sampled: Sampler) -> None:
     measured = measured_structure(sampled(3, ELECTRONS, tau=TAU, sweeps=16000, seed=71))
     assert difference_probability(measured, structure_by_emcee(2.85)) < LEAST_PROBABILITY
-
-
-def autoregressive(rng: np.random.Generator, a: float, shape: tuple[int, int]) -> Array:
-    """x' = a x + noise with unit variance, started in equilibrium; shape (n_chains, n_steps)."""
-    x = rng.standard_normal(shape)
-    x[:, 1:] *= math.sqrt(1.0 - a * a)
-    for t in range(1, shape[1]):
-        x[:, t] += a * x[:, t - 1]
-    return x
 
 
 @pytest.mark.parametrize("a", [0.0, 0.5, 0.9, 0.97])
