@@ -120,7 +120,7 @@ def r_hat_limit(samples_per_half: float, n_halves: int) -> float:
 
 
 def _limit_of(chains: Array) -> float:
-    """The same with the autocorrelation time about the half-chains' own means, which their disagreement leaves alone."""
+    """The same with the autocorrelation time about the half-chains' own means, which no disagreement enters."""
     cut = halves(chains)
     time = integrated_autocorrelation_time(cut - cut.mean(axis=1, keepdims=True))
     return r_hat_limit(cut.shape[1] / max(time, 1.0), len(cut)) if math.isfinite(time) else math.nan
