@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import secrets
+from contextlib import nullcontext
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +14,7 @@ from mcgeo.runs.lock import run_lock
 from mcgeo.runs.production import Production, Standing
 from mcgeo.runs.progress import say
 from mcgeo.runs.sampled import Sampled
-from mcgeo.runs.signals import stop_on_signals
+from mcgeo.runs.signals import StopFlag, stop_on_signals
 from mcgeo.runs.start import START_FILE, equilibrated_chains, seed_of_start
 from mcgeo.runs.storage import read_result
 
@@ -21,7 +22,13 @@ LIQUID_FILE = "liquid.h5"
 
 
 def sample(
-    config: Config, folder: Path, *, overwrite: bool = False, extend: int | None = None, quiet: bool = False
+    config: Config,
+    folder: Path,
+    *,
+    overwrite: bool = False,
+    extend: int | None = None,
+    quiet: bool = False,
+    stop: StopFlag | None = None,
 ) -> Sampled:
     """The sampled liquid of a configuration: read when it is there, continued when cut short, otherwise run.
 
@@ -38,6 +45,8 @@ def sample(
         Sweeps to add to the finished run in the folder, rounded up to whole blocks.
     quiet : bool
         Nothing on standard error.
+    stop : StopFlag, optional
+        Set by the caller to end the run early; signals are then the caller's concern.
 
     Raises
     ------
@@ -54,7 +63,7 @@ def sample(
             # Another process may have gone on meanwhile.
             keys, earlier = _joined(config, path, overwrite, extend)
             if _whole(keys, earlier) is None:
-                return _run(keys, path, earlier, quiet)
+                return _run(keys, path, earlier, quiet, stop)
     result = _whole(keys, earlier)
     assert result is not None
     if not quiet:
@@ -93,13 +102,15 @@ def _whole(keys: dict[str, Any], earlier: Sampled | None) -> Sampled | None:
     return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
 
 
-def _run(keys: dict[str, Any], path: Path, earlier: Sampled | None, quiet: bool) -> Sampled:
+def _run(
+    keys: dict[str, Any], path: Path, earlier: Sampled | None, quiet: bool, given_stop: StopFlag | None
+) -> Sampled:
     start = path.with_name(START_FILE)
     if keys["sampling"]["seed"] is None:
         drawn = seed_of_start(start, keys)
         keys["sampling"]["seed"] = secrets.randbits(63) if drawn is None else drawn
     experiment = experiment_of(keys)
-    with stop_on_signals() as stop:
+    with stop_on_signals() if given_stop is None else nullcontext(given_stop) as stop:
         if earlier is None:
             standing = Standing(equilibrated_chains(start, keys, experiment, stop, quiet))
         else:

@@ -16,9 +16,11 @@ class StopFlag(threading.Event):
 
 
 @contextmanager
-def stop_on_signals() -> Iterator[StopFlag]:
-    """A flag that the two signals set, within the context; in another thread than the main one it stays unset."""
-    flag = StopFlag()
+def stop_on_signals(given: StopFlag | None = None) -> Iterator[StopFlag]:
+    """A flag, the one given if any, that the two signals set, within the context; in another thread than the main
+    one it stays unset.
+    """
+    flag = StopFlag() if given is None else given
 
     def request(number: int, frame: FrameType | None) -> None:
         flag.signal_number = number

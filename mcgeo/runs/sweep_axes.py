@@ -13,6 +13,7 @@ from typing import Any
 
 from pydantic_core import PydanticCustomError
 
+from mcgeo.runs.config import UNRELATED_TO_RESULTS
 from mcgeo.runs.config_faults import Remark
 from mcgeo.runs.material_table import path_inside
 from mcgeo.runs.sweep_config import (
@@ -33,7 +34,7 @@ _DIGITS = 12
 _MAX_BYTES = 10_000_000
 _NOT_SWEPT = {
     "sweep": "a sweep cannot hold another",
-    "sampling.threads": "threads do not change a result; give them once, in sampling or by --threads",
+    **{f"sampling.{key}": "no result depends on it" for key in UNRELATED_TO_RESULTS},
 }
 _WORDS = {"true": True, "false": False, "null": None}
 

@@ -18,7 +18,7 @@ from typing import Any, NamedTuple
 from pydantic import ValidationError
 
 from mcgeo.errors import ConfigError
-from mcgeo.runs.config import Config, config_from_resolved, resolved, state_identity, validated
+from mcgeo.runs.config import Config, resolved, state_identity, validated
 from mcgeo.runs.config_faults import Remark, explain
 from mcgeo.runs.sweep_axes import Axis, NoSuchPlaceError, axes_of, data_at, indices_at, named_values
 from mcgeo.runs.sweep_config import MOST_POINTS, SweepConfig
@@ -41,11 +41,14 @@ class Point(NamedTuple):
         Hash of all that its numbers depend on.
     liquid : str
         Hash of what its sampling depends on.
+    family : str
+        Hash of all of the problem but the mass: what points of one family share is found once.
     """
 
     position: int
     name: str
     liquid: str
+    family: str
 
 
 @dataclass(frozen=True, eq=False)
@@ -185,13 +188,9 @@ def _expanded(
 def point_of(config: Config, position: int = 0) -> Point:
     """Name and liquid of a configuration; ``scan`` and threads, which change no number of the optimum, are left out."""
     sampling, data = state_identity(config), resolved(config)
-    name = _hash({**sampling, "problem": data["problem"], "material": data["material"]})
-    return Point(position, name, _hash(sampling))
-
-
-def liquid_config(keys: Mapping[str, Any], threads: int) -> Config:
-    """The configuration of which `resolved` gave ``keys``, with so many threads."""
-    return config_from_resolved({**keys, "sampling": {**keys["sampling"], "threads": threads}})
+    problem = data["problem"]
+    name = _hash({**sampling, "problem": problem, "material": data["material"]})
+    return Point(position, name, _hash(sampling), _hash({key: problem[key] for key in problem if key != "mass"}))
 
 
 def _hash(keys: Mapping[str, Any]) -> str:

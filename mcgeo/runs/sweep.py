@@ -1,0 +1,250 @@
+"""The engine of sweeps: hand out samplings and optima to an executor until every point has its row.
+
+It knows nothing of where the tasks run. What is done is read from the folder, so that any command that runs it again
+does what is missing, be it after an interruption, with more workers, or for changed axes.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, CancelledError, Executor, Future, wait
+from contextlib import suppress
+from dataclasses import dataclass, replace
+from pathlib import Path
+
+from mcgeo.errors import McgeoError, RunInterrupted
+from mcgeo.runs.executors import Crew
+from mcgeo.runs.signals import StopFlag, stop_on_signals
+from mcgeo.runs.sweep_plan import Point, SweepPlan
+from mcgeo.runs.sweep_progress import SweepProgress
+from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, Job, Queue
+from mcgeo.runs.sweep_rows import RowFile, known_points
+from mcgeo.runs.sweep_tasks import LIQUIDS, Question, Report, find_optima, liquid_progress, sample_liquid
+
+_SECONDS_BETWEEN_LOOKS = 0.5
+# Executors that break so often in a row, without one task done, will not do better the next time.
+_MOST_BREAKS = 10
+
+
+class WorkersLost(McgeoError):
+    """Workers die one after the other before anything is done."""
+
+    exit_code = 4
+
+
+@dataclass(frozen=True)
+class Costs:
+    """Estimated seconds of one core: of every liquid to sample, and of one optimum."""
+
+    liquids: Mapping[str, float]
+    optimum: float
+
+
+def wanted_points(plan: SweepPlan, folder: Path, *, retry: bool) -> list[Point]:
+    """Points without a row, each once; those that have failed before are among them only with ``retry``."""
+    known = known_points(folder)
+    left = {
+        point.name: point
+        for point in plan.points
+        if point.name not in known.done and (retry or point.name not in known.failed)
+    }
+    return list(left.values())
+
+
+def run_sweep(plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, *, retry: bool, quiet: bool) -> None:
+    """Do what is missing of a sweep.
+
+    Parameters
+    ----------
+    folder : Path
+        Of the sweep: ``liquids/`` and ``points/`` are in it.
+    retry : bool
+        Whether points that have failed before are tried again.
+
+    Raises
+    ------
+    RunInterrupted
+        On Ctrl-C or a request to terminate, once all workers have stopped; what is done is in the folder.
+    WorkersLost
+        If workers keep dying.
+    """
+    wanted: dict[str, list[Point]] = {}
+    for point in wanted_points(plan, folder, retry=retry):
+        wanted.setdefault(point.liquid, []).append(point)
+    run = _Run(plan, folder, crew, costs, wanted)
+    with _stop_sign(folder) as stop, stop_on_signals(stop), run.progress(quiet):
+        run.until_done(stop)
+    if stop.is_set():
+        raise RunInterrupted(
+            f"interrupted: what is done is in {folder}; the same command goes on from there", stop.signal_number
+        )
+
+
+class _StopSign(StopFlag):
+    """A flag whose raising all workers see, as a file in the folder they share; a context manager."""
+
+    def __init__(self, path: Path) -> None:
+        super().__init__()
+        self.path = path
+
+    def set(self) -> None:
+        """Raise the flag and make the file."""
+        super().set()
+        with suppress(OSError):
+            self.path.touch()
+
+    def __enter__(self) -> _StopSign:
+        self.path.unlink(missing_ok=True)
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.path.unlink(missing_ok=True)
+
+
+def _stop_sign(folder: Path) -> _StopSign:
+    return _StopSign(folder / ".stop")
+
+
+class _Run:
+    """One run of the engine."""
+
+    def __init__(
+        self, plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, wanted: Mapping[str, list[Point]]
+    ) -> None:
+        self._plan, self._folder, self._crew, self._costs = plan, folder, crew, costs
+        self._queue = Queue(crew)
+        self._in_flight: dict[Future[Report], Job] = {}
+        self._breaks = 0
+        waiting = {}
+        for liquid, points in wanted.items():
+            if liquid_progress(folder, liquid).complete:
+                self._queue.add_points(liquid, points)
+            else:
+                waiting[liquid] = points
+        self._queue.add_liquids(waiting, costs.liquids)
+        self._n_liquids, self._n_points = len(waiting), sum(map(len, wanted.values()))
+        self._seconds = sum(costs.liquids[liquid] for liquid in waiting) + costs.optimum * self._n_points
+
+    def progress(self, quiet: bool) -> SweepProgress:
+        """Its progress, to be entered."""
+        self._progress = SweepProgress(self._n_liquids, self._n_points, self._seconds, quiet)
+        return self._progress
+
+    def until_done(self, stop: StopFlag) -> None:
+        """Hand out jobs and take reports until all is done or the flag is set, and no worker is at work."""
+        if not self._queue:
+            return
+        executor = self._crew.start()
+        try:
+            while self._in_flight or (self._queue and not stop.is_set()):
+                broken = not stop.is_set() and self._hand_out(executor, stop)
+                if stop.is_set():
+                    for future in self._in_flight:
+                        future.cancel()
+                done, _ = wait(self._in_flight, timeout=_SECONDS_BETWEEN_LOOKS, return_when=FIRST_COMPLETED)
+                for future in done:
+                    broken |= self._take(future, self._in_flight.pop(future), stop)
+                if broken:
+                    executor = self._renewed(executor)
+        finally:
+            executor.shutdown(wait=True, cancel_futures=True)
+
+    def _hand_out(self, executor: Executor, stop: StopFlag) -> bool:
+        """Start what may start; true if the executor has broken."""
+        while (job := self._queue.next_job(self._in_flight.values())) is not None:
+            try:
+                future = self._submit(executor, job)
+            except BrokenExecutor:
+                self._queue.again(job)
+                return True
+            self._in_flight[future] = job
+            if future.done() or stop.is_set():
+                # A task done at once, in this process: its report first, which may bring more to do.
+                return False
+        return False
+
+    def _submit(self, executor: Executor, job: Job) -> Future[Report]:
+        stop_path = _stop_sign(self._folder).path
+        if not job.points:
+            keys = self._plan.resolved(self._plan.liquids[job.liquid][0])
+            return executor.submit(sample_liquid, self._folder, job.liquid, keys, job.threads, stop_path)
+        questions = []
+        for point in job.points:
+            keys = self._plan.resolved(point)
+            questions.append(Question(point.name, keys["problem"], keys["material"]))
+        return executor.submit(find_optima, self._folder, job.liquid, questions, stop_path)
+
+    def _take(self, future: Future[Report], job: Job, stop: StopFlag) -> bool:
+        """What a task reports; true if the executor has broken."""
+        try:
+            report = future.result()
+        except CancelledError:
+            self._queue.again(job)
+            return False
+        except BrokenExecutor:
+            self._died(job)
+            return True
+        except Exception as fault:
+            self._hindered(job, f"{type(fault).__name__}: {fault}")
+            return False
+        self._breaks = 0
+        if report.rows or report.failures:
+            self._progress.step(
+                points=report.rows,
+                failures=report.failures,
+                seconds=self._costs.optimum * (report.rows + report.failures),
+            )
+        if report.end == "done":
+            self._done(job, report)
+        elif report.end == "failed":
+            self._failed(job, report.words)
+        elif report.end == "hindered":
+            self._hindered(job, report.words)
+        elif not stop.is_set():
+            # Somebody has stopped the worker, but not the sweep.
+            self._died(job)
+        return False
+
+    def _done(self, job: Job, report: Report) -> None:
+        if job.points:
+            self._queue.took(job.liquid, report.seconds / len(job.points))
+            return
+        self._queue.sampled(job.liquid)
+        self._progress.step(liquids=1, seconds=self._costs.liquids[job.liquid])
+
+    def _failed(self, job: Job, words: str) -> None:
+        points = job.points
+        if not points:
+            points = self._queue.give_up(job.liquid)
+            words = f"sampling: {words}"
+            self._progress.step(liquids=1, seconds=self._costs.liquids[job.liquid])
+        RowFile(job.liquid, failed={point.name: words for point in points}).write(self._folder)
+        self._progress.step(failures=len(points), seconds=self._costs.optimum * len(points))
+
+    def _hindered(self, job: Job, words: str) -> None:
+        job = replace(job, hindrances=job.hindrances + 1)
+        if job.hindrances >= MOST_HINDRANCES:
+            self._failed(job, words)
+        else:
+            self._queue.again(job)
+
+    def _died(self, job: Job) -> None:
+        job = replace(job, deaths=job.deaths + 1)
+        if job.deaths >= MOST_DEATHS:
+            self._failed(job, f"the worker died over it {job.deaths} times, the last time with nothing beside it")
+        else:
+            self._queue.again(job)
+
+    def _renewed(self, executor: Executor) -> Executor:
+        """A new executor; all that was in flight in the old one has died with it."""
+        executor.shutdown(wait=True, cancel_futures=True)
+        for future, job in list(self._in_flight.items()):
+            del self._in_flight[future]
+            self._take(future, job, StopFlag())
+        self._breaks += 1
+        if self._breaks >= _MOST_BREAKS:
+            raise WorkersLost(
+                f"workers died {self._breaks} times in a row before one task was done; what is done is in "
+                f"{self._folder}. Is there memory enough for {self._crew.tasks} workers?"
+            )
+        return self._crew.start()

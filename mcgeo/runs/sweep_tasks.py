@@ -1,0 +1,210 @@
+"""What workers of a sweep do: sample one liquid, or find the optima of some of its points.
+
+Module-level functions of plain arguments, so that any executor can carry them to any process. They write their files
+themselves and give back a few words; no error leaves them, because an error may not survive the way back.
+"""
+
+from __future__ import annotations
+
+import threading
+import time
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from functools import lru_cache
+from pathlib import Path
+from typing import Any, NamedTuple
+
+import h5py
+
+from mcgeo.errors import McgeoError, RunInterrupted, StorageError
+from mcgeo.runs.config import config_from_resolved
+from mcgeo.runs.droplet import Droplet
+from mcgeo.runs.droplet_summary import droplet_state_summary
+from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.run_summary import diagnostics_summary
+from mcgeo.runs.sample import LIQUID_FILE, sample
+from mcgeo.runs.sample_summary import liquid_state_summary
+from mcgeo.runs.sampled import Sampled
+from mcgeo.runs.scan import SharedAnswers, optimum, optimum_summary, problem_summary
+from mcgeo.runs.signals import StopFlag
+from mcgeo.runs.storage import read_result
+from mcgeo.runs.sweep_rows import RowFile
+from mcgeo.runs.units import with_units
+
+LIQUIDS = "liquids"
+
+_SECONDS_BETWEEN_LOOKS = 0.2
+_LIQUIDS_KEPT = 2
+_OF_PROBLEM = ("interaction_name", "level", "mass_stretch", "mass_angle_degrees", "orbit_aspect_ratio")
+
+Keys = Mapping[str, Any]
+
+
+class Report(NamedTuple):
+    """How a task went.
+
+    Attributes
+    ----------
+    end : str
+        ``done``; ``stopped`` before its end because it was told to; ``failed`` for good; ``hindered`` by something
+        that may pass, such as a full disk.
+    words : str
+        Why, where it is not done.
+    rows, failures : int
+        Points that have got a row, and points that cannot have one.
+    seconds : float
+        Time it took.
+    """
+
+    end: str
+    words: str = ""
+    rows: int = 0
+    failures: int = 0
+    seconds: float = 0.0
+
+
+class Question(NamedTuple):
+    """A point as a worker sees it: its name, and ``problem`` and ``material`` of its resolved configuration."""
+
+    point: str
+    problem: Keys
+    material: Keys | None
+
+
+@contextmanager
+def _stop_file(path: Path) -> Iterator[StopFlag]:
+    """A flag that is set once the file is there: the one sign that reaches workers on every machine."""
+    flag, ended = StopFlag(), threading.Event()
+
+    def look() -> None:
+        while not ended.wait(_SECONDS_BETWEEN_LOOKS):
+            if path.exists():
+                flag.set()
+                return
+
+    if path.exists():
+        flag.set()
+    watcher = threading.Thread(target=look, daemon=True)
+    watcher.start()
+    try:
+        yield flag
+    finally:
+        ended.set()
+        watcher.join()
+
+
+def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, stop_path: Path) -> Report:
+    """Sample a liquid into ``liquids/HASH`` of the sweep's folder, or go on with it.
+
+    Parameters
+    ----------
+    keys : mapping
+        Resolved configuration of any point of the liquid.
+    stop_path : Path
+        File whose appearance asks for an early end.
+    """
+    try:
+        config = config_from_resolved({**keys, "sampling": {**keys["sampling"], "threads": threads}})
+        with _stop_file(stop_path) as stop:
+            sample(config, folder / LIQUIDS / liquid, quiet=True, stop=stop)
+    except RunInterrupted as fault:
+        return Report("stopped", str(fault))
+    except (StorageError, OSError, MemoryError) as fault:
+        return Report("hindered", _words(fault))
+    except Exception as fault:
+        return Report("failed", _words(fault))
+    return Report("done")
+
+
+def find_optima(folder: Path, liquid: str, questions: Sequence[Question], stop_path: Path) -> Report:
+    """The optima of some points of a sampled liquid, left as one file of rows.
+
+    A point whose optimum cannot be found is kept with the reason.
+    """
+    started = time.monotonic()
+    rows: dict[str, Keys] = {}
+    failed: dict[str, str] = {}
+    try:
+        opened = _opened(folder / LIQUIDS / liquid / LIQUID_FILE)
+        with _stop_file(stop_path) as stop:
+            for question in questions:
+                if stop.is_set():
+                    break
+                try:
+                    rows[question.point] = opened.row(question)
+                except Exception as fault:
+                    failed[question.point] = _words(fault)
+        if rows or failed:
+            seconds = time.monotonic() - started
+            RowFile.of(liquid, opened.shared_columns, rows, failed, seconds).write(folder)
+    except (StorageError, OSError, MemoryError) as fault:
+        return Report("hindered", _words(fault))
+    except Exception as fault:
+        return Report("failed", _words(fault))
+    left = len(questions) - len(rows) - len(failed)
+    return Report("stopped" if left else "done", "", len(rows), len(failed), time.monotonic() - started)
+
+
+def _words(fault: BaseException) -> str:
+    text = " ".join(str(fault).split())
+    return text if isinstance(fault, McgeoError) else f"{type(fault).__name__}: {text}"
+
+
+class _Opened:
+    """A liquid that questions are put to."""
+
+    def __init__(self, result: Sampled) -> None:
+        assert isinstance(result, Liquid | Droplet)
+        self._liquid = result
+        self._state = droplet_state_summary(result) if isinstance(result, Droplet) else liquid_state_summary(result)
+        self._answers = SharedAnswers()
+
+    @property
+    def shared_columns(self) -> dict[str, Any]:
+        """What all rows of the liquid have in common."""
+        health = diagnostics_summary(self._liquid)
+        return {
+            "label": self._state["label"],
+            "filling": self._state["filling"],
+            "electrons": self._state["liquid_electrons"],
+            "seed": self._liquid.resolved["sampling"]["seed"],
+            "acceptance": health["acceptance"],
+            "autocorrelation_time": health["autocorrelation_time"],
+            "effective_samples": health["effective_samples"],
+            "run_verdict": health["verdict"],
+        }
+
+    def row(self, question: Question) -> dict[str, Any]:
+        """The numbers of one point."""
+        found = optimum(self._liquid, question.problem, self._answers)
+        problem = problem_summary(found.problem, question.problem)
+        summary = {"state": self._state, "optimum": optimum_summary(found)}
+        summary = with_units(summary, {"material": question.material})
+        best = {name: value for name, value in summary["optimum"].items() if not isinstance(value, list | Mapping)}
+        return {**best, **{name: problem[name] for name in _OF_PROBLEM}, **summary.get("units", {})}
+
+
+def _opened(path: Path) -> _Opened:
+    return _opened_as_of(path, path.stat().st_mtime_ns)
+
+
+@lru_cache(maxsize=_LIQUIDS_KEPT)
+def _opened_as_of(path: Path, changed: int) -> _Opened:
+    """Kept from task to task of a process; ``changed`` tells a file from one that has taken its place."""
+    return _Opened(read_result(path))
+
+
+class LiquidProgress(NamedTuple):
+    """How far the sampling of a liquid has come: blocks kept, and whether they are all."""
+
+    blocks: int
+    complete: bool
+
+
+def liquid_progress(folder: Path, liquid: str) -> LiquidProgress:
+    """How far a liquid of a sweep's folder is, as of its last checkpoint; a file that cannot be read counts as none."""
+    try:
+        with h5py.File(folder / LIQUIDS / liquid / LIQUID_FILE, "r") as file:
+            return LiquidProgress(len(file["blocks/drift"][0]), bool(file.attrs["complete"]))
+    except (OSError, KeyError, ValueError):
+        return LiquidProgress(0, False)
