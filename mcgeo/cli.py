@@ -18,6 +18,7 @@ from mcgeo.errors import McgeoError
 
 _EXIT_CODES = """exit codes:
   0 done, 2 usage or configuration, 3 finished but not converged,
+  4 some points of a sweep failed or are missing,
   130 or 143 interrupted (whole blocks are kept), 1 a bug
 """
 
@@ -26,6 +27,7 @@ _FIGURES = ["hole", "energy", "structure", "correlation", "occupations", "densit
 _MODULES = {
     "sample": "run",
     "scan": "scan",
+    "sweep": "sweep",
     "plot": "plot",
     "check": "describe",
     "info": "describe",
@@ -59,6 +61,8 @@ def build_parser() -> argparse.ArgumentParser:
         "--compare", action="store_true", help="energies of both roads, plane and torus, and their difference"
     )
 
+    _add_sweep(commands)
+
     plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
     plot.add_argument("what", choices=_FIGURES)
     plot.add_argument("file", type=Path, metavar="FILE", help="result file, or a folder that holds one")
@@ -74,6 +78,19 @@ def build_parser() -> argparse.ArgumentParser:
     info.add_argument("--json", action="store_true", help="one JSON object on standard output")
     _command(commands, "schema", "JSON schema of the configuration, for editors", "mcgeo schema > mcgeo.schema.json")
     return parser
+
+
+def _add_sweep(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    sweep = _command(commands, "sweep", "every point of a grid of configurations", "mcgeo sweep wells.yaml --workers 4")
+    sweep.add_argument("config", type=Path, metavar="CONFIG", help="YAML configuration with the key sweep")
+    sweep.add_argument("--out", type=Path, metavar="DIR", help="folder of the sweep (default: NAME_sweep here)")
+    sweep.add_argument("--workers", type=_positive, metavar="N", help="processes (default: all cores allowed)")
+    sweep.add_argument(
+        "--threads", type=_positive, metavar="N", help="threads of every sampling (default: cores shared out)"
+    )
+    sweep.add_argument("--retry", action="store_true", help="try points again that have failed before")
+    sweep.add_argument("--json", action="store_true", help="one JSON object on standard output")
+    sweep.add_argument("-q", "--quiet", action="store_true", help="no progress on standard error")
 
 
 def _command(

@@ -14,9 +14,12 @@ import numba
 import mcgeo
 from mcgeo.commands.run import as_json
 from mcgeo.kernels._jit import cache_folder
+from mcgeo.report.sweep_text import sweep_plan_text
 from mcgeo.runs.build import available_threads
 from mcgeo.runs.config import json_schema, load_config, resolved
 from mcgeo.runs.plan import plan_of
+from mcgeo.runs.sweep_estimate import sweep_summary
+from mcgeo.runs.sweep_plan import has_sweep, load_sweep
 
 _LIBRARIES = ("numpy", "numba", "llvmlite", "scipy", "matplotlib", "h5py", "PyYAML", "pydantic", "tqdm")
 
@@ -32,6 +35,9 @@ def _rows(summary: dict[str, Any]) -> str:
 
 def run_check(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo check``: the plan of a valid configuration and what it will cost."""
+    if has_sweep(arguments.config):
+        sweep = sweep_summary(load_sweep(arguments.config), cores=available_threads())
+        return as_json(sweep) if arguments.json else sweep_plan_text(sweep), 0
     plan = plan_of(resolved(load_config(arguments.config)))
     return as_json(plan) if arguments.json else _rows(plan), 0
 

@@ -15,12 +15,56 @@ from mcgeo.runs.scan import require_reach
 _SECONDS_PER_PAIR = 1.0e-9
 _SECONDS_PER_WAVE_AND_ELECTRON = 0.25e-9
 _SECONDS_PER_MEASURED_PAIR = 1.7e-9
+# Seconds of one optimum with its response, and what a tilted field makes of them.
+_SECONDS_PER_OPTIMUM = {"projected": 0.1, "rigid": 0.2, "two_metric": 0.5}
+_TILTED_COST = 8.0
+# Points of the curve that cost as much as the optimum.
+_CURVE_POINTS_PER_OPTIMUM = 40.0
 # Numbers per block and walker beside the waves and the trace: histograms.
 _KEPT_BESIDE_WAVES = 200
 
 
 def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
-    """The plan: sizes, shapes, and estimates of time and disk.
+    """The plan: sizes, shapes, and estimates of time and disk, the scan's time included.
+
+    Raises
+    ------
+    GeometryError
+        If the cell does not suit the state.
+    ConfigError
+        If the scan reaches too far from the mass.
+    """
+    problem = problem_from(resolved["problem"])
+    require_reach(problem, resolved["scan"])
+    found = sampling_plan(resolved)
+    core_seconds, points = found.pop("core_seconds"), resolved["scan"]["stretch"]["points"]
+    cores = min(found["threads"], -(-found["walkers"] // LANES))
+    if resolved["scan"]["road"] == "torus":
+        # Every metric of the scan is sampled by itself.
+        core_seconds, scanning = points * core_seconds, 0.0
+        found["estimated_megabytes"] = round(points * found["estimated_megabytes"], 2)
+    else:
+        scanning = optimum_seconds(resolved["problem"]) * (1.0 + points / _CURVE_POINTS_PER_OPTIMUM)
+    return {
+        **found,
+        "interaction": problem.interaction.name,
+        "level": problem.level,
+        "mass_stretch": problem.mass_metric.stretch,
+        "scan_points": points,
+        "estimated_sampling_seconds": round(core_seconds / cores, 1),
+        "estimated_scan_seconds": round(scanning, 1),
+        "estimated_seconds": round(core_seconds / cores + scanning, 1),
+    }
+
+
+def optimum_seconds(problem: Mapping[str, Any]) -> float:
+    """About what the optimum of one problem takes, of one core."""
+    tilted = 1.0 if problem["tilt"] is None else _TILTED_COST
+    return _SECONDS_PER_OPTIMUM[problem["variation"]] * tilted
+
+
+def sampling_plan(resolved: Mapping[str, Any]) -> dict[str, Any]:
+    """What of the plan belongs to the sampling; ``core_seconds`` is its time on one core.
 
     Raises
     ------
@@ -32,12 +76,9 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
     schedule = schedule_from(resolved, state)
     n, n_components = state.n_electrons, len(experiment.states)
     surface, n_waves, seconds_per_measurement = _surface(resolved)
-    problem = problem_from(resolved["problem"])
-    require_reach(problem, resolved["scan"])
     sweeps = schedule.sweeps_per_walker + 2 * schedule.equilibration
     per_walker = sweeps * n * (n - 1.0) * state.proposals_per_sweep * state.cost_per_pair * _SECONDS_PER_PAIR
     per_walker += sweeps / schedule.sweeps_between * seconds_per_measurement
-    cores = min(schedule.threads, -(-schedule.n_walkers // LANES))
     kept = n_waves + _KEPT_BESIDE_WAVES + n_components * schedule.measurements_per_block
     return {
         "state": state.label,
@@ -48,12 +89,8 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
         "sweeps_per_walker": schedule.sweeps_per_walker,
         "blocks": schedule.n_blocks,
         "sweeps_between_measurements": schedule.sweeps_between,
-        "interaction": problem.interaction.name,
-        "level": problem.level,
-        "mass_stretch": problem.mass_metric.stretch,
-        "scan_points": resolved["scan"]["stretch"]["points"],
         "threads": schedule.threads,
-        "estimated_seconds": round(per_walker * schedule.n_walkers * n_components / cores, 1),
+        "core_seconds": per_walker * schedule.n_walkers * n_components,
         "estimated_megabytes": round(schedule.n_blocks * schedule.n_walkers * kept * 8e-6, 2),
     }
 

@@ -13,11 +13,14 @@ from numpy.typing import NDArray
 
 from mcgeo.estimate.diagnostics import Diagnostics, RunLength, diagnose
 from mcgeo.estimate.statistics import independent_samples, integrated_autocorrelation_time
+from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.sampling.blocks import BlockRecord
 from mcgeo.sampling.chain import ChainState, Schedule
 from mcgeo.states.base import SampledState
+from mcgeo.variational.energy_surface import Surface
+from mcgeo.variational.variation import Variation
 
 Array = NDArray[np.float64]
 
@@ -176,6 +179,14 @@ class Sampled(ABC):
     def control_summary(self) -> Mapping[str, Any]:
         """What the diagnostics say of control variates; nothing where none were measured."""
         return {}
+
+    @abstractmethod
+    def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
+        """Energy of every sample over the hole's metric; see `mcgeo.runs.scannable.Scannable`."""
+
+    @abstractmethod
+    def state_summary(self) -> dict[str, Any]:
+        """``state`` of the JSON output."""
 
     def diagnostics_summary(self) -> dict[str, Any]:
         """``diagnostics`` of the JSON output."""

@@ -19,7 +19,7 @@ from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points
-from mcgeo.runs.sweep_tasks import LIQUIDS, Question, Report, find_optima, liquid_progress, sample_liquid
+from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, sample_liquid
 
 _SECONDS_BETWEEN_LOOKS = 0.5
 # Executors that break so often in a row, without one task done, will not do better the next time.
@@ -115,6 +115,7 @@ class _Run:
         self._queue = Queue(crew)
         self._in_flight: dict[Future[Report], Job] = {}
         self._breaks = 0
+        self._any_point = {liquid: points[0] for liquid, points in wanted.items()}
         waiting = {}
         for liquid, points in wanted.items():
             if liquid_progress(folder, liquid).complete:
@@ -166,7 +167,7 @@ class _Run:
     def _submit(self, executor: Executor, job: Job) -> Future[Report]:
         stop_path = _stop_sign(self._folder).path
         if not job.points:
-            keys = self._plan.resolved(self._plan.liquids[job.liquid][0])
+            keys = self._plan.resolved(self._any_point[job.liquid])
             return executor.submit(sample_liquid, self._folder, job.liquid, keys, job.threads, stop_path)
         questions = []
         for point in job.points:

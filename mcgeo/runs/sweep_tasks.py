@@ -18,12 +18,7 @@ import h5py
 
 from mcgeo.errors import McgeoError, RunInterrupted, StorageError
 from mcgeo.runs.config import config_from_resolved
-from mcgeo.runs.droplet import Droplet
-from mcgeo.runs.droplet_summary import droplet_state_summary
-from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.run_summary import diagnostics_summary
 from mcgeo.runs.sample import LIQUID_FILE, sample
-from mcgeo.runs.sample_summary import liquid_state_summary
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import SharedAnswers, optimum, optimum_summary, problem_summary
 from mcgeo.runs.signals import StopFlag
@@ -154,15 +149,14 @@ class _Opened:
     """A liquid that questions are put to."""
 
     def __init__(self, result: Sampled) -> None:
-        assert isinstance(result, Liquid | Droplet)
         self._liquid = result
-        self._state = droplet_state_summary(result) if isinstance(result, Droplet) else liquid_state_summary(result)
+        self._state = result.state_summary()
         self._answers = SharedAnswers()
 
     @property
     def shared_columns(self) -> dict[str, Any]:
         """What all rows of the liquid have in common."""
-        health = diagnostics_summary(self._liquid)
+        health = self._liquid.diagnostics_summary()
         return {
             "label": self._state["label"],
             "filling": self._state["filling"],

@@ -1,0 +1,107 @@
+"""``sweep``: a grid of problems and liquids, one command."""
+
+from __future__ import annotations
+
+import argparse
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from mcgeo.commands.run import CONVERGED_CODE, NOT_CONVERGED_CODE, Answer, as_json
+from mcgeo.report.sweep_text import sweep_text
+from mcgeo.report.tables import write_csv, write_json
+from mcgeo.runs import sweep as engine
+from mcgeo.runs.build import available_threads
+from mcgeo.runs.executors import Crew, SerialExecutor, local_processes, single_threaded_libraries
+from mcgeo.runs.lock import run_lock
+from mcgeo.runs.sweep_estimate import costs_of, liquid_plans
+from mcgeo.runs.sweep_file import write_sweep_file
+from mcgeo.runs.sweep_plan import SweepPlan, load_sweep
+from mcgeo.runs.sweep_table import DONE, FAILED, MISSING, SweepTable, sweep_table
+
+INCOMPLETE_CODE = 4
+
+SWEEP_FILE, SWEEP_CSV, SWEEP_JSON = "sweep.h5", "sweep.csv", "sweep.json"
+
+
+def sweep_folder(config: Path) -> Path:
+    """NAME_sweep in the working folder for NAME.yaml."""
+    return Path(f"{config.stem}_sweep")
+
+
+def run_sweep(arguments: argparse.Namespace) -> Answer:
+    """``mcgeo sweep``: do what is missing, then write the tables."""
+    plan = load_sweep(arguments.config)
+    folder = arguments.out or sweep_folder(arguments.config)
+    costs = costs_of(plan, liquid_plans(plan))
+    with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
+        engine.run_sweep(plan, folder, _crew(arguments), costs, retry=arguments.retry, quiet=arguments.quiet)
+        table = sweep_table(plan, folder)
+        summary = write_tables(plan, table, folder)
+    return as_json(summary) if arguments.json else sweep_text(summary), exit_code(summary)
+
+
+def _crew(arguments: argparse.Namespace) -> Crew:
+    cores = available_threads()
+    workers = arguments.workers or cores
+    start = SerialExecutor if workers == 1 else lambda: local_processes(workers)
+    return Crew(start, workers, max(workers, cores), arguments.threads)
+
+
+def write_tables(plan: SweepPlan, table: SweepTable, folder: Path) -> dict[str, Any]:
+    """``sweep.csv``, ``sweep.h5`` and ``sweep.json`` of a table; gives the content of the last."""
+    summary = summary_of(plan, table, folder)
+    columns = {**table.swept(), "status": table.status, **table.columns}
+    comment = f"{Path(plan.file).name}: {summary['points']} points, {summary['done']} done"
+    write_csv(folder / SWEEP_CSV, {table.heading(name): values for name, values in columns.items()}, comment)
+    write_sweep_file(folder / SWEEP_FILE, table)
+    write_json(folder / SWEEP_JSON, summary)
+    return summary
+
+
+def summary_of(plan: SweepPlan, table: SweepTable, folder: Path) -> dict[str, Any]:
+    """The JSON object of ``sweep``."""
+    count = {name: int(np.sum(table.status == name)) for name in (DONE, FAILED, MISSING)}
+    swept = table.swept()
+    verdicts = table.columns.get("run_verdict", np.array([]))
+    return {
+        "axes": [
+            {
+                "keys": [column.name for column in axis],
+                "units": [column.unit for column in axis],
+                "values": [column.values.tolist() for column in axis],
+                "spacing": spacing,
+            }
+            for axis, spacing in zip(table.axes, table.spacings, strict=True)
+        ],
+        "points": len(plan.points),
+        **count,
+        "not_converged": int(np.sum((verdicts != "converged") & (verdicts != ""))),
+        "liquids": len(plan.liquids),
+        "shapes": _counted(table.columns.get("shape_verdict", ())),
+        "failures": [
+            {"point": {name: _item(values[place]) for name, values in swept.items()}, "error": why}
+            for place, why in table.errors.items()
+        ],
+        "columns": {name: table.heading(name) for name in table.columns},
+        "folder": str(folder),
+        "table": str(folder / SWEEP_CSV),
+    }
+
+
+def _counted(words: Any) -> dict[str, int]:
+    found = sorted({word for word in words if word})
+    return {word: sum(other == word for other in words) for word in found}
+
+
+def _item(value: Any) -> Any:
+    return value.item() if isinstance(value, np.generic) else value
+
+
+def exit_code(summary: Mapping[str, Any]) -> int:
+    """4 where points failed or are missing, 3 where some have not converged."""
+    if summary[FAILED] or summary[MISSING]:
+        return INCOMPLETE_CODE
+    return NOT_CONVERGED_CODE if summary["not_converged"] else CONVERGED_CODE

@@ -1,0 +1,89 @@
+"""What a sweep has come to, as lines of text."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from mcgeo.runs.sweep_progress import duration
+
+_SHOWN, _SHOWN_LIQUIDS = 5, 12
+
+
+def sweep_text(summary: Mapping[str, Any]) -> str:
+    """Counts of points, verdicts, the first failures, and where the table is."""
+    rows = [
+        (", ".join(axis["keys"]), _values(axis)) for axis in summary["axes"]
+    ]
+    rows += [
+        ("points", f"{summary['points']} over {_plural(summary['liquids'], 'liquid')}"),
+        ("done", str(summary["done"])),
+    ]
+    if summary["not_converged"]:
+        rows.append(("of liquids not converged", f"{summary['not_converged']}; raise sampling.sweeps or walkers"))
+    if summary["missing"]:
+        rows.append(("missing", f"{summary['missing']}; the same command computes them"))
+    if summary["failed"]:
+        rows.append(("failed", f"{summary['failed']}; --retry tries them again"))
+    if summary["shapes"]:
+        rows.append(("shapes", ", ".join(f"{count} {word}" for word, count in summary["shapes"].items())))
+    rows.append(("table", summary["table"]))
+    return "\n".join([*_lines(rows), *_failures(summary["failures"])])
+
+
+def sweep_plan_text(plan: Mapping[str, Any]) -> str:
+    """What a sweep will do and cost: points, the liquids they share, time and disk."""
+    liquids = plan["liquids"]
+    rows = [
+        *((", ".join(axis["keys"]), _axis_words(axis)) for axis in plan["axes"]),
+        ("points", str(plan["points"])),
+        ("liquids to sample", str(len(liquids))),
+        *((liquid["liquid"], _liquid_words(liquid)) for liquid in liquids[:_SHOWN_LIQUIDS]),
+    ]
+    if len(liquids) > _SHOWN_LIQUIDS:
+        rows.append(("...", f"{len(liquids) - _SHOWN_LIQUIDS} more, all with --json"))
+    rows += [
+        ("sampling", duration(plan["estimated_sampling_seconds"])),
+        ("optima", duration(plan["estimated_scan_seconds"])),
+        ("in all", f"{duration(plan['estimated_seconds'])} on {_plural(plan['threads'], 'core')}"),
+        ("disk", f"{plan['estimated_megabytes']:.3g} MB"),
+    ]
+    return "\n".join(_lines(rows))
+
+
+def _axis_words(axis: Mapping[str, Any]) -> str:
+    spacing = f", {axis['spacing']}" if axis["spacing"] in ("linear", "logarithmic") else ""
+    return f"{_plural(axis['values'], 'value')}{spacing}"
+
+
+def _liquid_words(liquid: Mapping[str, Any]) -> str:
+    first = ", ".join(f"{name} {value}" for name, value in liquid["first_point"].items())
+    return (
+        f"{liquid['state']}, {duration(liquid['estimated_seconds'])}, serves {_plural(liquid['points'], 'point')}, "
+        f"the first at {first}"
+    )
+
+
+def _lines(rows: list[tuple[str, str]]) -> list[str]:
+    width = max(len(name) for name, _ in rows)
+    return [f"{name.ljust(width)}  {text}" for name, text in rows]
+
+
+def _plural(n: int, noun: str) -> str:
+    return f"{n} {noun}{'s' * (n != 1)}"
+
+
+def _values(axis: Mapping[str, Any]) -> str:
+    first, last, n = axis["values"][0][0], axis["values"][0][-1], len(axis["values"][0])
+    if axis["spacing"] in ("linear", "logarithmic"):
+        return f"{first:g} to {last:g}, {n} values, {axis['spacing']}"
+    return _plural(n, "value")
+
+
+def _failures(failures: list[Mapping[str, Any]]) -> list[str]:
+    lines = [
+        f"failed at {', '.join(f'{name} {value}' for name, value in failure['point'].items())}: {failure['error']}"
+        for failure in failures[:_SHOWN]
+    ]
+    more = len(failures) - _SHOWN
+    return lines + [f"and {more} more, all in sweep.json"] * (more > 0)
