@@ -30,6 +30,7 @@ _MODULES = {
     "sweep": "sweep",
     "plot": "plot",
     "check": "describe",
+    "liquids": "liquids",
     "info": "describe",
     "schema": "describe",
 }
@@ -65,7 +66,10 @@ def build_parser() -> argparse.ArgumentParser:
 
     plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
     plot.add_argument("what", choices=_FIGURES)
-    plot.add_argument("file", type=Path, metavar="FILE", help="result file, or a folder that holds one")
+    plot.add_argument(
+        "file", type=Path, metavar="FILE",
+        help="result file, a folder that holds one, or a configuration of a catalogue liquid",
+    )  # fmt: skip
     plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file instead")
     plot.add_argument("--out", type=Path, metavar="DIR", help="where figures go (default: beside the file)")
     plot.add_argument("--format", action="append", choices=["pdf", "svg", "png"], help="repeatable (default: pdf, png)")
@@ -73,6 +77,9 @@ def build_parser() -> argparse.ArgumentParser:
     check = _command(commands, "check", "validate a configuration, show the plan and its cost", "mcgeo check well.yaml")
     check.add_argument("config", type=Path, metavar="CONFIG")
     check.add_argument("--json", action="store_true", help="one JSON object on standard output")
+
+    liquids = _command(commands, "liquids", "the catalogue: liquids that need no sampling", "mcgeo liquids")
+    liquids.add_argument("--json", action="store_true", help="one JSON object on standard output")
 
     info = _command(commands, "info", "versions and machine, to go with a report", "mcgeo info")
     info.add_argument("--json", action="store_true", help="one JSON object on standard output")

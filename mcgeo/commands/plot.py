@@ -1,4 +1,4 @@
-"""``plot``: one figure, with its numbers, from a result file alone."""
+"""``plot``: one figure, with its numbers, from a result file alone, or of a liquid of the catalogue."""
 
 from __future__ import annotations
 
@@ -13,21 +13,29 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 import mcgeo
-from mcgeo.commands.run import result_file
+from mcgeo.commands.run import default_folder, result_file
 from mcgeo.errors import StorageError
-from mcgeo.estimate.pair_correlation import counted_pair_correlation, radial_pair_correlation
+from mcgeo.estimate.occupations import PairOccupations
+from mcgeo.estimate.pair_correlation import (
+    bulk_radial_pair_correlation,
+    counted_pair_correlation,
+    radial_pair_correlation,
+)
 from mcgeo.estimate.statistics import mean_estimate
-from mcgeo.estimate.structure_factor import shell_means
+from mcgeo.estimate.structure_factor import Curve, shell_means
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.report import figures
+from mcgeo.report.catalogue_text import origin_text
 from mcgeo.report.figures import MeasuredShape
 from mcgeo.report.tables import map_table
-from mcgeo.runs.config import load_config
+from mcgeo.runs.catalogue import KIND, CatalogueLiquid, catalogue_liquid
+from mcgeo.runs.config import load_config, resolved
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.hole import hole_image
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import scan
+from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.storage import as_liquid, read_result
 from mcgeo.runs.table_file import without_contents
 from mcgeo.sampling.measurement import BIN_WIDTH, PAIRS
@@ -35,6 +43,7 @@ from mcgeo.variational.variation import PROJECTED
 
 Drawing = tuple[Axes, Mapping[str, Any]]
 
+YAML_SUFFIXES = (".yaml", ".yml")
 _DEFAULT_FORMATS = ("pdf", "png")
 _SHELL_WIDTH = 0.05
 _LARGEST_SHOWN_Q = 6.0
@@ -44,11 +53,12 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo plot``."""
     path = result_file(arguments.file)
-    result = read_result(path)
-    keys = dict(result.resolved)
+    result, keys, folder = _subject(path)
     if arguments.problem is not None:
         keys.update(load_config(arguments.problem).model_dump(mode="json", by_alias=True, include={"problem", "scan"}))
-    if arguments.what in COMMON:
+    if isinstance(result, CatalogueLiquid):
+        axes, table = _of_catalogue(result, arguments.what, keys)
+    elif arguments.what in COMMON:
         axes, table = COMMON[arguments.what](result)
     elif isinstance(result, Droplet):
         axes, table = _of_droplet(result, arguments.what, path, keys)
@@ -60,11 +70,11 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
         "mcgeo": mcgeo.__version__,
         "figure": arguments.what,
         "configuration": json.dumps(without_contents({key: keys[key] for key in ("state", "problem")})),
-        "seed": str(keys["sampling"]["seed"]),
+        **_source(result, keys),
     }
     written = figures.save_figure(
         figure,
-        (arguments.out or path.parent) / arguments.what,
+        (arguments.out or folder) / arguments.what,
         table,
         formats=tuple(arguments.format or _DEFAULT_FORMATS),
         metadata=metadata,
@@ -72,7 +82,31 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     return "\n".join(str(file) for file in written), 0
 
 
-def _hole(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+def _subject(path: Path) -> tuple[Sampled | CatalogueLiquid, dict[str, Any], Path]:
+    """What is drawn, the configuration it has, and where figures go.
+
+    Raises
+    ------
+    StorageError
+        If the file is a configuration whose liquid has to be sampled first, or no result file.
+    """
+    if path.suffix not in YAML_SUFFIXES:
+        result = read_result(path)
+        return result, dict(result.resolved), path.parent
+    keys, folder = resolved(load_config(path)), default_folder(path)
+    if keys["state"]["kind"] != KIND:
+        raise StorageError(f"{path}: its liquid has to be sampled (mcgeo sample {path}); then plot {folder}")
+    return catalogue_liquid(keys["state"]), keys, folder
+
+
+def _source(result: Sampled | CatalogueLiquid, keys: Mapping[str, Any]) -> dict[str, str]:
+    """Where the numbers come from."""
+    if isinstance(result, CatalogueLiquid):
+        return {"source": origin_text(result.state_summary())}
+    return {"seed": str(keys["sampling"]["seed"])}
+
+
+def _hole(liquid: Liquid | CatalogueLiquid, keys: Mapping[str, Any]) -> Drawing:
     found = scan(liquid, keys["problem"], keys["scan"])
     # Where the orbit varies, the map is that of its optimum.
     orbit = UnimodularMetric(found.orbit_stretch.value, found.orbit_angle.value)
@@ -93,7 +127,7 @@ def _hole(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     return axes, map_table(image.x, image.y, image.g, ("x [l_B]", "y [l_B]", "g"))
 
 
-def _energy(liquid: Liquid | Droplet, keys: Mapping[str, Any]) -> Drawing:
+def _energy(liquid: Scannable, keys: Mapping[str, Any]) -> Drawing:
     found = scan(liquid, keys["problem"], keys["scan"])
     curve, mass = found.curve, found.problem.mass_metric
     axes = figures.energy_curve(
@@ -118,8 +152,12 @@ def _energy(liquid: Liquid | Droplet, keys: Mapping[str, Any]) -> Drawing:
 def _structure(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     shown = liquid.norm < _LARGEST_SHOWN_Q
     curve = shell_means(liquid.norm[shown], liquid.structure_samples[:, shown], _SHELL_WIDTH)
+    return _structure_and_fit(curve, liquid.occupations)
+
+
+def _structure_and_fit(curve: Curve, occupations: PairOccupations) -> Drawing:
     fit_q = np.linspace(0.0, _LARGEST_SHOWN_Q, 301)
-    fit_s = 1.0 + np.exp(-0.5 * fit_q**2) * (liquid.occupations.guiding_centre_structure(fit_q) - 1.0)
+    fit_s = 1.0 + np.exp(-0.5 * fit_q**2) * (occupations.guiding_centre_structure(fit_q) - 1.0)
     small_q = np.linspace(0.0, 1.2, 61)
     axes = figures.structure_factor(
         curve.x, curve.value, curve.error, fit_q=fit_q, fit_s=fit_s, small_q=(small_q, 0.5 * small_q**2)
@@ -150,7 +188,7 @@ def _correlation(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
     return axes, table
 
 
-def _occupations(liquid: Liquid, keys: Mapping[str, Any]) -> Drawing:
+def _occupations(liquid: Liquid | CatalogueLiquid, keys: Mapping[str, Any]) -> Drawing:
     found = liquid.occupations
     estimates = [found.occupation(index) for index in range(len(found.m))]
     n, error = np.array([e.value for e in estimates]), np.array([e.error for e in estimates])
@@ -169,6 +207,34 @@ def _trace(result: Sampled) -> Drawing:
     )
     table = {f"walker {index} {_ENERGY}": column for index, column in enumerate(blocks.T)}
     return axes, {"block": np.arange(1, len(blocks) + 1), **table}
+
+
+def _of_catalogue(liquid: CatalogueLiquid, what: str, keys: Mapping[str, Any]) -> Drawing:
+    drawn: dict[str, Callable[[CatalogueLiquid, Mapping[str, Any]], Drawing]] = {
+        "hole": _hole,
+        "energy": _energy,
+        "structure": _catalogue_structure,
+        "correlation": _bulk_correlation,
+        "occupations": _occupations,
+    }
+    if what not in drawn:
+        raise StorageError(f"of a liquid of the catalogue {', '.join(drawn)} can be drawn, not {what}")
+    return drawn[what](liquid, keys)
+
+
+def _catalogue_structure(liquid: CatalogueLiquid, keys: Mapping[str, Any]) -> Drawing:
+    curve = liquid.structure
+    shown = curve.x < _LARGEST_SHOWN_Q
+    return _structure_and_fit(Curve(curve.x[shown], curve.value[shown], curve.error[shown]), liquid.occupations)
+
+
+def _bulk_correlation(liquid: CatalogueLiquid, keys: Mapping[str, Any]) -> Drawing:
+    """g(r) of the infinite liquid, to where its occupations are known."""
+    found = liquid.occupations
+    curve = bulk_radial_pair_correlation(found, np.linspace(0.0, 2.0 * np.sqrt(float(found.m[-1])), 201))
+    label = "infinite liquid, from pair occupations"
+    axes = figures.radial_pair_correlation(curve.x, curve.value, curve.error, label=label)
+    return axes, {"r [l_B]": curve.x, "g": curve.value, "g error": curve.error}
 
 
 def _of_droplet(droplet: Droplet, what: str, path: Path, keys: Mapping[str, Any]) -> Drawing:

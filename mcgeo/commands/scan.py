@@ -9,16 +9,19 @@ from typing import Any
 
 from mcgeo.commands.run import Answer, as_json, default_folder, exit_code, read_config, result_file
 from mcgeo.errors import ConfigError, StorageError
+from mcgeo.report.catalogue_text import origin_text
 from mcgeo.report.tables import write_csv, write_json
 from mcgeo.report.text import comparison_text, scan_text, torus_text
 from mcgeo.runs.build import problem_from, variation_from
+from mcgeo.runs.catalogue import KIND, CatalogueLiquid, catalogue_liquid
+from mcgeo.runs.catalogue_summary import with_error_parts
 from mcgeo.runs.config import Config, differing_keys, resolved
-from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.droplet_scan import require_droplet_problem
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import require_reach, scan, scan_summary
+from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
 from mcgeo.runs.torus_road import compare_roads, torus_road
 from mcgeo.runs.torus_summary import comparison_summary, torus_summary
@@ -38,6 +41,8 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
     if config.geometry.kind == "disk":
         _require_disk_problem(arguments, keys)
     if arguments.compare:
+        if config.state.kind == KIND:
+            raise ConfigError(["--compare needs a state that is sampled on the torus, not one of the catalogue"])
         if config.problem.variation != PROJECTED:
             raise ConfigError(["--compare needs problem.variation: projected, the one problem that both roads share"])
         summary, words = _on_both_roads(arguments, config, folder, keys), comparison_text
@@ -45,14 +50,23 @@ def run_scan(arguments: argparse.Namespace) -> Answer:
         road = torus_road(config, folder / "torus", overwrite=arguments.overwrite, quiet=arguments.quiet)
         summary, words = torus_summary(road, keys["problem"]), torus_text
     else:
-        sampled = _sampled(arguments, config, folder)
-        liquid = sampled if isinstance(sampled, Droplet) else as_liquid(sampled, folder)
-        summary = scan_summary(liquid, keys["problem"], scan(liquid, keys["problem"], keys["scan"]))
-        words = scan_text
+        summary, words = _on_the_plane(arguments, config, folder, keys), scan_text
     summary = with_units(summary, keys)
     write_json(folder / "scan.json", summary)
     write_csv(folder / "curve.csv", _columns(summary["curve"]), _provenance(summary))
     return as_json(summary) if arguments.json else words(summary), exit_code(summary)
+
+
+def _on_the_plane(
+    arguments: argparse.Namespace, config: Config, folder: Path, keys: Mapping[str, Any]
+) -> dict[str, Any]:
+    liquid: Scannable
+    if config.state.kind == KIND and arguments.liquid is None:
+        liquid = catalogue_liquid(keys["state"])
+    else:
+        liquid = _sampled(arguments, config, folder)
+    summary = scan_summary(liquid, keys["problem"], scan(liquid, keys["problem"], keys["scan"]))
+    return with_error_parts(summary, liquid, keys["problem"]) if isinstance(liquid, CatalogueLiquid) else summary
 
 
 def _require_disk_problem(arguments: argparse.Namespace, keys: Mapping[str, Any]) -> None:
@@ -112,4 +126,5 @@ def _columns(curve: list[dict[str, Any]]) -> dict[str, list[float]]:
 
 def _provenance(summary: Mapping[str, Any]) -> str:
     angle = summary["curve"][0]["angle_degrees"]
-    return f"{summary['state']['label']}, energy against the hole's stretch at {angle:g} degrees"
+    what = f"{summary['state']['label']}, energy against the hole's stretch at {angle:g} degrees"
+    return f"{what}\n{origin_text(summary['state'])}" if "origin" in summary["state"] else what

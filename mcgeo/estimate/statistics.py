@@ -17,7 +17,7 @@ _WINDOW = 5.0
 # Blocks longer than this many autocorrelation times are treated as independent samples; their neighbours share about
 # one autocorrelation time, which makes errors too small by 1 % at this length.
 _INDEPENDENT_BLOCK = 40.0
-_JACKKNIFE_GROUPS = 64
+JACKKNIFE_GROUPS = 64
 
 
 @dataclass(frozen=True)
@@ -108,13 +108,43 @@ def jackknife_means(samples: Array) -> Array:
     The groups are of equal size; left-over samples at the end join the groups in turn.
     """
     n = len(samples)
-    n_groups = min(n, _JACKKNIFE_GROUPS)
+    n_groups = min(n, JACKKNIFE_GROUPS)
     label = np.arange(n) % n_groups
     total = samples.sum(axis=0)
     sums = np.zeros((n_groups, *samples.shape[1:]))
     np.add.at(sums, label, samples)
     left = n - np.bincount(label, minlength=n_groups)
     return np.asarray((total - sums) / left.reshape(-1, *([1] * (samples.ndim - 1))))
+
+
+def samples_with_deviation(samples: Array, deviation: Array) -> Array:
+    """Independent samples and two more, which make room for a deviation in the error of all that follows from them.
+
+    Mean and jackknife error of any linear f are those of the samples, but for |f(deviation)| added to the error in
+    quadrature: with N = n + 2, f = f(mean) +- sqrt(N (N - 1)/2) f(deviation) of the two adds 2 N (N - 1)/2
+    f(deviation)^2 to the sum of squares, of which the error's square is 1/(N (N - 1)); the others are drawn
+    apart by sqrt(N (N - 1)/(n (n - 1))) to keep their part. The two's jackknife replicas lie at 0.7 deviations from
+    the mean: what is not linear in between is lost.
+
+    Parameters
+    ----------
+    samples : ndarray, shape (n, ...)
+        At most 62, so that each is a group of the jackknife by itself.
+    deviation : ndarray, shape (...)
+
+    Raises
+    ------
+    ValueError
+        If there are more samples.
+    """
+    n = len(samples)
+    total = n + 2
+    if total > JACKKNIFE_GROUPS:
+        raise ValueError(f"{n} samples leave no room for two more in {JACKKNIFE_GROUPS} groups of a jackknife")
+    mean = samples.mean(axis=0)
+    scatter = math.sqrt(total * (total - 1) / (n * (n - 1))) * (samples - mean)
+    step = math.sqrt(total * (total - 1) / 2) * deviation
+    return np.asarray(mean + np.concatenate([scatter, [step, -step]]))
 
 
 def jackknife_error(replicas: ArrayLike) -> Array:

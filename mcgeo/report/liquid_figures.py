@@ -98,6 +98,7 @@ def radial_pair_correlation(
     histogram_r: Array | None = None,
     histogram_g: Array | None = None,
     histogram_error: Array | None = None,
+    label: str = "from $S(q)$",
     axes: Axes | None = None,
 ) -> Axes:
     """g(r) with its error band, and beside it the directly counted pairs.
@@ -108,6 +109,8 @@ def radial_pair_correlation(
         |r| in l_B in the liquid's own metric, g, its standard error.
     histogram_r, histogram_g, histogram_error : ndarray, shape (n_bins,), optional
         Counted pairs; bins without error are empty ones and stay blank.
+    label : str
+        Where g comes from.
     axes : Axes, optional
 
     Returns
@@ -117,7 +120,7 @@ def radial_pair_correlation(
     axes = new_axes() if axes is None else axes
     axes.axhline(1.0, color=GREY, linewidth=0.6, linestyle=":")
     axes.fill_between(r, g - error, g + error, color=BLUE, alpha=0.35, linewidth=0.0, label="its error")
-    axes.plot(r, g, color=BLUE, zorder=4, label="from $S(q)$")
+    axes.plot(r, g, color=BLUE, zorder=4, label=label)
     if histogram_r is not None and histogram_g is not None and histogram_error is not None:
         filled = histogram_error > 0.0
         axes.errorbar(

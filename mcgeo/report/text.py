@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from mcgeo.estimate.statistics import Estimate
+from mcgeo.report.catalogue_text import origin_rows
 from mcgeo.report.numbers import value_with_error
 
 ENERGY_UNIT = "e^2/(4 pi eps l_B)"
@@ -155,7 +156,7 @@ def scan_text(summary: Mapping[str, Any]) -> str:
         ("response to weak mass", _pair(best, "response")),
         ("verdict on the shape", _VERDICTS[best["shape_verdict"]] if best["interior"] else _NO_MINIMUM),
         *_unit_rows(summary),
-        *_health_rows(summary["diagnostics"]),
+        *(origin_rows(summary) if "origin" in state else _health_rows(summary["diagnostics"])),
     ]
     return _lines(rows)
 

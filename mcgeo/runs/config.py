@@ -18,7 +18,7 @@ from mcgeo.runs.lengths import length_remarks, with_lengths_in_nm
 from mcgeo.runs.material_config import MaterialConfig
 from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
 from mcgeo.runs.sampling_config import SamplingConfig
-from mcgeo.runs.state_config import StateConfig
+from mcgeo.runs.state_config import SAMPLING_SECTIONS, StateConfig, catalogue_remarks, with_kind
 from mcgeo.runs.sweep_config import SweepConfig
 from mcgeo.runs.table_file import FOLDER
 from mcgeo.runs.tilt_config import tilt_remarks
@@ -55,6 +55,11 @@ class Config(Group):
     def _with_material(cls, given: Any, info: ValidationInfo) -> Any:
         return with_material(given, info.context)
 
+    @field_validator("state", mode="before")
+    @classmethod
+    def _kind_of_catalogue(cls, state: Any) -> Any:
+        return with_kind(state)
+
     @field_validator("cell")
     @classmethod
     def _hexagonal_torus(cls, cell: CellConfig | None, info: ValidationInfo) -> CellConfig | None:
@@ -80,7 +85,7 @@ def contradictions(given: Mapping[str, Any]) -> list[Remark]:
     given : mapping
         With what a material adds, see `with_material`.
     """
-    remarks = [*_disk_remarks(given), *length_remarks(given), *tilt_remarks(given)]
+    remarks = [*_disk_remarks(given), *catalogue_remarks(given), *length_remarks(given), *tilt_remarks(given)]
     if given.get("material") is not None:
         from mcgeo.runs.material_problem import material_remarks
 
@@ -162,9 +167,12 @@ def validated(data: Mapping[str, Any], folder: Path = Path()) -> tuple[Config | 
 def resolved(config: Config) -> dict[str, Any]:
     """The configuration as plain JSON-able data, every default filled in and fractions as text.
 
-    On the disk the keys that only a torus has are left out.
+    On the disk the keys that only a torus has are left out, for a liquid of the catalogue those of a sampling.
     """
     data = config.model_dump(mode="json", by_alias=True)
+    if config.state.kind == "catalogue":
+        for key in SAMPLING_SECTIONS:
+            del data[key]
     if config.geometry.kind == "disk":
         del data["cell"]
         data["state"].pop("sector", None)
@@ -194,10 +202,10 @@ def state_identity(config: Config) -> dict[str, Any]:
     """
     data = resolved(config)
     identity: dict[str, Any] = {
-        key: data[key] for key in ("state", "geometry", "cell", "sampling") if key in data
+        key: data[key] for key in ("state", *SAMPLING_SECTIONS) if key in data
     }
     for key in UNRELATED_TO_RESULTS:
-        del identity["sampling"][key]
+        identity.get("sampling", {}).pop(key, None)
     return identity
 
 

@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping
-from fractions import Fraction
 from typing import Any
 
 from pydantic import TypeAdapter, ValidationError
@@ -21,7 +20,7 @@ from mcgeo.runs.lengths import LAYERED_KINDS, in_magnetic_lengths
 from mcgeo.runs.material_config import MaterialConfig
 from mcgeo.runs.material_sample import material_of, turned_mass
 from mcgeo.runs.problem_config import MassConfig
-from mcgeo.runs.state_config import StateConfig
+from mcgeo.runs.state_config import StateConfig, with_kind
 
 Keys = Mapping[str, Any]
 
@@ -45,10 +44,10 @@ def _valid(adapter: TypeAdapter[Any], keys: object, context: Keys | None = None)
 
 def filling_of_liquid(keys: object) -> float | None:
     """Filling of the liquid asked for, of the keys of ``state``; None where they are not valid."""
-    state = _valid(_STATE, keys)
+    state = _valid(_STATE, with_kind(keys))
     if state is None:
         return None
-    filling = Fraction(1, state.exponent) if state.kind == "laughlin" else state.filling
+    filling = state.filling
     return float(1 - filling if state.conjugate else filling)
 
 

@@ -7,6 +7,8 @@ from typing import Any
 
 from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import droplet_state, problem_from, schedule_from, torus_frame
+from mcgeo.runs.catalogue import KIND
+from mcgeo.runs.catalogue_summary import catalogue_plan
 from mcgeo.runs.experiment import experiment_of
 from mcgeo.runs.scan import require_reach
 
@@ -71,6 +73,8 @@ def sampling_plan(resolved: Mapping[str, Any]) -> dict[str, Any]:
     GeometryError
         If the cell does not suit the state.
     """
+    if resolved["state"]["kind"] == KIND:
+        return catalogue_plan(resolved)
     experiment = experiment_of(resolved)
     state = experiment.states[0]
     schedule = schedule_from(resolved, state)

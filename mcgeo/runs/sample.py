@@ -7,6 +7,7 @@ from contextlib import nullcontext
 from pathlib import Path
 from typing import Any
 
+from mcgeo.runs.catalogue import require_sampled_state
 from mcgeo.runs.config import Config, resolved
 from mcgeo.runs.experiment import experiment_of, result_class
 from mcgeo.runs.length import continued, extended
@@ -50,6 +51,8 @@ def sample(
 
     Raises
     ------
+    ConfigError
+        If the liquid is one of the catalogue.
     StorageError
         If the folder cannot be written, is being written by another process, or holds a liquid of another
         configuration and ``overwrite`` is not set; if there is no finished run to extend.
@@ -57,6 +60,7 @@ def sample(
         On Ctrl-C or a request to terminate; whole blocks are in the file.
     """
     path = folder / LIQUID_FILE
+    require_sampled_state(config.state.model_dump())
     keys, earlier = _joined(config, path, overwrite, extend)
     if _whole(keys, earlier) is None:
         with run_lock(path):

@@ -136,6 +136,14 @@ class Sampled(ABC):
         """Blocks that the file holds."""
         return int(self.blocks.drift.shape[1])
 
+    @abstractmethod
+    def state_summary(self) -> dict[str, Any]:
+        """``state`` of the JSON output."""
+
+    @abstractmethod
+    def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
+        """Energy of every sample over the hole's metric; see `mcgeo.runs.scannable.Scannable`."""
+
     @cached_property
     def schedule(self) -> Schedule:
         """How the chains ran."""

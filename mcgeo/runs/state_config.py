@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Mapping
 from fractions import Fraction
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal, get_args
 
 from pydantic import Field, StrictBool, ValidationInfo, field_validator
 
+from mcgeo.runs.config_faults import Remark
 from mcgeo.runs.config_types import Electrons, Group, ListOf, NotBool, OneOfFractions, Real, WholeNumber, rule
 
 _CONJUGATE = "True for the particle-hole conjugate liquid at filling 1 minus that of the state."
@@ -42,6 +44,11 @@ class LaughlinConfig(Group):
                 f"not for {exponent}; must be false here"
             )
         return conjugate
+
+    @property
+    def filling(self) -> Fraction:
+        """1/exponent."""
+        return Fraction(1, self.exponent)
 
 
 class MooreReadConfig(Group):
@@ -105,4 +112,71 @@ class FermiSeaConfig(Group):
         return points
 
 
-StateConfig = Annotated[LaughlinConfig | MooreReadConfig | FermiSeaConfig, Field(discriminator="kind")]
+# What a configuration says of a sampling beside its state.
+SAMPLING_SECTIONS = ("geometry", "cell", "sampling")
+
+CatalogueName = Literal[
+    "laughlin-1",
+    "laughlin-1/3",
+    "laughlin-1/5",
+    "laughlin-1/7",
+    "laughlin-1/2",
+    "laughlin-1/4",
+    "moore_read-1/2",
+    "moore_read-1",
+    "fermi_sea-1/2",
+    "fermi_sea-1/4",
+]
+CATALOGUE_NAMES: tuple[str, ...] = get_args(CatalogueName)
+
+# Of these no hole conjugate exists: bosons, and the filled level.
+_WITHOUT_CONJUGATE = ("laughlin-1", "laughlin-1/2", "laughlin-1/4", "moore_read-1")
+
+
+class CatalogueConfig(Group):
+    """Liquid of the shipped catalogue: sampled already, in its own metric."""
+
+    kind: Literal["catalogue"] = Field(
+        default="catalogue", description="Kind of the state; goes without saying where a catalogue key is given."
+    )
+    catalogue: CatalogueName = Field(description="Entry of the catalogue: kind of the liquid and filling.")
+    conjugate: StrictBool = Field(default=False, description=_CONJUGATE)
+
+    @field_validator("conjugate")
+    @classmethod
+    def _fermions_below_filling_one(cls, conjugate: bool, info: ValidationInfo) -> bool:
+        name = info.data.get("catalogue")
+        if conjugate and name in _WITHOUT_CONJUGATE:
+            raise rule(f"a conjugate exists for fermions below filling 1 only, not for {name}; must be false here")
+        return conjugate
+
+    @property
+    def filling(self) -> Fraction:
+        """Of the sampled liquid, as its name says."""
+        return Fraction(self.catalogue.rpartition("-")[2])
+
+
+def with_kind(state: Any) -> Any:
+    """The given keys of ``state``, with the kind that a catalogue key implies."""
+    if isinstance(state, Mapping) and "catalogue" in state and "kind" not in state:
+        return {"kind": "catalogue", **state}
+    return state
+
+
+def catalogue_remarks(given: Mapping[str, Any]) -> Iterator[Remark]:
+    """Keys of the sampling given beside a liquid that is sampled already, and what one liquid cannot answer."""
+    state = given.get("state")
+    if not isinstance(state, Mapping) or "catalogue" not in state or state.get("kind", "catalogue") != "catalogue":
+        return
+    for key in SAMPLING_SECTIONS:
+        if given.get(key) is not None:
+            yield Remark((key,), "a liquid of the catalogue is sampled already; remove it", at_key=True)
+    scan = given.get("scan")
+    if isinstance(scan, Mapping) and scan.get("road") == "torus":
+        message = "must be plane for a liquid of the catalogue, because the torus road samples every metric"
+        yield Remark(("scan", "road"), message)
+
+
+StateConfig = Annotated[
+    LaughlinConfig | MooreReadConfig | FermiSeaConfig | CatalogueConfig, Field(discriminator="kind")
+]
