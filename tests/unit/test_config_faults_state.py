@@ -16,18 +16,18 @@ def faults(path: str) -> list[str]:
     ("text", "expected"),
     [
         ("§scan: {}\n", "state: missing; must be a group of keys with kind one of"),
-        ("§state: {}\n", "state.kind: missing; must be one of fermi_sea, laughlin, moore_read"),
+        ("§state: {}\n", "state.kind: missing; must be one of catalogue, fermi_sea, laughlin, moore_read"),
         (
             "state:§\n",
-            "state: must be a group of keys with kind one of fermi_sea, laughlin, moore_read, not null",
+            "state: must be a group of keys with kind one of catalogue, fermi_sea, laughlin, moore_read, not null",
         ),
         ("state: §laughlin\n", "state: must be a group of keys with kind one of"),
         (
             "state: {kind: §laughlinn}\n",
-            "state.kind: must be one of fermi_sea, laughlin, moore_read, not 'laughlinn' (did you "
+            "state.kind: must be one of catalogue, fermi_sea, laughlin, moore_read, not 'laughlinn' (did you "
             "mean 'laughlin'?)",
         ),
-        ("state: {kind: §3}\n", "state.kind: must be one of fermi_sea, laughlin, moore_read, not 3"),
+        ("state: {kind: §3}\n", "state.kind: must be one of catalogue, fermi_sea, laughlin, moore_read, not 3"),
         ("state: {kind: §[a]}\n", "state.kind: must be one of"),
         (
             "§state: {kind: laughlin, exponent: 3}\n",
