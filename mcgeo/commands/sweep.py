@@ -14,7 +14,7 @@ from mcgeo.report.sweep_text import sweep_text
 from mcgeo.report.tables import write_csv, write_json
 from mcgeo.runs import sweep as engine
 from mcgeo.runs.build import available_threads
-from mcgeo.runs.executors import Crew, SerialExecutor, local_processes, single_threaded_libraries
+from mcgeo.runs.executors import Crew, LocalCrew, single_threaded_libraries
 from mcgeo.runs.lock import run_lock
 from mcgeo.runs.sweep_estimate import costs_of, liquid_plans
 from mcgeo.runs.sweep_file import write_sweep_file
@@ -45,9 +45,7 @@ def run_sweep(arguments: argparse.Namespace) -> Answer:
 
 def _crew(arguments: argparse.Namespace) -> Crew:
     cores = available_threads()
-    workers = arguments.workers or cores
-    start = SerialExecutor if workers == 1 else lambda: local_processes(workers)
-    return Crew(start, workers, max(workers, cores), arguments.threads)
+    return LocalCrew(arguments.workers or cores, cores, arguments.threads)
 
 
 def write_tables(plan: SweepPlan, table: SweepTable, folder: Path) -> dict[str, Any]:

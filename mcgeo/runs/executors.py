@@ -6,11 +6,13 @@ import multiprocessing
 import os
 import signal
 import threading
+from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, Future, ProcessPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass
-from typing import Any, ParamSpec, TypeVar
+from pathlib import Path
+from typing import Any, ParamSpec, Protocol, TypeVar
 
 _P = ParamSpec("_P")
 _R = TypeVar("_R")
@@ -19,26 +21,89 @@ _R = TypeVar("_R")
 _ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "VECLIB_MAXIMUM_THREADS")
 
 
+class StopSign(Protocol):
+    """What tells a task to end early; it goes along with the task."""
+
+    def test(self) -> Callable[[], bool]:
+        """The test whether to end, which any thread may ask; to be made in the thread of the task."""
+
+
 @dataclass(frozen=True)
-class Crew:
+class StopFile:
+    """A file that asks for an early end by being there."""
+
+    path: Path
+
+    def test(self) -> Callable[[], bool]:
+        """Whether it is there."""
+        return self.path.exists
+
+
+class Crew(ABC):
     """Workers, and how much they take on at once.
 
     Attributes
     ----------
-    start : callable
-        Gives a new executor: at first, and after one has broken.
-    tasks : int
-        Tasks in flight at once.
-    threads : int
-        Threads in flight at once, over all tasks.
     threads_per_sampling : int or None
         Of every sampling; None: shared out among those that can run at once.
+    dies_as_one : bool
+        Whether the death of one worker ends all tasks in flight, so that nobody can tell which of them was to blame.
+    fatal : tuple of type
+        Errors by which an executor says that workers have died over a task too often for another try.
     """
 
-    start: Callable[[], Executor]
-    tasks: int
-    threads: int
     threads_per_sampling: int | None = None
+    dies_as_one = True
+    fatal: tuple[type[Exception], ...] = ()
+
+    @abstractmethod
+    def start(self) -> Executor:
+        """A new executor: at first, and after one has broken."""
+
+    @property
+    @abstractmethod
+    def tasks(self) -> int:
+        """Tasks in flight at once; may change."""
+
+    @property
+    @abstractmethod
+    def threads(self) -> int:
+        """Threads in flight at once, over all tasks; may change."""
+
+    def stop_sign(self, stop_file: Path) -> StopSign:
+        """What tasks look at to know that they shall end early, when the engine makes this file."""
+        return StopFile(stop_file)
+
+
+class LocalCrew(Crew):
+    """This process, or several on this machine.
+
+    Parameters
+    ----------
+    workers : int
+        Processes; 1: this one.
+    cores : int
+        That they share.
+    threads_per_sampling : int, optional
+    """
+
+    def __init__(self, workers: int, cores: int, threads_per_sampling: int | None = None) -> None:
+        self._workers, self._cores = workers, cores
+        self.threads_per_sampling = threads_per_sampling
+
+    def start(self) -> Executor:
+        """A new executor."""
+        return SerialExecutor() if self._workers == 1 else local_processes(self._workers)
+
+    @property
+    def tasks(self) -> int:
+        """One per process."""
+        return self._workers
+
+    @property
+    def threads(self) -> int:
+        """One per core, but at least one per process."""
+        return max(self._workers, self._cores)
 
 
 class SerialExecutor(Executor):

@@ -18,6 +18,10 @@ _NO_LOCKS = (errno.ENOLCK, errno.EOPNOTSUPP, errno.ENOSYS)
 _LONGEST_HOLDER = 200
 
 
+class FileBusy(StorageError):
+    """Another process is writing the file."""
+
+
 @contextmanager
 def run_lock(path: Path) -> Iterator[None]:
     """Hold the right to write the result file ``path``; its folder is made, and removed again if it stays empty.
@@ -31,8 +35,10 @@ def run_lock(path: Path) -> Iterator[None]:
 
     Raises
     ------
+    FileBusy
+        If another process holds the lock, naming it.
     StorageError
-        If another process holds the lock, naming it, or if the folder cannot be written.
+        If the folder cannot be written.
     """
     folder = path.parent
     made = not folder.exists()
@@ -83,7 +89,7 @@ def _take(handle: int, path: Path) -> None:
         fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
     except BlockingIOError:
         holder = os.pread(handle, _LONGEST_HOLDER, 0).decode(errors="replace").strip()
-        raise StorageError(
+        raise FileBusy(
             f"{path}: is being written by {holder or 'another process'}; wait for it, "
             "or choose another folder with --out"
         ) from None

@@ -188,14 +188,6 @@ class Sampled(ABC):
         """What the diagnostics say of control variates; nothing where none were measured."""
         return {}
 
-    @abstractmethod
-    def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
-        """Energy of every sample over the hole's metric; see `mcgeo.runs.scannable.Scannable`."""
-
-    @abstractmethod
-    def state_summary(self) -> dict[str, Any]:
-        """``state`` of the JSON output."""
-
     def diagnostics_summary(self) -> dict[str, Any]:
         """``diagnostics`` of the JSON output."""
         return diagnostics_summary(self)

@@ -17,7 +17,7 @@ from mcgeo.runs.executors import Crew
 from mcgeo.runs.signals import StopFlag, stop_on_signals
 from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
-from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, Job, Queue
+from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points
 from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, sample_liquid
 
@@ -113,6 +113,7 @@ class _Run:
     ) -> None:
         self._plan, self._folder, self._crew, self._costs = plan, folder, crew, costs
         self._queue = Queue(crew)
+        self._sign = crew.stop_sign(_stop_sign(folder).path)
         self._in_flight: dict[Future[Report], Job] = {}
         self._breaks = 0
         self._any_point = {liquid: points[0] for liquid, points in wanted.items()}
@@ -142,6 +143,8 @@ class _Run:
                 if stop.is_set():
                     for future in self._in_flight:
                         future.cancel()
+                if not self._in_flight:
+                    stop.wait(_SECONDS_BETWEEN_LOOKS)
                 done, _ = wait(self._in_flight, timeout=_SECONDS_BETWEEN_LOOKS, return_when=FIRST_COMPLETED)
                 for future in done:
                     broken |= self._take(future, self._in_flight.pop(future), stop)
@@ -165,15 +168,14 @@ class _Run:
         return False
 
     def _submit(self, executor: Executor, job: Job) -> Future[Report]:
-        stop_path = _stop_sign(self._folder).path
         if not job.points:
             keys = self._plan.resolved(self._any_point[job.liquid])
-            return executor.submit(sample_liquid, self._folder, job.liquid, keys, job.threads, stop_path)
+            return executor.submit(sample_liquid, self._folder, job.liquid, keys, job.threads, self._sign)
         questions = []
         for point in job.points:
             keys = self._plan.resolved(point)
             questions.append(Question(point.name, keys["problem"], keys["material"]))
-        return executor.submit(find_optima, self._folder, job.liquid, questions, stop_path)
+        return executor.submit(find_optima, self._folder, job.liquid, questions, self._sign)
 
     def _take(self, future: Future[Report], job: Job, stop: StopFlag) -> bool:
         """What a task reports; true if the executor has broken."""
@@ -185,11 +187,15 @@ class _Run:
         except BrokenExecutor:
             self._died(job)
             return True
+        except self._crew.fatal as fault:
+            self._failed(job, f"workers died over it: {fault}")
+            return False
         except Exception as fault:
-            self._hindered(job, f"{type(fault).__name__}: {fault}")
+            # Tasks catch all errors of their own: this one is of the way there or back.
+            self._busy(job, f"{type(fault).__name__}: {fault}")
             return False
         self._breaks = 0
-        if report.rows or report.failures:
+        if report.end == "done" and job.points:
             self._progress.step(
                 points=report.rows,
                 failures=report.failures,
@@ -201,6 +207,8 @@ class _Run:
             self._failed(job, report.words)
         elif report.end == "hindered":
             self._hindered(job, report.words)
+        elif report.end == "busy":
+            self._busy(job, report.words)
         elif not stop.is_set():
             # Somebody has stopped the worker, but not the sweep.
             self._died(job)
@@ -229,10 +237,20 @@ class _Run:
         else:
             self._queue.again(job)
 
+    def _busy(self, job: Job, words: str) -> None:
+        job = replace(job, waits=job.waits + 1)
+        if job.waits >= MOST_WAITS:
+            self._failed(job, words)
+        else:
+            self._queue.later(job)
+
     def _died(self, job: Job) -> None:
-        job = replace(job, deaths=job.deaths + 1)
+        blocks = liquid_progress(self._folder, job.liquid).blocks
+        deaths = 1 if blocks > job.blocks else job.deaths + 1
+        job = replace(job, deaths=deaths, blocks=blocks)
         if job.deaths >= MOST_DEATHS:
-            self._failed(job, f"the worker died over it {job.deaths} times, the last time with nothing beside it")
+            alone = ", the last time with nothing beside it" * self._crew.dies_as_one
+            self._failed(job, f"the worker died over it {job.deaths} times{alone}")
         else:
             self._queue.again(job)
 

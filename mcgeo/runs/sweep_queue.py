@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import time
 from collections import deque
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
@@ -15,6 +16,9 @@ from mcgeo.runs.sweep_plan import Point
 MOST_DEATHS = 3
 _ALONE_AFTER = 2
 MOST_HINDRANCES = 3
+# What another process is at, perhaps on a machine that has died and whose locks the file system has yet to give back.
+MOST_WAITS = 60
+_SECONDS_OF_A_WAIT = 5.0
 # Optima of one task: enough that starting it costs nothing, few enough that all workers have some to do to the end.
 _SECONDS_PER_TASK = 5.0
 _MOST_POINTS = 256
@@ -30,8 +34,10 @@ class Job:
     liquid : str
     points : tuple of Point
     threads : int
-    deaths, hindrances : int
-        How often a worker died over it, and how often it was hindered.
+    deaths, hindrances, waits : int
+        How often a worker died over it, how often it was hindered, and how often another process was at it.
+    blocks : int
+        That its liquid had when a worker died over it for the last time.
     """
 
     liquid: str
@@ -39,11 +45,8 @@ class Job:
     threads: int = 1
     deaths: int = 0
     hindrances: int = 0
-
-    @property
-    def alone(self) -> bool:
-        """Whether it must run by itself."""
-        return self.deaths >= _ALONE_AFTER
+    waits: int = 0
+    blocks: int = 0
 
 
 class Queue:
@@ -55,6 +58,7 @@ class Queue:
         self._waiting: dict[str, tuple[Point, ...]] = {}
         self._ready: dict[str, deque[Point]] = {}
         self._again: deque[Job] = deque()
+        self._later: deque[tuple[float, Job]] = deque()
         self._suspects: deque[Job] = deque()
         self._seconds_per_point: dict[str, float] = {}
 
@@ -78,28 +82,34 @@ class Queue:
 
     def again(self, job: Job) -> None:
         """Put a job back."""
-        if not job.alone:
+        if not self._alone(job):
             self._again.append(job)
         elif len(job.points) > 1:
             self._suspects.extend(replace(job, points=(point,)) for point in job.points)
         else:
             self._suspects.append(job)
 
+    def later(self, job: Job) -> None:
+        """Put a job back for a while."""
+        self._later.append((time.monotonic() + _SECONDS_OF_A_WAIT, job))
+
     def took(self, liquid: str, seconds_per_point: float) -> None:
         """How long an optimum of this liquid took, from which the size of the next task follows."""
         self._seconds_per_point[liquid] = seconds_per_point
 
     def __bool__(self) -> bool:
-        return bool(self._samplings or self._ready or self._again or self._suspects)
+        return bool(self._samplings or self._ready or self._again or self._later or self._suspects)
 
     def next_job(self, in_flight: Iterable[Job]) -> Job | None:
         """A job that may start beside those in flight; None if it is better to wait."""
         running = list(in_flight)
         free = self._crew.threads - sum(job.threads for job in running)
-        if len(running) >= self._crew.tasks or any(job.alone for job in running) or (running and free < 1):
+        if len(running) >= self._crew.tasks or any(map(self._alone, running)) or (running and free < 1):
             return None
         if self._again:
             return self._again.popleft()
+        if self._later and self._later[0][0] <= time.monotonic():
+            return self._later.popleft()[1]
         for liquid, points in self._ready.items():
             chunk = tuple(points.popleft() for _ in range(min(len(points), self._task_size(liquid, len(points)))))
             if not points:
@@ -111,6 +121,10 @@ class Queue:
                 return None
             return replace(self._samplings.popleft(), threads=threads)
         return self._suspects.popleft() if self._suspects and not running else None
+
+    def _alone(self, job: Job) -> bool:
+        """Whether it must run by itself."""
+        return self._crew.dies_as_one and job.deaths >= _ALONE_AFTER
 
     def _task_size(self, liquid: str, left: int) -> int:
         if liquid not in self._seconds_per_point:

@@ -18,6 +18,8 @@ import h5py
 
 from mcgeo.errors import McgeoError, RunInterrupted, StorageError
 from mcgeo.runs.config import config_from_resolved
+from mcgeo.runs.executors import StopSign
+from mcgeo.runs.lock import FileBusy
 from mcgeo.runs.sample import LIQUID_FILE, sample
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import SharedAnswers, optimum, optimum_summary, problem_summary
@@ -42,7 +44,7 @@ class Report(NamedTuple):
     ----------
     end : str
         ``done``; ``stopped`` before its end because it was told to; ``failed`` for good; ``hindered`` by something
-        that may pass, such as a full disk.
+        that may pass, such as a full disk; ``busy`` is its file, which another process writes.
     words : str
         Why, where it is not done.
     rows, failures : int
@@ -67,17 +69,18 @@ class Question(NamedTuple):
 
 
 @contextmanager
-def _stop_file(path: Path) -> Iterator[StopFlag]:
-    """A flag that is set once the file is there: the one sign that reaches workers on every machine."""
+def _watched(sign: StopSign) -> Iterator[StopFlag]:
+    """A flag that is set once the sign is given."""
     flag, ended = StopFlag(), threading.Event()
+    is_given = sign.test()
 
     def look() -> None:
         while not ended.wait(_SECONDS_BETWEEN_LOOKS):
-            if path.exists():
+            if is_given():
                 flag.set()
                 return
 
-    if path.exists():
+    if is_given():
         flag.set()
     watcher = threading.Thread(target=look, daemon=True)
     watcher.start()
@@ -88,22 +91,24 @@ def _stop_file(path: Path) -> Iterator[StopFlag]:
         watcher.join()
 
 
-def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, stop_path: Path) -> Report:
+def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, sign: StopSign) -> Report:
     """Sample a liquid into ``liquids/HASH`` of the sweep's folder, or go on with it.
 
     Parameters
     ----------
     keys : mapping
         Resolved configuration of any point of the liquid.
-    stop_path : Path
-        File whose appearance asks for an early end.
+    sign : StopSign
+        Asks for an early end.
     """
     try:
         config = config_from_resolved({**keys, "sampling": {**keys["sampling"], "threads": threads}})
-        with _stop_file(stop_path) as stop:
+        with _watched(sign) as stop:
             sample(config, folder / LIQUIDS / liquid, quiet=True, stop=stop)
     except RunInterrupted as fault:
         return Report("stopped", str(fault))
+    except FileBusy as fault:
+        return Report("busy", _words(fault))
     except (StorageError, OSError, MemoryError) as fault:
         return Report("hindered", _words(fault))
     except Exception as fault:
@@ -111,7 +116,7 @@ def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, stop_path
     return Report("done")
 
 
-def find_optima(folder: Path, liquid: str, questions: Sequence[Question], stop_path: Path) -> Report:
+def find_optima(folder: Path, liquid: str, questions: Sequence[Question], sign: StopSign) -> Report:
     """The optima of some points of a sampled liquid, left as one file of rows.
 
     A point whose optimum cannot be found is kept with the reason.
@@ -121,7 +126,7 @@ def find_optima(folder: Path, liquid: str, questions: Sequence[Question], stop_p
     failed: dict[str, str] = {}
     try:
         opened = _opened(folder / LIQUIDS / liquid / LIQUID_FILE)
-        with _stop_file(stop_path) as stop:
+        with _watched(sign) as stop:
             for question in questions:
                 if stop.is_set():
                     break
