@@ -51,7 +51,8 @@ class Diagnostics:
     verdict : str
         ``stuck``: a walker accepts less than 2 %, or stored values drift by more than 1e-6: more sweeps do not help.
         ``mixing``: walkers disagree (R-hat above its limit), or an exact rule is off by more than five errors.
-        ``short``: fewer than 400 independent samples, or no plateau of the blocked error, or blocks still missing.
+        ``short``: fewer than 400 independent samples, or no plateau of the blocked error, or blocks still missing, or
+        an error above its target.
         ``converged``: none of these.
     reasons : tuple of str
         What spoke against ``converged``, with figures.
@@ -133,6 +134,7 @@ def diagnose(
     rules: Mapping[str, float],
     time_in_measurements: float,
     length: RunLength,
+    missed_target: tuple[str, float] | None = None,
 ) -> Diagnostics:
     """Diagnostics from the energy trace.
 
@@ -146,6 +148,8 @@ def diagnose(
     time_in_measurements : float
         Integrated autocorrelation time.
     length : RunLength
+    missed_target : tuple of str and float, optional
+        An error that was to be smaller, in words, and by what factor the run ought to grow for it.
     """
     n_components, n_blocks, n_walkers, _ = trace.shape
     chains = np.moveaxis(trace, 2, 1).reshape(n_components, n_walkers, -1)
@@ -161,6 +165,8 @@ def diagnose(
     found = _Findings()
     if n_blocks < length.blocks_planned:
         found.add(SHORT, f"incomplete: {n_blocks} of {length.blocks_planned} blocks", length.blocks_planned / n_blocks)
+    if missed_target is not None:
+        found.add(SHORT, *missed_target)
     fewest = min(samples, bulk, tail) if math.isfinite(bulk + tail) else samples
     if not fewest >= LEAST_SAMPLES:
         reason = f"{fewest:.3g} independent samples, at least {LEAST_SAMPLES:g} are needed"

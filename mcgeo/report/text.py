@@ -45,6 +45,7 @@ def _health_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
         ("autocorrelation time", f"{keys['autocorrelation_time']:.1f} sweeps"),
         ("independent energies", f"{keys['effective_samples']:.3g}"),
         *_control_rows(keys),
+        *_target_rows(keys),
         ("verdict on the run", verdict_text(keys)),
     ]
 
@@ -60,6 +61,15 @@ def verdict_text(keys: Mapping[str, Any]) -> str:
     wanted = keys["sweeps_to_add"]
     advice = _ADVICE[verdict] if wanted is None else f"mcgeo sample CONFIG --extend {wanted}"
     return f"{verdict}: {reasons}; {advice}"
+
+
+def _target_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:
+    if "target" not in keys:
+        return []
+    target = keys["target"]
+    said = "reached" if target["reached"] else "not reached"
+    error = f"error of the {target['quantity']} {target['error']:.2g}"
+    return [("target", f"{said}: {error}, wanted {target['wanted']:.2g}, after {target['sweeps']:g} sweeps")]
 
 
 def _control_rows(keys: Mapping[str, Any]) -> list[tuple[str, str]]:

@@ -85,7 +85,10 @@ def contradictions(given: Mapping[str, Any]) -> list[Remark]:
     given : mapping
         With what a material adds, see `with_material`.
     """
-    remarks = [*_disk_remarks(given), *catalogue_remarks(given), *length_remarks(given), *tilt_remarks(given)]
+    remarks = [
+        *_disk_remarks(given), *catalogue_remarks(given), *_target_remarks(given), *length_remarks(given),
+        *tilt_remarks(given),
+    ]  # fmt: skip
     if given.get("material") is not None:
         from mcgeo.runs.material_problem import material_remarks
 
@@ -125,6 +128,14 @@ def _disk_remarks(given: Mapping[str, Any]) -> list[Remark]:
     if state.get("kind") == "moore_read" and "sector" in state:
         remarks.append(Remark(("state", "sector"), "a disk has no sectors; remove it", at_key=True))
     return remarks
+
+
+def _target_remarks(given: Mapping[str, Any]) -> list[Remark]:
+    sampling, scan = (given[key] if isinstance(given.get(key), Mapping) else {} for key in ("sampling", "scan"))
+    if sampling.get("target_quantity") != "stretch" or scan.get("road") != "torus":
+        return []
+    message = "must be energy on the torus road, where each metric is sampled by itself and none has an optimum"
+    return [Remark(("sampling", "target_quantity"), message)]
 
 
 def load_config(path: str | os.PathLike[str]) -> Config:

@@ -77,6 +77,11 @@ class Droplet(Sampled):
         )
 
     @property
+    def energy(self) -> Estimate:
+        """Coulomb energy per electron with the neutralising ellipse."""
+        return self.energies.total
+
+    @property
     def second_moments(self) -> list[Estimate]:
         """<x^2>, <y^2>, <xy> per electron in the lab, l_B^2."""
         return [mean_estimate(column) for column in self.samples(SECOND_MOMENTS).T]

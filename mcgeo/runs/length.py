@@ -9,13 +9,15 @@ from typing import Any
 from mcgeo.errors import StorageError
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.config import UNRELATED_TO_RESULTS, differing_keys
+from mcgeo.runs.ending import blocks_of, ending_of
+from mcgeo.runs.experiment import result_class
 from mcgeo.runs.sampled import Sampled
 
 Keys = dict[str, Any]
 
 _SECTIONS = ("state", "geometry", "cell", "sampling")
 # With blocks of one length these say where the run ends, and nothing about what comes before.
-_LENGTH_KEYS = ("sweeps", "blocks")
+_LENGTH_KEYS = ("sweeps", "blocks", "target_error", "target_quantity", "most_sweeps")
 
 
 def require_same_run(path: Path, keys: Mapping[str, Any], earlier: Sampled) -> None:
@@ -37,7 +39,7 @@ def require_same_run(path: Path, keys: Mapping[str, Any], earlier: Sampled) -> N
     if not other and _same_blocks(keys, earlier):
         return
     hint = "" if other else "; to make the liquid in the file longer use --extend SWEEPS with the configuration it had"
-    listed = "\n  ".join(differing_keys(stored, wanted, _SECTIONS))
+    listed = "\n  ".join(other or differing_keys(stored, wanted, _SECTIONS))
     raise StorageError(
         f"{path} holds another liquid (in the file and wanted):\n  {listed}\n"
         f"choose another folder with --out, or replace it with --overwrite{hint}"
@@ -74,9 +76,30 @@ def continued(path: Path, keys: Keys, earlier: Sampled) -> Keys:
         As `require_same_run`.
     """
     require_same_run(path, keys, earlier)
-    stored = earlier.resolved["sampling"]
-    kept = ("seed", *(_LENGTH_KEYS if stored["blocks"] > keys["sampling"]["blocks"] else ()))
-    return {**keys, "sampling": {**keys["sampling"], **{key: stored[key] for key in kept}}}
+    stored, wanted = earlier.resolved["sampling"], keys["sampling"]
+    length = {key: wanted[key] for key in _LENGTH_KEYS}
+    open_end = wanted["target_error"] is not None
+    if not earlier.complete and stored["target_error"] is None and (open_end or stored["blocks"] > wanted["blocks"]):
+        # It was to be made longer, or that long, and is first given the length that it was asked for.
+        length = {key: stored[key] for key in _LENGTH_KEYS}
+    elif not open_end and earlier.n_blocks > wanted["blocks"]:
+        length = _fixed(earlier, earlier.n_blocks)
+    return {**keys, "sampling": {**wanted, "seed": stored["seed"], **length}}
+
+
+def missing_nothing(keys: Keys, earlier: Sampled) -> Sampled | None:
+    """What the file holds, with the problem of the configuration, if the run of ``keys`` needs no block more."""
+    result = result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
+    if not earlier.complete or earlier.n_blocks < keys["sampling"]["blocks"]:
+        return None
+    same = all(keys[section] == earlier.resolved[section] for section in ("sampling", "problem"))
+    return result if same or ending_of(keys["sampling"], result.schedule).satisfied_by(result) else None
+
+
+def _fixed(earlier: Sampled, n_blocks: int) -> Keys:
+    """A length of so many of the file's blocks."""
+    open_end = dict.fromkeys(_LENGTH_KEYS)
+    return {**open_end, "sweeps": n_blocks * earlier.schedule.sweeps_per_block, "blocks": n_blocks}
 
 
 def extended(path: Path, keys: Keys, earlier: Sampled | None, sweeps: int) -> Keys:
@@ -90,13 +113,11 @@ def extended(path: Path, keys: Keys, earlier: Sampled | None, sweeps: int) -> Ke
     if earlier is None:
         raise StorageError(f"{path}: no such file, so there is nothing to extend; leave out --extend to make it")
     require_same_run(path, keys, earlier)
+    seed = earlier.resolved["sampling"]["seed"]
     if not earlier.complete:
-        done, asked = earlier.n_blocks, earlier.resolved["sampling"]["blocks"]
         raise StorageError(
-            f"{path} is unfinished: {done} of {asked} blocks; the same command without --extend ends it, "
+            f"{path} is unfinished: {blocks_of(earlier)}; the same command without --extend ends it, "
             "then it can be extended"
         )
-    block = earlier.schedule.sweeps_per_block
-    n_blocks = earlier.n_blocks - (-sweeps // block)
-    length = {"seed": earlier.resolved["sampling"]["seed"], "sweeps": n_blocks * block, "blocks": n_blocks}
-    return {**keys, "sampling": {**keys["sampling"], **length}}
+    n_blocks = earlier.n_blocks - (-sweeps // earlier.schedule.sweeps_per_block)
+    return {**keys, "sampling": {**keys["sampling"], "seed": seed, **_fixed(earlier, n_blocks)}}

@@ -16,8 +16,9 @@ from mcgeo.estimate.sum_rules import pairs_within, sum_rule_z
 from mcgeo.estimate.torus_energy import torus_energy
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.problem.interaction import Coulomb, Interaction
+from mcgeo.problem.landau_level import LOWEST
 from mcgeo.problem.problem import Problem
-from mcgeo.runs.build import torus_frame, torus_states
+from mcgeo.runs.build import interaction_from, torus_frame, torus_states
 from mcgeo.runs.run_summary import state_summary
 from mcgeo.runs.sampled import Sampled
 from mcgeo.sampling.measurement import BIN_WIDTH, CONTROLS, PAIRS, STRUCTURE, configurations_counted
@@ -159,6 +160,17 @@ class Liquid(Sampled):
     def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
         """Energy of every sample over the hole's metric, of the infinite liquid."""
         return surface_of(self.occupations, problem, variation)
+
+    @cached_property
+    def energy(self) -> Estimate:
+        """Energy per electron of the infinite liquid from the pair occupations, cleared of noise by control variates.
+
+        Orbit and hole have the state's metric, in the lowest level, for the configured interaction.
+        """
+        interaction = interaction_from(self.resolved["problem"]["interaction"])
+        metric = self.frame.metric
+        surface = self.energy_surface(Problem(metric, interaction, LOWEST), Variation())
+        return mean_estimate(surface.sample_energies(metric))
 
     def torus_energy(self, interaction: Interaction) -> Estimate:
         """Energy per electron of the sampled state on its cell, straight from S(q)."""

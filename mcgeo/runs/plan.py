@@ -9,6 +9,7 @@ from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import droplet_state, problem_from, schedule_from, torus_frame
 from mcgeo.runs.catalogue import KIND
 from mcgeo.runs.catalogue_summary import catalogue_plan
+from mcgeo.runs.ending import Ending, ending_of
 from mcgeo.runs.experiment import experiment_of
 from mcgeo.runs.scan import require_reach
 
@@ -80,7 +81,9 @@ def sampling_plan(resolved: Mapping[str, Any]) -> dict[str, Any]:
     schedule = schedule_from(resolved, state)
     n, n_components = state.n_electrons, len(experiment.states)
     surface, n_waves, seconds_per_measurement = _surface(resolved)
-    sweeps = schedule.sweeps_per_walker + 2 * schedule.equilibration
+    ending = ending_of(resolved["sampling"], schedule)
+    production = ending.most_blocks * schedule.sweeps_per_block
+    sweeps = production + 2 * schedule.equilibration
     per_walker = sweeps * n * (n - 1.0) * state.proposals_per_sweep * state.cost_per_pair * _SECONDS_PER_PAIR
     per_walker += sweeps / schedule.sweeps_between * seconds_per_measurement
     kept = n_waves + _KEPT_BESIDE_WAVES + n_components * schedule.measurements_per_block
@@ -90,13 +93,23 @@ def sampling_plan(resolved: Mapping[str, Any]) -> dict[str, Any]:
         "electrons": n,
         **surface,
         "walkers": schedule.n_walkers,
-        "sweeps_per_walker": schedule.sweeps_per_walker,
-        "blocks": schedule.n_blocks,
+        "sweeps_per_walker": production,
+        "blocks": ending.most_blocks,
+        **_open_end(ending),
         "sweeps_between_measurements": schedule.sweeps_between,
         "threads": schedule.threads,
         "core_seconds": per_walker * schedule.n_walkers * n_components,
-        "estimated_megabytes": round(schedule.n_blocks * schedule.n_walkers * kept * 8e-6, 2),
+        "estimated_megabytes": round(ending.most_blocks * schedule.n_walkers * kept * 8e-6, 2),
     }
+
+
+def _open_end(ending: Ending) -> dict[str, Any]:
+    """What a run with a target says of its length; sweeps, blocks, time and disk are then those of the limit."""
+    if ending.target is None:
+        return {}
+    target = ending.target
+    words = f"open, until the error of the {target.quantity} is {target.error:g}, at least {ending.first_blocks} blocks"
+    return {"length": f"{words}; sweeps, blocks, time and disk stated here are those of the limit"}
 
 
 def _surface(resolved: Mapping[str, Any]) -> tuple[dict[str, Any], int, float]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import time
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
@@ -12,6 +13,7 @@ import numpy as np
 
 from mcgeo.errors import RunInterrupted
 from mcgeo.runs.build import schedule_from
+from mcgeo.runs.ending import ending_of
 from mcgeo.runs.experiment import Experiment
 from mcgeo.runs.progress import Progress
 from mcgeo.runs.sampled import Blocks, Sampled
@@ -51,7 +53,7 @@ class Production:
     Parameters
     ----------
     keys : mapping
-        Resolved configuration; its ``sampling`` says how many blocks there shall be.
+        Resolved configuration; its ``sampling`` says when to end.
     path : Path
         The result file.
     experiment : Experiment
@@ -74,7 +76,11 @@ class Production:
         self._keys, self._path, self._experiment, self._quiet = keys, path, experiment, quiet
         self._resume = resume
         self._schedules = [schedule_from(keys, state, index) for index, state in enumerate(experiment.states)]
+        self._ending = ending_of(keys["sampling"], self._schedules[0])
+        self._clock = SaveClock(keys["sampling"]["checkpoint_seconds"])
         self._standing = standing
+        self._saved_blocks = self._n_blocks
+        self._note = ""
         self._records: list[list[BlockRecord]] = []
 
     @property
@@ -82,26 +88,40 @@ class Production:
         return self._standing.chains[0].blocks_done
 
     def finish(self, stop: StopFlag) -> Sampled:
-        """All blocks that are missing.
+        """All blocks that are missing, and the file.
 
         Raises
         ------
         RunInterrupted
             When ``stop`` was set meanwhile; whole blocks are in the file.
         """
-        n_blocks = self._schedules[0].n_blocks
-        clock = SaveClock(self._keys["sampling"]["checkpoint_seconds"])
-        with Progress(n_blocks, self._n_blocks, self._quiet) as progress:
-            while self._n_blocks < n_blocks:
-                try:
-                    acceptance = self._one_block(stop)
-                except Interrupted:
-                    self._give_up(stop)
-                progress.step(f"acceptance {acceptance:.3f}")
-                if clock.due and self._n_blocks < n_blocks:
-                    with clock.writing():
-                        self.save(complete=False)
+        with Progress(self._ending.expected_blocks(0, math.inf), self._n_blocks, self._quiet) as progress:
+            while not self._at_end(progress):
+                self._produce(self._ending.look_after(self._n_blocks), stop, progress)
         return self.save(complete=True)
+
+    def _at_end(self, progress: Progress) -> bool:
+        """Whether to stop here, asked at the counts at which that is decided."""
+        n_blocks, target = self._n_blocks, self._ending.target
+        if target is None or not self._ending.is_look(n_blocks):
+            return n_blocks >= self._ending.most_blocks
+        result = self._result(complete=False)
+        error = result.statistical_error(target.quantity)
+        progress.expect(self._ending.expected_blocks(n_blocks, error))
+        self._note = f", {target.quantity} known to {error:.2g} of {target.error:.2g}"
+        return self._ending.satisfied_by(result)
+
+    def _produce(self, n_blocks: int, stop: StopFlag, progress: Progress) -> None:
+        """On to so many blocks, with checkpoints on the way."""
+        while self._n_blocks < n_blocks:
+            if self._n_blocks > self._saved_blocks and self._clock.due:
+                with self._clock.writing():
+                    self.save(complete=False)
+            try:
+                acceptance = self._one_block(stop)
+            except Interrupted:
+                self._give_up(stop)
+            progress.step(f"acceptance {acceptance:.3f}{self._note}")
 
     def _one_block(self, stop: StopFlag) -> float:
         started = time.monotonic()
@@ -127,6 +147,13 @@ class Production:
 
     def save(self, *, complete: bool) -> Sampled:
         """Write the file; what it holds."""
+        result = self._result(complete)
+        write_result(self._path, result)
+        self._saved_blocks = result.n_blocks
+        return result
+
+    def _result(self, complete: bool) -> Sampled:
+        """All blocks so far."""
         blocks = self._standing.blocks
         if self._records:
             later = Blocks.from_records(self._records, self._experiment.trace_offset)
@@ -135,6 +162,4 @@ class Production:
             self._standing = replace(self._standing, blocks=blocks)
         assert blocks is not None
         standing = self._standing
-        result = self._experiment.result(self._keys, blocks, list(standing.chains), standing.seconds, complete)
-        write_result(self._path, result)
-        return result
+        return self._experiment.result(self._keys, blocks, list(standing.chains), standing.seconds, complete)

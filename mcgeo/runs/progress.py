@@ -22,7 +22,8 @@ class Progress:
     def __init__(self, total: int, done: int = 0, quiet: bool = False) -> None:
         self._total, self._done = total, done
         self._started = self._last_line = time.monotonic()
-        self._first = done
+        self._first = self._told = done
+        self._note = ""
         self._quiet = quiet
         terminal = sys.stderr.isatty() and not quiet
         self._bar = tqdm(total=total, initial=done, unit="block", file=sys.stderr) if terminal else None
@@ -35,15 +36,29 @@ class Progress:
     ) -> None:
         if self._bar is not None:
             self._bar.close()
+        elif kind is None and self._done > self._told:
+            self.expect(self._done)
+            self._line()
+
+    def expect(self, total: int) -> None:
+        """The run is now thought to take so many blocks."""
+        self._total = total
+        if self._bar is not None:
+            self._bar.total = total
+            self._bar.refresh()
 
     def step(self, note: str) -> None:
         """One block more; ``note`` tells how it went."""
         self._done += 1
-        now = time.monotonic()
+        self._note = note
         if self._bar is not None:
             self._bar.set_postfix_str(note)
             self._bar.update(1)
-        elif not self._quiet and (now - self._last_line > _SECONDS_BETWEEN_LINES or self._done == self._total):
-            self._last_line = now
-            left = (now - self._started) / (self._done - self._first) * (self._total - self._done)
-            say(f"block {self._done}/{self._total}, {note}, {left:.0f} s left")
+        elif time.monotonic() - self._last_line > _SECONDS_BETWEEN_LINES:
+            self._line()
+
+    def _line(self) -> None:
+        self._told, self._last_line = self._done, time.monotonic()
+        if not self._quiet:
+            left = (self._last_line - self._started) / (self._done - self._first) * (self._total - self._done)
+            say(f"block {self._done}/{self._total}, {self._note}, {left:.0f} s left")

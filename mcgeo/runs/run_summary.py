@@ -5,6 +5,8 @@ from __future__ import annotations
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any, Protocol
 
+from mcgeo.runs.ending import target_summary
+
 if TYPE_CHECKING:
     from mcgeo.runs.sampled import Sampled
 
@@ -50,7 +52,7 @@ def run_summary(result: Sampled) -> dict[str, Any]:
 
 def diagnostics_summary(result: Sampled) -> dict[str, Any]:
     """``diagnostics`` of the JSON output."""
-    health = result.diagnostics
+    health, target = result.diagnostics, target_summary(result)
     return {
         "verdict": health.verdict,
         "reasons": list(health.reasons),
@@ -71,5 +73,6 @@ def diagnostics_summary(result: Sampled) -> dict[str, Any]:
         },
         "drift": health.drift,
         "rules_z": dict(health.rules),
+        **({} if target is None else {"target": target}),
         **result.control_summary,
     }

@@ -7,14 +7,18 @@ from contextlib import nullcontext
 from pathlib import Path
 from typing import Any
 
+from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.catalogue import require_sampled_state
 from mcgeo.runs.config import Config, resolved
-from mcgeo.runs.experiment import experiment_of, result_class
-from mcgeo.runs.length import continued, extended
+from mcgeo.runs.droplet_scan import require_droplet_problem
+from mcgeo.runs.experiment import experiment_of
+from mcgeo.runs.length import continued, extended, missing_nothing
 from mcgeo.runs.lock import run_lock
 from mcgeo.runs.production import Production, Standing
 from mcgeo.runs.progress import say
 from mcgeo.runs.sampled import Sampled
+from mcgeo.runs.sampling_config import STRETCH
+from mcgeo.runs.scan import require_reach
 from mcgeo.runs.signals import StopFlag, stop_on_signals
 from mcgeo.runs.start import START_FILE, equilibrated_chains, seed_of_start
 from mcgeo.runs.storage import read_result
@@ -61,20 +65,14 @@ def sample(
     """
     path = folder / LIQUID_FILE
     require_sampled_state(config.state.model_dump())
-    keys, earlier = _joined(config, path, overwrite, extend)
-    if _whole(keys, earlier) is None:
-        with run_lock(path):
-            # Another process may have gone on meanwhile.
-            keys, earlier = _joined(config, path, overwrite, extend)
-            if _whole(keys, earlier) is None:
-                return _run(keys, path, earlier, quiet, stop)
-    result = _whole(keys, earlier)
-    assert result is not None
+    held = None if overwrite or extend is not None else held_liquid(config, path)
+    if held is None:
+        return _made(config, path, overwrite, extend, quiet, stop)
     if not quiet:
-        longer = result.n_blocks > config.sampling.blocks
-        said = f", longer: {result.n_blocks} blocks where {config.sampling.blocks} are asked for" if longer else ""
+        longer = config.sampling.target_error is None and held.n_blocks > config.sampling.blocks
+        said = f", longer: {held.n_blocks} blocks where {config.sampling.blocks} are asked for" if longer else ""
         say(f"{path} holds this liquid already{said}")
-    return result
+    return held
 
 
 def held_liquid(config: Config, path: Path) -> Sampled | None:
@@ -85,7 +83,38 @@ def held_liquid(config: Config, path: Path) -> Sampled | None:
     StorageError
         If the file holds a liquid of another configuration.
     """
-    return _whole(*_joined(config, path, overwrite=False, extend=None))
+    keys, earlier = _joined(config, path, overwrite=False, extend=None)
+    return None if earlier is None else missing_nothing(keys, earlier)
+
+
+def _made(
+    config: Config, path: Path, overwrite: bool, extend: int | None, quiet: bool, stop: StopFlag | None
+) -> Sampled:
+    """The liquid after what is missing has been run."""
+    _require_answer(config)
+    # Refused before the folder is touched.
+    _joined(config, path, overwrite, extend)
+    with run_lock(path):
+        # Another process may have gone on meanwhile.
+        keys, earlier = _joined(config, path, overwrite, extend)
+        result = missing_nothing(keys, earlier) if earlier is not None else None
+        while result is None:
+            earlier = _run(keys, path, earlier, quiet, stop)
+            # An unfinished run gets the length it was first asked for, which may be less than is asked for now.
+            keys = dict(earlier.resolved) if extend is not None else continued(path, resolved(config), earlier)
+            result = missing_nothing(keys, earlier)
+    return result
+
+
+def _require_answer(config: Config) -> None:
+    """Refuse, before anything is sampled, a problem whose optimum shall be known well and that has none."""
+    if config.sampling.target_quantity != STRETCH:
+        return
+    keys = config.model_dump(mode="json", by_alias=True)
+    problem = problem_from(keys["problem"])
+    require_reach(problem, keys["scan"])
+    if config.geometry.kind == "disk":
+        require_droplet_problem(problem, variation_from(keys["problem"]))
 
 
 def _joined(
@@ -97,13 +126,6 @@ def _joined(
     if extend is not None:
         return extended(path, keys, earlier, extend), earlier
     return (keys if earlier is None else continued(path, keys, earlier)), earlier
-
-
-def _whole(keys: dict[str, Any], earlier: Sampled | None) -> Sampled | None:
-    """What the folder holds, with the problem of the configuration, if no block is missing."""
-    if earlier is None or not earlier.complete or earlier.n_blocks < keys["sampling"]["blocks"]:
-        return None
-    return result_class(keys)(keys, earlier.blocks, earlier.chains, earlier.seconds, True)
 
 
 def _run(

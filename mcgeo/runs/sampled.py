@@ -12,14 +12,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.estimate.diagnostics import Diagnostics, RunLength, diagnose
-from mcgeo.estimate.statistics import independent_samples, integrated_autocorrelation_time
+from mcgeo.estimate.statistics import Estimate, independent_samples, integrated_autocorrelation_time
 from mcgeo.problem.problem import Problem
-from mcgeo.runs.build import schedule_from
+from mcgeo.runs.build import problem_from, schedule_from, variation_from
+from mcgeo.runs.ending import ending_of, missed_target
 from mcgeo.runs.run_summary import diagnostics_summary
+from mcgeo.runs.sampling_config import ENERGY
 from mcgeo.sampling.blocks import BlockRecord
 from mcgeo.sampling.chain import ChainState, Schedule
 from mcgeo.states.base import SampledState
 from mcgeo.variational.energy_surface import Surface
+from mcgeo.variational.minimum import find_minimum
 from mcgeo.variational.variation import Variation
 
 Array = NDArray[np.float64]
@@ -132,6 +135,30 @@ class Sampled(ABC):
         """Which of `axes` is the scale of which dataset (``means/NAME`` or ``counts/NAME``) along which axis."""
 
     @property
+    @abstractmethod
+    def energy(self) -> Estimate:
+        """Energy per electron that ``sample`` states: of the infinite liquid, or of the droplet."""
+
+    @abstractmethod
+    def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
+        """Energy of every sample over the hole's metric.
+
+        Raises
+        ------
+        ConfigError
+            If there is no answer to the problem.
+        """
+
+    def statistical_error(self, quantity: str) -> float:
+        """Standard error of the ``energy`` or of the ``stretch`` of the optimum; infinite where there is no optimum."""
+        return self.energy.error if quantity == ENERGY else self._optimal_stretch.error
+
+    @cached_property
+    def _optimal_stretch(self) -> Estimate:
+        keys = self.resolved["problem"]
+        return find_minimum(self.energy_surface(problem_from(keys), variation_from(keys))).stretch
+
+    @property
     def n_blocks(self) -> int:
         """Blocks that the file holds."""
         return int(self.blocks.drift.shape[1])
@@ -139,10 +166,6 @@ class Sampled(ABC):
     @abstractmethod
     def state_summary(self) -> dict[str, Any]:
         """``state`` of the JSON output."""
-
-    @abstractmethod
-    def energy_surface(self, problem: Problem, variation: Variation) -> Surface:
-        """Energy of every sample over the hole's metric; see `mcgeo.runs.scannable.Scannable`."""
 
     @cached_property
     def schedule(self) -> Schedule:
@@ -179,9 +202,17 @@ class Sampled(ABC):
     def diagnostics(self) -> Diagnostics:
         """Whether the run may be trusted."""
         schedule, blocks = self.schedule, self.blocks
-        per_block = schedule.measurements_per_block * schedule.sweeps_between
-        length = RunLength(schedule.sweeps_between, per_block, schedule.n_blocks)
-        return diagnose(blocks.trace, blocks.accepted, blocks.drift, self.rules, self.time_in_measurements, length)
+        planned = self.n_blocks if self.complete else ending_of(self.resolved["sampling"], schedule).most_blocks
+        length = RunLength(schedule.sweeps_between, schedule.sweeps_per_block, planned)
+        return diagnose(
+            blocks.trace,
+            blocks.accepted,
+            blocks.drift,
+            self.rules,
+            self.time_in_measurements,
+            length,
+            missed_target(self),
+        )
 
     @property
     def control_summary(self) -> Mapping[str, Any]:

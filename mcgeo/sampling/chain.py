@@ -44,11 +44,6 @@ class Schedule:
         """Sweeps of a walker in one block."""
         return self.measurements_per_block * self.sweeps_between
 
-    @property
-    def sweeps_per_walker(self) -> int:
-        """Sweeps of production."""
-        return self.n_blocks * self.sweeps_per_block
-
 
 @dataclass(frozen=True)
 class ChainState:

@@ -48,6 +48,9 @@ def test_a_state_is_all_that_is_needed(write):
             "threads": None,
             "checkpoint_seconds": 60.0,
             "q_max": 8.0,
+            "target_error": None,
+            "target_quantity": None,
+            "most_sweeps": None,
         },
         "material": None,
         "problem": {
@@ -93,6 +96,12 @@ def test_bosons_at_filling_one(write, filling):
     assert config.state.kind == "moore_read"
     assert config.state.filling == 1
     assert config.state.sector == 2
+
+
+def test_a_target_has_a_quantity_and_a_limit(write):
+    config = load_config(write(LAUGHLIN + "sampling: {target_error: 1e-5, sweeps: 4000}\n"))
+    assert (config.sampling.target_quantity, config.sampling.most_sweeps) == ("energy", 128_000)
+    assert config_from_resolved(resolved(config)) == config
 
 
 def test_configurations_are_immutable(write):

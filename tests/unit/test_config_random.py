@@ -50,12 +50,17 @@ def samplings(draw):
                 "step": st.none() | positive,
                 "seed": st.none() | st.integers(0, 2**128),
                 "threads": st.none() | st.integers(1, 64),
+                "checkpoint_seconds": st.floats(0, 1e4),
                 "q_max": st.floats(4, 12),
             },
         )
     )
     sampling["blocks"] = draw(st.integers(2, sampling["sweeps"]))
     sampling["measure_every"] = draw(st.none() | st.integers(1, sampling["sweeps"] // sampling["blocks"]))
+    if draw(st.booleans()):
+        sampling["target_error"] = draw(positive)
+        sampling["target_quantity"] = draw(st.sampled_from(["energy", None]))
+        sampling["blocks"] = min(sampling["blocks"], 32)
     return sampling
 
 
