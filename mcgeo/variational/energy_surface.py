@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from dataclasses import dataclass, field
+from dataclasses import dataclass
+from functools import cached_property
 from typing import Protocol
 
 import numpy as np
@@ -81,29 +82,29 @@ class EnergySurface:
 
     occupations: PairOccupations
     problem: Problem
-    _interaction: InteractionEnergy = field(init=False, repr=False)
-    _background: float = field(init=False, repr=False)
+    @property
+    def _interaction(self) -> InteractionEnergy:
+        return interaction_energy(self.occupations)
 
-    def __post_init__(self) -> None:
-        interaction = interaction_energy(self.occupations)
-        object.__setattr__(self, "_interaction", interaction)
-        object.__setattr__(self, "_background", interaction.background(self.problem))
+    @cached_property
+    def _background(self) -> float:
+        return self._interaction.background(self.problem)
 
     def sample_energies(self, metric: UnimodularMetric) -> Array:
         """E(g) of every block sample, shape (n_samples,)."""
-        return self._background + self._interaction.energies(self.problem, metric, self.occupations.samples)
+        return self._background + self._interaction.energies(self.problem, metric)
 
     def energy(self, metric: UnimodularMetric) -> float:
         """Mean E(g)."""
-        return self._background + float(self._interaction.energies(self.problem, metric, self._interaction.mean)[0])
+        return self._background + float(self._interaction.average.energies(self.problem, metric)[0])
 
     def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
-        """Gradient and Hessian of every sample in the flat coordinates about a metric."""
-        return self._interaction.expansion(self.problem, metric, self.occupations.samples).above(self._background)
+        """Energy, gradient and Hessian of every sample in the flat coordinates about a metric."""
+        return self._interaction.expansion(self.problem, metric).above(self._background)
 
     def mean_expansion(self, metric: UnimodularMetric) -> LocalExpansion:
         """That of the mean."""
-        return self._interaction.expansion(self.problem, metric, self._interaction.mean).above(self._background)
+        return self._interaction.average.expansion(self.problem, metric).above(self._background)
 
     def rough_energies(self, points: Array) -> Array:
         """Energies above the background by tables along rays; see `mcgeo.variational.ray_table`."""

@@ -20,8 +20,8 @@ The angular harmonics of v(S k) give the energies, gradients and Hessians of all
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
-from functools import lru_cache
+from dataclasses import dataclass, replace
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -56,57 +56,62 @@ def basis_derivatives(occupations: PairOccupations, radii: Array) -> Array:
 class InteractionEnergy:
     """E_int(g_L, g) of one liquid: orbit and hole metric both free.
 
-    Parameters
+    Attributes
     ----------
-    occupations : PairOccupations
+    uniform : float
+        e nu, the part of Sbar - 1 that does not depend on q.
+    radii : ndarray, shape (n_k,)
+        Nodes |k|.
+    coefficients : ndarray, shape (n_samples, n)
+        What the samples take of each function.
+    projections : ndarray, shape (3, n, n_k)
+        k dk/(4 pi) times f, s f' and s^2 f'' of each function at the nodes.
     """
 
-    occupations: PairOccupations
-    mean: Array = field(init=False, repr=False)
-    _radii: Array = field(init=False, repr=False)
-    _projections: Array = field(init=False, repr=False)
+    uniform: float
+    radii: Array
+    coefficients: Array
+    projections: Array
 
-    def __post_init__(self) -> None:
-        largest = 2.0 * math.sqrt(float(self.occupations.m[-1])) + _BEYOND_TURNING_POINT
-        radii, weights = half_line_rule(largest)
-        measure = weights * radii / (4.0 * math.pi)
-        object.__setattr__(self, "mean", self.occupations.coefficients[None, :])
-        object.__setattr__(self, "_radii", radii)
-        object.__setattr__(self, "_projections", measure * basis_derivatives(self.occupations, radii))
+    @cached_property
+    def average(self) -> InteractionEnergy:
+        """That of the mean of the samples, as one sample of one function."""
+        mean = np.einsum("m,dmk->dk", self.coefficients.mean(axis=0), self.projections)
+        return replace(self, coefficients=np.ones((1, 1)), projections=mean[:, None, :])
 
     def background(self, problem: Problem) -> float:
         """(e nu/2) int d^2q/(2 pi)^2 v(q): what does not depend on the hole."""
         radii, weights = half_line_rule(problem.reach)
         mean = angular_harmonics(problem, problem.orbit.metric, radii)[:, 0]
-        factor = self.occupations.statistics_sign * float(self.occupations.filling)
-        return float(factor * np.sum(weights * radii * mean) / (4.0 * math.pi))
+        return float(self.uniform * np.sum(weights * radii * mean) / (4.0 * math.pi))
 
-    def energies(self, problem: Problem, metric: UnimodularMetric, coefficients: Array) -> Array:
-        """Energies above the background of liquids with coefficients c_m of shape (n, n_m), shape (n,)."""
-        harmonics = angular_harmonics(problem, metric, self._radii)
-        return np.asarray(coefficients @ (self._projections[0] @ harmonics[:, 0]))
+    def energies(self, problem: Problem, metric: UnimodularMetric) -> Array:
+        """Energies of the samples above the background, shape (n_samples,)."""
+        harmonics = angular_harmonics(problem, metric, self.radii)
+        return np.asarray(self.coefficients @ (self.projections[0] @ harmonics[:, 0]))
 
-    def expansion(self, problem: Problem, metric: UnimodularMetric, coefficients: Array) -> LocalExpansion:
+    def expansion(self, problem: Problem, metric: UnimodularMetric) -> LocalExpansion:
         """Energies above the background, gradients and Hessians in the flat coordinates about the metric."""
-        table = self._projections @ angular_harmonics(problem, metric, self._radii)
-        value, first, second = table
-        own = np.stack(
-            [
-                value[:, 0],
-                -first[:, 1],
-                -first[:, 2],
-                first[:, 0] + 0.5 * (second[:, 0] + second[:, 3]),
-                first[:, 0] + 0.5 * (second[:, 0] - second[:, 3]),
-                0.5 * second[:, 4],
-            ],
-            axis=-1,
-        )
-        found = coefficients @ own
-        hessian = found[:, [3, 5, 5, 4]].reshape(-1, 2, 2)
-        return LocalExpansion(found[:, 0], found[:, 1:3], hessian)
+        value, first, second = self.projections @ angular_harmonics(problem, metric, self.radii)
+        columns = [
+            value[:, 0],
+            -first[:, 1],
+            -first[:, 2],
+            first[:, 0] + 0.5 * (second[:, 0] + second[:, 3]),
+            first[:, 0] + 0.5 * (second[:, 0] - second[:, 3]),
+            0.5 * second[:, 4],
+        ]
+        found = self.coefficients @ np.array(columns).T
+        return LocalExpansion(found[:, 0], found[:, 1:3], found[:, [3, 5, 5, 4]].reshape(-1, 2, 2))
 
 
 @lru_cache(maxsize=_KEPT_LIQUIDS)
 def interaction_energy(occupations: PairOccupations) -> InteractionEnergy:
     """`InteractionEnergy` of a liquid, made once."""
-    return InteractionEnergy(occupations)
+    radii, weights = half_line_rule(2.0 * math.sqrt(float(occupations.m[-1])) + _BEYOND_TURNING_POINT)
+    return InteractionEnergy(
+        occupations.statistics_sign * float(occupations.filling),
+        radii,
+        occupations.samples,
+        weights * radii / (4.0 * math.pi) * basis_derivatives(occupations, radii),
+    )

@@ -4,24 +4,30 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from functools import cache
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
+from mcgeo.problem.problem import Problem
 from mcgeo.variational.derivatives import LocalExpansion
 from mcgeo.variational.energy_surface import Surface
 
 Array = NDArray[np.float64]
 
-# The search covers this distance from the orbit metric; a minimum that runs to its edge is none.
+# The search covers this distance from the orbit metric, and goes past the interaction's metrics where these are
+# farther; a minimum that runs to its edge is none.
 SEARCH_RADIUS = 2.5
-_RINGS = 6
+_PAST_INTERACTION = 0.5
+_LARGEST_RADIUS = 3.75
+_BETWEEN_RINGS = 0.42
 _NEWTON_STEPS = 60
 # A Newton step longer than this is cut: far from the minimum the Hessian promises too much.
 _LONGEST_STEP = 0.5
+# After a step as short as this the next would be its square.
+_SHORT_STEP = 3e-6
 _TOLERANCE = 1e-9
 _ROUNDING_OF_ENERGY = 1e-14
 # A curvature of this size and either sign is none: the circle of equal holes of a symmetric problem that prefers an
@@ -81,8 +87,9 @@ def find_minimum(surface: Surface) -> Minimum:
     A replica's minimum is one Newton step from the mean's: exact to second order in deviations that are a small part
     of the error. Angles of problems whose axes coincide are fixed by symmetry and come out without error.
     """
-    points = _rings()
-    metric, interior = _polished(surface, points[np.argmin(surface.rough_energies(points))])
+    radius = search_radius(surface.problem)
+    points = _rings(radius)
+    metric, interior = _polished(surface, points[np.argmin(surface.rough_energies(points))], radius)
     expansion = surface.expansion_about(metric)
     gradients = jackknife_means(expansion.gradient)
     hessians = jackknife_means(expansion.hessian)
@@ -142,29 +149,36 @@ def _mean(samples: Array) -> Estimate:
     )
 
 
-@cache
-def _rings() -> Array:
+def search_radius(problem: Problem) -> float:
+    """Distance from the orbit metric within which a minimum is looked for."""
+    farthest = max(metric.distance(problem.orbit.metric) for metric in problem.interaction.metrics)
+    return min(max(SEARCH_RADIUS, farthest + _PAST_INTERACTION), _LARGEST_RADIUS)
+
+
+@lru_cache(maxsize=64)
+def _rings(largest: float) -> Array:
     """Flat coordinates of the centre and of points on rings about it, shape (n, 2)."""
+    n_rings = math.ceil(largest / _BETWEEN_RINGS)
     points = [(0.0, 0.0)]
-    for ring in range(1, _RINGS + 1):
-        radius, n = SEARCH_RADIUS * ring / _RINGS, 6 * ring
+    for ring in range(1, n_rings + 1):
+        radius, n = largest * ring / n_rings, 6 * ring
         turns = 2.0 * math.pi * np.arange(n) / n
         points += [(radius * math.cos(t), radius * math.sin(t)) for t in turns]
     return np.array(points)
 
 
-def _polished(surface: Surface, start: Array) -> tuple[UnimodularMetric, bool]:
+def _polished(surface: Surface, start: Array, radius: float) -> tuple[UnimodularMetric, bool]:
     """Newton's descent on the mean from flat coordinates about the orbit metric, to rounding."""
     centre = surface.problem.orbit.metric
     metric = centre.displaced(*start)
     at, on_edge = surface.mean_expansion(metric), False
     for _ in range(_NEWTON_STEPS):
         step = at.downhill_step(_LONGEST_STEP)
-        metric, at, beyond = _downhill(surface, metric, at, step)
+        metric, at, beyond = _downhill(surface, metric, at, step, radius)
         if beyond and on_edge:
             return metric, False
         on_edge = beyond
-        if float(np.hypot(*step)) < _TOLERANCE:
+        if float(np.hypot(*step)) < _SHORT_STEP:
             break
     if np.linalg.eigvalsh(at.hessian[0])[0] < -_FLAT:
         return metric, False
@@ -172,18 +186,18 @@ def _polished(surface: Surface, start: Array) -> tuple[UnimodularMetric, bool]:
 
 
 def _downhill(
-    surface: Surface, metric: UnimodularMetric, at: LocalExpansion, step: Array
+    surface: Surface, metric: UnimodularMetric, at: LocalExpansion, step: Array, radius: float
 ) -> tuple[UnimodularMetric, LocalExpansion, bool]:
     """A step, halved until the energy falls, and stopped at the edge of the search; True where it led beyond."""
     centre = surface.problem.orbit.metric
     while True:
         moved = metric.displaced(*step)
         relative = moved.relative_to(centre)
-        beyond = relative.stretch > SEARCH_RADIUS
+        beyond = relative.stretch > radius
         if beyond:
-            moved = centre.composed_with(UnimodularMetric(SEARCH_RADIUS, relative.angle))
+            moved = centre.composed_with(UnimodularMetric(radius, relative.angle))
         there = surface.mean_expansion(moved)
-        if there.energy[0] <= at.energy[0] + _ROUNDING_OF_ENERGY or float(np.hypot(*step)) < _TOLERANCE:
+        if there.energy[0] <= at.energy[0] + _ROUNDING_OF_ENERGY or float(np.hypot(*step)) < _SHORT_STEP:
             return moved, there, beyond
         step = 0.5 * step
 

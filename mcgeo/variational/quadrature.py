@@ -16,8 +16,8 @@ Array = NDArray[np.float64]
 
 LARGEST_DISTANCE = 4.0
 
-_LEAST_NODES = 200
-_NODES_PER_UNIT = 12.0
+_LEAST_NODES = 100
+_NODES_PER_UNIT = 9.0
 # Below this |k| the nodes crowd towards 0, as far as exp(-pi sinh 5.3) = 1e-137; the last one is 1e-16 short of 1.
 _INNER = 1.0
 _INNER_RANGE = (-5.3, 3.2)

@@ -23,8 +23,8 @@ from mcgeo.problem.problem import Problem
 Array = NDArray[np.float64]
 
 _RAYS = 48
-_LARGEST_LOG = 2.6
-_LOGS = np.linspace(-_LARGEST_LOG, _LARGEST_LOG, 131)
+_LARGEST_LOG = 3.8
+_LOGS = np.linspace(-_LARGEST_LOG, _LARGEST_LOG, 153)
 _INNER_NODES, _OUTER_NODES = 24, 96
 _POWER = 4
 _REACH_STEP = 3.0
@@ -59,7 +59,7 @@ def rough_energies(occupations: PairOccupations, problem: Problem, points: Array
     Parameters
     ----------
     points : ndarray, shape (n, 2)
-        At most 2.6 from the origin.
+        At most 3.8 from the origin.
 
     Returns
     -------

@@ -68,16 +68,16 @@ class RigidSurface(DirectSurface):
 
     def sample_energies(self, metric: UnimodularMetric) -> Array:
         """E(g, g) of every block sample, shape (n_samples,)."""
-        return self._energies(metric, self.occupations.samples)
+        return self._energies(metric, interaction_energy(self.occupations))
 
     def energy(self, metric: UnimodularMetric) -> float:
         """Mean E(g, g)."""
-        return float(self._energies(metric, interaction_energy(self.occupations).mean)[0])
+        return float(self._energies(metric, interaction_energy(self.occupations).average)[0])
 
-    def _energies(self, metric: UnimodularMetric, coefficients: Array) -> Array:
-        interaction, rigid = interaction_energy(self.occupations), self.problem.with_mass(metric)
+    def _energies(self, metric: UnimodularMetric, interaction: InteractionEnergy) -> Array:
+        rigid = self.problem.with_mass(metric)
         constant = interaction.background(rigid) + kinetic_energy(self.problem, metric, self.level_mixing)
-        return constant + interaction.energies(rigid, metric, coefficients)
+        return constant + interaction.energies(rigid, metric)
 
 
 @dataclass(frozen=True, eq=False)
@@ -99,11 +99,13 @@ class TwoMetricSurface:
 
     def joint_samples(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> Array:
         """E(g_L, g) of every block sample, shape (n_samples,)."""
-        return self._joint(orbit_metric, metric, self.occupations.samples)
+        return self._joint(orbit_metric, metric, self._interaction)
 
-    def _joint(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, coefficients: Array) -> Array:
+    def _joint(
+        self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, interaction: InteractionEnergy
+    ) -> Array:
         seen = self.problem.with_mass(orbit_metric)
-        return self._constant(orbit_metric) + self._interaction.energies(seen, metric, coefficients)
+        return self._constant(orbit_metric) + interaction.energies(seen, metric)
 
     def _constant(self, orbit_metric: UnimodularMetric) -> float:
         seen = self.problem.with_mass(orbit_metric)
@@ -115,7 +117,7 @@ class TwoMetricSurface:
         for _ in range(_NEWTON_STEPS):
 
             def mean(point: Array, orbit: UnimodularMetric = orbit) -> Array:
-                return self._joint(orbit.displaced(*point), metric, self._interaction.mean)
+                return self._joint(orbit.displaced(*point), metric, self._interaction.average)
 
             step = expansion(mean, 2).downhill_step(_LONGEST_STEP)
             orbit = orbit.displaced(*step)
@@ -129,24 +131,25 @@ class TwoMetricSurface:
 
     def energy(self, metric: UnimodularMetric) -> float:
         """Mean of the least E(g_L, g)."""
-        return float(self._joint(self.orbit_of(metric), metric, self._interaction.mean)[0])
+        return float(self._joint(self.orbit_of(metric), metric, self._interaction.average)[0])
 
     def joint_expansion(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> LocalExpansion:
         """Expansion of every sample in the flat coordinates of the orbit (first two) and of the hole."""
-        return self._joint_expansion(orbit_metric, metric, self.occupations.samples)
+        return self._joint_expansion(orbit_metric, metric, self._interaction)
 
     def _joint_expansion(
-        self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, coefficients: Array
+        self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, interaction: InteractionEnergy
     ) -> LocalExpansion:
         def along_hole(orbit: UnimodularMetric) -> LocalExpansion:
-            local = self._interaction.expansion(self.problem.with_mass(orbit), metric, coefficients)
+            local = interaction.expansion(self.problem.with_mass(orbit), metric)
             return local.above(self._constant(orbit))
 
         def energy_and_gradient(point: Array) -> Array:
             local = along_hole(orbit_metric.displaced(*point))
             return np.concatenate([local.energy, local.gradient.ravel()])
 
-        n, hole = len(coefficients), along_hole(orbit_metric)
+        hole = along_hole(orbit_metric)
+        n = len(hole.energy)
         by_orbit = expansion(energy_and_gradient, 2)
         mixed = by_orbit.gradient[n:].reshape(n, 2, 2)
         hessian = np.block([[by_orbit.hessian[:n], np.swapaxes(mixed, 1, 2)], [mixed, hole.hessian]])
@@ -154,14 +157,14 @@ class TwoMetricSurface:
 
     def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
         """Gradient and Hessian of every sample along the hole, the orbit following."""
-        return self._following(metric, self.occupations.samples)
+        return self._following(metric, self._interaction)
 
     def mean_expansion(self, metric: UnimodularMetric) -> LocalExpansion:
         """That of the mean."""
-        return self._following(metric, self._interaction.mean)
+        return self._following(metric, self._interaction.average)
 
-    def _following(self, metric: UnimodularMetric, coefficients: Array) -> LocalExpansion:
-        joint = self._joint_expansion(self.orbit_of(metric), metric, coefficients)
+    def _following(self, metric: UnimodularMetric, interaction: InteractionEnergy) -> LocalExpansion:
+        joint = self._joint_expansion(self.orbit_of(metric), metric, interaction)
         oo, oh, hh = joint.hessian[:, :2, :2], joint.hessian[:, :2, 2:], joint.hessian[:, 2:, 2:]
         # The samples' own orbits are a small step off the mean's; the gradient follows them.
         shift = np.linalg.solve(oo, np.concatenate([oh, joint.gradient[:, :2, None]], axis=-1))
