@@ -37,7 +37,7 @@ def whole_file(path: Path) -> Iterator[Path]:
             temporary.unlink(missing_ok=True)
 
 
-def write_whole(path: Path, data: bytes) -> None:
+def write_whole(path: Path, data: bytes | memoryview) -> None:
     """Write a file by `whole_file`.
 
     Raises

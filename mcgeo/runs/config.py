@@ -16,11 +16,12 @@ from mcgeo.runs.config_types import Group
 from mcgeo.runs.geometry_config import CellConfig, GeometryConfig, NamedCellConfig
 from mcgeo.runs.lengths import length_remarks, with_lengths_in_nm
 from mcgeo.runs.material_config import MaterialConfig
+from mcgeo.runs.named_files import FILES, NamedFiles
 from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
 from mcgeo.runs.sampling_config import SamplingConfig
+from mcgeo.runs.sizes import size_remarks
 from mcgeo.runs.state_config import SAMPLING_SECTIONS, StateConfig, catalogue_remarks, with_kind
 from mcgeo.runs.sweep_config import SweepConfig
-from mcgeo.runs.table_file import FOLDER
 from mcgeo.runs.tilt_config import tilt_remarks
 from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
 
@@ -86,8 +87,8 @@ def contradictions(given: Mapping[str, Any]) -> list[Remark]:
         With what a material adds, see `with_material`.
     """
     remarks = [
-        *_disk_remarks(given), *catalogue_remarks(given), *_target_remarks(given), *length_remarks(given),
-        *tilt_remarks(given),
+        *_disk_remarks(given), *catalogue_remarks(given), *size_remarks(given), *_target_remarks(given),
+        *length_remarks(given), *tilt_remarks(given),
     ]  # fmt: skip
     if given.get("material") is not None:
         from mcgeo.runs.material_problem import material_remarks
@@ -138,8 +139,8 @@ def _target_remarks(given: Mapping[str, Any]) -> list[Remark]:
     return [Remark(("sampling", "target_quantity"), message)]
 
 
-def load_config(path: str | os.PathLike[str]) -> Config:
-    """Read and validate a YAML file.
+def load_config(path: str | os.PathLike[str], *, allow_outside: bool = False) -> Config:
+    """Read and validate a YAML file; with ``allow_outside`` the files it names may lie outside its folder.
 
     Raises
     ------
@@ -151,22 +152,22 @@ def load_config(path: str | os.PathLike[str]) -> Config:
     if source.data.get("sweep") is not None:
         fault = Fault(source.locate(("sweep",), at_key=True), ("sweep",), "makes many runs of this; use mcgeo sweep")
         raise ConfigError([fault.line(source.path)])
-    config, remarks = validated(source.data, Path(path).parent)
+    config, remarks = validated(source.data, NamedFiles(Path(path).parent, allow_outside))
     faults += [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks]
     if config is None or faults:
         raise ConfigError([fault.line(source.path) for fault in sorted(faults, key=lambda fault: fault.mark)])
     return config
 
 
-def validated(data: Mapping[str, Any], folder: Path = Path()) -> tuple[Config | None, list[Remark]]:
+def validated(data: Mapping[str, Any], files: NamedFiles | None) -> tuple[Config | None, list[Remark]]:
     """The configuration of plain data, or None and what is wrong with them.
 
     Parameters
     ----------
-    folder : Path
-        Where files named in the configuration are looked for.
+    files : NamedFiles or None
+        Where files named in the configuration may lie; None where none may be read.
     """
-    context = {FOLDER: folder}
+    context = {FILES: files}
     try:
         return Config.model_validate(data, context=context), []
     except ValidationError as error:
@@ -191,14 +192,14 @@ def resolved(config: Config) -> dict[str, Any]:
 
 
 def config_from_resolved(data: Mapping[str, Any]) -> Config:
-    """The configuration of which `resolved` gave ``data``.
+    """The configuration of which `resolved` gave ``data``; it names no files that are still to be read.
 
     Raises
     ------
     ConfigError
         With one line ``key.path: what is wrong`` per fault, if the data are not of a valid configuration.
     """
-    config, remarks = validated(data)
+    config, remarks = validated(data, None)
     if config is None:
         raise ConfigError(
             [f"{dotted(remark.path) or 'configuration'}: {remark.message}" for remark in remarks]

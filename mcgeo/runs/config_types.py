@@ -12,6 +12,8 @@ from pydantic import AllowInfNan, BaseModel, BeforeValidator, ConfigDict, Field,
 from pydantic_core import CoreSchema, PydanticCustomError, core_schema
 
 _FRACTION = re.compile(r"([0-9]{1,9})(?:/([0-9]{1,9}))?")
+# Far beyond what can be sampled; bounds the memory that a mistyped number takes.
+MOST_ELECTRONS = 10_000
 # Above this a float no longer holds every whole number.
 _LARGEST_EXACT = 2.0**53
 
@@ -58,7 +60,7 @@ def _no_bool(value: object) -> object:
 Real = Annotated[float, Strict(), AllowInfNan(False)]
 Positive = Annotated[Real, Field(gt=0.0)]
 Count = Annotated[int, WholeNumber(1)]
-Electrons = Annotated[int, WholeNumber(2)]
+Electrons = Annotated[int, WholeNumber(2, MOST_ELECTRONS)]
 NotBool = BeforeValidator(_no_bool)
 
 

@@ -31,8 +31,6 @@ def run_lock(path: Path) -> Iterator[None]:
     lock. On network file systems it reaches other hosts where the system carries `flock` over (NFS on Linux does);
     where there are no locks at all, a note says so and the run goes on.
 
-    Partial files that a killed writer left are removed: nobody else can be writing them.
-
     Raises
     ------
     FileBusy
@@ -49,8 +47,6 @@ def run_lock(path: Path) -> Iterator[None]:
         why = fault.strerror or fault
         raise StorageError(f"{folder}: cannot be written: {why}; choose another folder with --out") from fault
     try:
-        for left_over in folder.glob(f".{path.name}.*.part"):
-            left_over.unlink(missing_ok=True)
         yield
     finally:
         # First the name, then the lock: whoever opens the name from now on makes a new file.

@@ -3,15 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from pathlib import Path
 from typing import Any, Self
 
 from pydantic import Field, ValidationInfo, field_validator, model_validator
 from pydantic_core import PydanticCustomError
 
 from mcgeo.runs.config_types import Positive, Real, rule
-from mcgeo.runs.material_table import MaterialNumbers, PermittivityConfig, named_material, path_inside
-from mcgeo.runs.table_file import FOLDER
+from mcgeo.runs.material_table import MaterialNumbers, PermittivityConfig, named_material
+from mcgeo.runs.named_files import FILES, files_of
 
 Keys = Mapping[str, Any]
 
@@ -35,7 +34,7 @@ class MaterialConfig(MaterialNumbers):
         if not isinstance(keys, Mapping):
             return keys
         try:
-            return {**_looked_up(keys, _folder(info)), **keys}
+            return {**_looked_up(keys, info.context), **keys}
         except PydanticCustomError:
             # `_known` says it again, at its place.
             return keys
@@ -43,8 +42,9 @@ class MaterialConfig(MaterialNumbers):
     @field_validator("file")
     @classmethod
     def _inside(cls, file: str | None, info: ValidationInfo) -> str | None:
-        if file is not None:
-            path_inside(file, _folder(info))
+        # In a result file the name is only where the numbers beside it came from.
+        if file is not None and (info.context or {}).get(FILES, True) is not None:
+            files_of(info.context).path(file)
         return file
 
     @field_validator("name")
@@ -52,7 +52,7 @@ class MaterialConfig(MaterialNumbers):
     def _known(cls, name: str | None, info: ValidationInfo) -> str | None:
         given = {key: value for key, value in info.data.items() if value is not None}
         if {"file", "mass", "permittivity", "permittivity_tensor"} <= set(info.data):
-            _looked_up({**given, "name": name}, _folder(info))
+            _looked_up({**given, "name": name}, info.context)
         return name
 
     @field_validator("permittivity_tensor")
@@ -69,18 +69,14 @@ class MaterialConfig(MaterialNumbers):
         return self
 
 
-def _folder(info: ValidationInfo) -> Path:
-    return Path((info.context or {}).get(FOLDER, "."))
-
-
-def _looked_up(keys: Keys, folder: Path) -> Keys:
+def _looked_up(keys: Keys, context: Keys | None) -> Keys:
     """Numbers of the table for what is not given."""
     name, file = keys.get("name"), keys.get("file")
     has_mass = keys.get("mass") is not None
     has_permittivity = any(keys.get(key) is not None for key in ("permittivity", "permittivity_tensor"))
     if not isinstance(name, str) or not isinstance(file, str | None) or (has_mass and has_permittivity):
         return {}
-    found = named_material(name, file, folder)
+    found = named_material(name, None if file is None else files_of(context).path(file))
     given = [*(("mass", "mass_across") if has_mass else ())]
     given += ("permittivity", "permittivity_tensor") if has_permittivity else ()
     return {key: value for key, value in found.items() if key not in given}

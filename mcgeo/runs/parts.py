@@ -18,7 +18,7 @@ import numpy as np
 from mcgeo.errors import ConfigError, StorageError
 from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.config import Config, resolved
-from mcgeo.runs.experiment import Experiment, experiment_of
+from mcgeo.runs.experiment import experiment_of
 from mcgeo.runs.length import require_same_run
 from mcgeo.runs.lock import run_lock
 from mcgeo.runs.production import Production, Standing
@@ -110,7 +110,10 @@ def sample_part(config: Config, folder: Path, part: int, n_parts: int, *, quiet:
         if earlier is not None and earlier.complete:
             return
         experiment = experiment_of(keys)
-        standing = Standing.of(earlier) if earlier else Standing(_start_of(folder, keys, experiment, groups))
+        if earlier is not None:
+            standing = Standing.of(earlier)
+        else:
+            standing = Standing(_start_of(folder, keys, groups, len(experiment.states)))
         Production(part_keys, path, experiment, standing, quiet=quiet).finish(stop)
 
 
@@ -122,9 +125,9 @@ def _held_part(path: Path, part_keys: Mapping[str, Any]) -> Sampled | None:
     return earlier
 
 
-def _start_of(folder: Path, keys: Mapping[str, Any], experiment: Experiment, groups: range) -> list[ChainState]:
-    chains = held_start(folder / START_FILE, keys, experiment)
-    if len(chains) < len(experiment.states):
+def _start_of(folder: Path, keys: Mapping[str, Any], groups: range, n_components: int) -> list[ChainState]:
+    chains = held_start(folder / START_FILE, keys)
+    if len(chains) < n_components:
         raise StorageError(f"{folder / START_FILE}: holds no equilibrated walkers of this configuration")
     return [replace(chain, walkers=_chosen(chain.walkers, groups)) for chain in chains]
 

@@ -110,7 +110,7 @@ class StretchRangeConfig(Group):
         default=0.0, alias="from", description="First stretch Q [1]."
     )
     to: Annotated[Real, Field(ge=-6.0, le=6.0)] = Field(default=2.0, description="Last stretch Q [1].")
-    points: Annotated[int, WholeNumber(3)] = Field(
+    points: Annotated[int, WholeNumber(3, 10_000)] = Field(
         default=41, description="Number of stretches, both ends counted [1]."
     )
 

@@ -2,25 +2,23 @@
 
 from __future__ import annotations
 
-import json
 from collections.abc import Mapping
+from contextlib import suppress
 from pathlib import Path
 from typing import Any
 
-import h5py
-
 from mcgeo.errors import RunInterrupted, StorageError
-from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.experiment import Experiment
 from mcgeo.runs.progress import say
+from mcgeo.runs.result_layout import read_chains, read_json
 from mcgeo.runs.signals import StopFlag
-from mcgeo.runs.storage import read_chains, write_chains, written_file
+from mcgeo.runs.storage import opened_file, write_chains, write_config, written_file
 from mcgeo.sampling.blocks import Interrupted
 from mcgeo.sampling.chain import ChainState, equilibrated
 
 START_FILE = "equilibrated.h5"
-_FORMAT = "mcgeo-start/1"
+_FORMAT = "mcgeo-start/2"
 _SECTIONS = ("state", "geometry", "cell")
 # What the walkers' way to equilibrium depends on.
 _SAMPLING_KEYS = ("walkers", "equilibration", "step", "seed")
@@ -31,37 +29,25 @@ def _identity(keys: Mapping[str, Any]) -> dict[str, Any]:
     return {**{section: keys.get(section) for section in _SECTIONS}, "sampling": sampling}
 
 
-def _read(path: Path) -> tuple[dict[str, Any], list[ChainState]] | None:
-    """What the file holds; None where there is none, or one that cannot be read: equilibrating again replaces it."""
-    try:
-        with h5py.File(path, "r") as file:
-            if file.attrs.get("format") == _FORMAT:
-                return json.loads(file.attrs["config"]), read_chains(file)
-    except (OSError, KeyError, ValueError, TypeError, RuntimeError, StorageError):
-        pass
+def seed_of_start(path: Path, keys: Mapping[str, Any]) -> int | None:
+    """Seed of the walkers in the file if they are those of the configuration, whose seed is left open."""
+    with suppress(StorageError), opened_file(path, _FORMAT) as file:
+        found = read_json(file)
+        seed = found["sampling"]["seed"]
+        if found == _identity({**keys, "sampling": {**keys["sampling"], "seed": seed}}):
+            return int(seed)
     return None
 
 
-def seed_of_start(path: Path, keys: Mapping[str, Any]) -> int | None:
-    """Seed of the walkers in the file if they are those of the configuration, whose seed is left open."""
-    found = _read(path)
-    if found is None:
-        return None
-    seed = found[0]["sampling"]["seed"]
-    wanted = _identity({**keys, "sampling": {**keys["sampling"], "seed": seed}})
-    return int(seed) if found[0] == wanted else None
+def held_start(path: Path, keys: Mapping[str, Any]) -> list[ChainState]:
+    """Chains of the configuration that the file holds, from the first component on; fewer than all when cut short.
 
-
-def held_start(path: Path, keys: Mapping[str, Any], experiment: Experiment) -> list[ChainState]:
-    """Chains of the configuration that the file holds, from the first component on; fewer than all when cut short."""
-    found = _read(path)
-    if found is None or found[0] != _identity(keys):
-        return []
-    n_groups = -(-keys["sampling"]["walkers"] // LANES)
-    shapes = [(n_groups, state.n_electrons, LANES) for state in experiment.states]
-    chains = found[1][: len(shapes)]
-    fit = all(chain.walkers.a.shape == shape for chain, shape in zip(chains, shapes, strict=False))
-    return chains if fit else []
+    None where there is no file, or one that cannot be read: equilibrating again replaces it.
+    """
+    with suppress(StorageError), opened_file(path, _FORMAT) as file:
+        if read_json(file) == _identity(keys):
+            return read_chains(file, keys, path.stat().st_size)
+    return []
 
 
 def equilibrated_chains(
@@ -74,7 +60,7 @@ def equilibrated_chains(
     RunInterrupted
         When ``stop`` was set meanwhile; finished components are in the file.
     """
-    chains = held_start(path, keys, experiment)
+    chains = held_start(path, keys)
     n_components = len(experiment.states)
     for index in range(len(chains), n_components):
         schedule = schedule_from(keys, experiment.states[index], index)
@@ -87,8 +73,7 @@ def equilibrated_chains(
             kept = f"{len(chains)} of {n_components} components are equilibrated, and kept"
             said = kept if chains else "not one block was whole yet, nothing is kept"
             raise RunInterrupted(f"interrupted: {said}", stop.signal_number) from None
-        with written_file(path) as file:
-            file.attrs["format"] = _FORMAT
-            file.attrs["config"] = json.dumps(_identity(keys))
+        with written_file(path, _FORMAT) as file:
+            write_config(file, _identity(keys))
             write_chains(file, chains)
     return chains

@@ -9,7 +9,17 @@ from typing import Annotated, Any, Literal, get_args
 from pydantic import Field, StrictBool, ValidationInfo, field_validator
 
 from mcgeo.runs.config_faults import Remark
-from mcgeo.runs.config_types import Electrons, Group, ListOf, NotBool, OneOfFractions, Real, WholeNumber, rule
+from mcgeo.runs.config_types import (
+    MOST_ELECTRONS,
+    Electrons,
+    Group,
+    ListOf,
+    NotBool,
+    OneOfFractions,
+    Real,
+    WholeNumber,
+    rule,
+)
 
 _CONJUGATE = "True for the particle-hole conjugate liquid at filling 1 minus that of the state."
 
@@ -58,7 +68,7 @@ class MooreReadConfig(Group):
     filling: Annotated[Fraction, OneOfFractions(("1/2", "1"))] = Field(
         description="Filling of the level: 1/2 for fermions, 1 for bosons [1]."
     )
-    electrons: Annotated[int, WholeNumber(2, multiple_of=2)] = Field(
+    electrons: Annotated[int, WholeNumber(2, MOST_ELECTRONS, multiple_of=2)] = Field(
         description="Number of particles, even [1]."
     )
     sector: Annotated[Literal["all", 1, 2, 3], NotBool] = Field(

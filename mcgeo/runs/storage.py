@@ -1,10 +1,15 @@
-"""The result file: one HDF5 file per sampled liquid, written under another name and renamed when whole."""
+"""The result file: one HDF5 file per sampled liquid, made in memory, sealed, and renamed into place when whole.
+
+While a run is not finished, the file before the last is kept as ``NAME.previous.h5``; a finished run leaves one file.
+"""
 
 from __future__ import annotations
 
+import io
 import json
-from collections.abc import Iterator, Sequence
-from contextlib import contextmanager
+import os
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import Any
 
@@ -12,20 +17,32 @@ import h5py
 
 import mcgeo
 from mcgeo.errors import StorageError
-from mcgeo.runs.atomic import whole_file
+from mcgeo.runs.atomic import write_whole
+from mcgeo.runs.checked_hdf5 import Unexpected
 from mcgeo.runs.experiment import result_class
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.sampled import Blocks, Sampled
+from mcgeo.runs.result_layout import FLAG, FLOAT, INTEGER, WORD, read_config, read_contents
+from mcgeo.runs.sampled import Sampled
+from mcgeo.runs.seal import BLOCK_SIZE, check_seal, seal
+from mcgeo.runs.sizes import LARGEST_FILE
 from mcgeo.sampling.chain import ChainState
-from mcgeo.sampling.walkers import WalkerArrays
 
-FORMAT = "mcgeo-result/1"
+FORMAT = "mcgeo-result/2"
 RESULT_SUFFIX = ".h5"
+
+# What the library raises on bytes that make no sense to it.
+_HDF5_FAULTS = (OSError, KeyError, ValueError, TypeError, RuntimeError, OverflowError, NotImplementedError)
+
 
 def _versions() -> dict[str, str]:
     from importlib.metadata import version
 
     return {name: version(name) for name in ("numpy", "numba", "scipy", "h5py")}
+
+
+def previous_file(path: Path) -> Path:
+    """Where the file before the last is kept while a run is not finished."""
+    return path.with_name(f"{path.stem}.previous{path.suffix}")
 
 
 def write_result(path: Path, result: Sampled) -> None:
@@ -36,50 +53,69 @@ def write_result(path: Path, result: Sampled) -> None:
     StorageError
         If it cannot be written; an older file under the same name is then untouched.
     """
-    with written_file(path) as file:
+    previous = previous_file(path)
+    if not result.complete:
+        _keep(path, previous)
+    with written_file(path, FORMAT) as file:
         _fill(file, result)
+    if result.complete:
+        with suppress(OSError):
+            previous.unlink(missing_ok=True)
 
 
 @contextmanager
-def written_file(path: Path) -> Iterator[Any]:
-    """An HDF5 file to be filled, there whole or not at all.
+def written_file(path: Path, file_format: str) -> Iterator[Any]:
+    """An HDF5 file to be filled, made in memory, sealed, and there whole or not at all.
 
     Raises
     ------
     StorageError
         If it cannot be written; an older file under the same name is then untouched.
     """
+    buffer = io.BytesIO()
+    with h5py.File(buffer, "w", userblock_size=BLOCK_SIZE) as file:
+        yield file
+    contents = buffer.getbuffer()
+    seal(contents, file_format)
     try:
-        with whole_file(path) as temporary, h5py.File(temporary, "w") as file:
-            yield file
+        write_whole(path, contents)
     except OSError as fault:
-        raise StorageError(f"{path}: cannot be written: {fault}") from fault
+        kept = "; what it held before is kept, and the same command goes on from there" if path.is_file() else ""
+        raise StorageError(f"{path}: cannot be written: {fault.strerror or fault}{kept}") from fault
+
+
+def _keep(path: Path, previous: Path) -> None:
+    """A second name for the present file, where the file system has second names; no copy is made."""
+    with suppress(OSError):
+        if path.is_file():
+            previous.unlink(missing_ok=True)
+            os.link(path, previous)
 
 
 def _fill(file: Any, result: Sampled) -> None:
     file.attrs["format"] = FORMAT
     file.attrs["mcgeo_version"] = mcgeo.__version__
     file.attrs["libraries"] = json.dumps(_versions())
-    file.attrs["config"] = json.dumps(result.resolved)
-    file.attrs["seconds"] = result.seconds
-    file.attrs["complete"] = result.complete
+    file.attrs.create("seconds", result.seconds, dtype=FLOAT)
+    file.attrs.create("complete", result.complete, dtype=FLAG)
+    write_config(file, result.resolved)
     axes = file.create_group("axes")
     for name, (values, unit) in result.axes.items():
         axes[name] = values
         axes[name].attrs["units"] = unit
         axes[name].make_scale(name)
-    blocks = result.blocks
-    arrays: dict[str, Any] = {f"means/{name}": values for name, values in blocks.means.items()}
-    arrays |= {f"counts/{name}": values for name, values in blocks.counts.items()}
-    for name, values in arrays.items():
-        _labelled(file.create_dataset(f"blocks/{name}", data=values), ("block", "walker"))
+    blocks = file.create_group("blocks")
+    for kind, arrays, dtype in (("means", result.blocks.means, FLOAT), ("counts", result.blocks.counts, INTEGER)):
+        for name, values in arrays.items():
+            _labelled(blocks.create_dataset(f"{kind}/{name}", data=values, dtype=dtype), ("block", "walker"))
     for name, (dataset, axis) in result.scaled_axes.items():
-        file[f"blocks/{dataset}"].dims[axis].attach_scale(axes[name])
-    trace = file.create_dataset("blocks/trace", data=blocks.trace)
+        blocks[dataset].dims[axis].attach_scale(axes[name])
+    trace = blocks.create_dataset("trace", data=result.blocks.trace, dtype=FLOAT)
     trace.attrs["units"] = "e^2/(4 pi eps l_B)"
     _labelled(trace, ("component", "block", "walker", "measurement"))
-    _labelled(file.create_dataset("blocks/accepted", data=blocks.accepted), ("component", "block", "walker"))
-    _labelled(file.create_dataset("blocks/drift", data=blocks.drift), ("component", "block"))
+    accepted = blocks.create_dataset("accepted", data=result.blocks.accepted, dtype=FLOAT)
+    _labelled(accepted, ("component", "block", "walker"))
+    _labelled(blocks.create_dataset("drift", data=result.blocks.drift, dtype=FLOAT), ("component", "block"))
     write_chains(file, result.chains)
 
 
@@ -87,9 +123,17 @@ def write_chains(file: Any, chains: Sequence[ChainState]) -> None:
     """All that is needed to continue."""
     for index, chain in enumerate(chains):
         place = file.create_group(f"checkpoint/{index}")
-        place["a"], place["b"], place["words"] = chain.walkers.a, chain.walkers.b, chain.walkers.words
-        place.attrs["step"] = chain.step
-        place.attrs["blocks_done"] = chain.blocks_done
+        walkers = chain.walkers
+        for name, values, dtype in (("a", walkers.a, FLOAT), ("b", walkers.b, FLOAT), ("words", walkers.words, WORD)):
+            place.create_dataset(name, data=values, dtype=dtype)
+        place.attrs.create("step", chain.step, dtype=FLOAT)
+        place.attrs.create("blocks_done", chain.blocks_done, dtype=INTEGER)
+
+
+def write_config(file: Any, keys: Mapping[str, Any]) -> None:
+    """Keys of a configuration as one JSON text of fixed length."""
+    config = json.dumps(keys, allow_nan=False).encode()
+    file.create_dataset("config", data=config, dtype=h5py.string_dtype("utf-8", len(config)))
 
 
 def _labelled(dataset: Any, labels: tuple[str, ...]) -> None:
@@ -103,42 +147,54 @@ def read_result(path: Path) -> Sampled:
     Raises
     ------
     StorageError
-        If the file is missing, cut off, of another kind or of another version.
+        If the file is missing, damaged, of another kind or of another format, in one sentence.
+    """
+    try:
+        with opened_file(path, FORMAT) as file:
+            keys = read_config(file)
+            return result_class(keys)(keys, *read_contents(file, keys, path.stat().st_size))
+    except StorageError as fault:
+        raise StorageError(f"{fault}{_advice(path)}") from fault
+
+
+@contextmanager
+def opened_file(path: Path, file_format: str) -> Iterator[h5py.File]:
+    """A file that `written_file` wrote, to be read within the context by `mcgeo.runs.checked_hdf5`.
+
+    Nothing of it is believed: see `mcgeo.runs.seal` for damage, `mcgeo.runs.checked_hdf5` for what was made to harm.
+
+    Raises
+    ------
+    StorageError
+        If the file is missing, damaged, of another kind or of another format, in one sentence.
     """
     if not path.is_file():
-        raise StorageError(f"{path}: no such file")
+        raise StorageError(f"{path}: {'not a file' if path.exists() else 'no such file'}")
     try:
-        with h5py.File(path, "r") as file:
-            found = file.attrs.get("format")
-            if found != FORMAT:
-                raise StorageError(f"{path}: not a result file of this version: format {found!r}, needed {FORMAT!r}")
-            return _contents(file)
-    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as fault:
-        raise StorageError(f"{path}: damaged or not a result file: {fault}") from fault
+        with open(path, "rb") as raw:
+            check_seal(raw, file_format, str(path), LARGEST_FILE)
+            with h5py.File(raw, "r") as file:
+                yield file
+    except Unexpected as fault:
+        raise StorageError(f"{path}: not a result file that mcgeo wrote: {fault}") from None
+    except PermissionError as fault:
+        raise StorageError(f"{path}: cannot be read: {fault.strerror}") from None
+    except _HDF5_FAULTS as fault:
+        raise StorageError(f"{path}: not a result file that mcgeo wrote: it cannot be read as HDF5") from fault
+    except MemoryError:
+        raise StorageError(f"{path}: does not fit into the memory of this machine") from None
 
 
-def _contents(file: Any) -> Sampled:
-    stored = file["blocks"]
-    blocks = Blocks(
-        {name: stored["means"][name][()] for name in stored["means"]},
-        {name: stored["counts"][name][()] for name in stored["counts"]},
-        stored["trace"][()],
-        stored["accepted"][()],
-        stored["drift"][()],
-    )
-    resolved = json.loads(file.attrs["config"])
-    seconds, complete = float(file.attrs["seconds"]), bool(file.attrs["complete"])
-    return result_class(resolved)(resolved, blocks, read_chains(file), seconds, complete)
-
-
-def read_chains(file: Any) -> list[ChainState]:
-    """What `write_chains` has written."""
-    chains = []
-    for index in range(len(file["checkpoint"])):
-        place = file["checkpoint"][str(index)]
-        arrays = WalkerArrays(place["a"][()], place["b"][()], place["words"][()])
-        chains.append(ChainState(arrays, float(place.attrs["step"]), int(place.attrs["blocks_done"])))
-    return chains
+def _advice(path: Path) -> str:
+    """What to do about a file that cannot be read, where an earlier one of the same run is left."""
+    previous = previous_file(path)
+    if not previous.is_file():
+        return ""
+    with suppress(StorageError):
+        earlier = read_result(previous)
+        found = f"{previous.name} beside it is whole, with {earlier.n_blocks} of {earlier.schedule.n_blocks} blocks"
+        return f"; {found}: rename it to {path.name} and the same command goes on"
+    return ""
 
 
 def as_liquid(result: Sampled, path: Path) -> Liquid:

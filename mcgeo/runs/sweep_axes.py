@@ -8,14 +8,13 @@ import math
 import re
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from pathlib import Path as FilePath
 from typing import Any
 
 from pydantic_core import PydanticCustomError
 
 from mcgeo.runs.config import UNRELATED_TO_RESULTS
 from mcgeo.runs.config_faults import Remark
-from mcgeo.runs.material_table import path_inside
+from mcgeo.runs.named_files import NamedFiles, NotPlainError, read_plain
 from mcgeo.runs.sweep_config import (
     AxisConfig,
     FileAxisConfig,
@@ -112,13 +111,13 @@ def range_values(keys: RangeAxisConfig) -> tuple[float, ...]:
     return (first, *(float(f"{value:.{_DIGITS}g}") for value in inner), last)
 
 
-def axes_of(sweep: SweepConfig, folder: FilePath) -> tuple[list[Axis], list[Remark]]:
+def axes_of(sweep: SweepConfig, files: NamedFiles) -> tuple[list[Axis], list[Remark]]:
     """The axes, and what is wrong with them; paths of remarks are those of the file."""
     axes: list[Axis] = []
     remarks: list[Remark] = []
     for position, keys in enumerate(sweep.axes):
         try:
-            axes.append(_axis(keys, ("sweep", "axes", position), folder))
+            axes.append(_axis(keys, ("sweep", "axes", position), files))
         except _AxisFault as fault:
             remarks.append(fault.remark)
     return axes, [*remarks, *_clashes(axes)]
@@ -132,9 +131,9 @@ class _AxisFault(Exception):
         self.remark = Remark(path, message)
 
 
-def _axis(keys: AxisConfig, place: Path, folder: FilePath) -> Axis:
+def _axis(keys: AxisConfig, place: Path, files: NamedFiles) -> Axis:
     if isinstance(keys, FileAxisConfig):
-        return Axis(tuple(_from_file(keys, place, folder)), "file")
+        return Axis(tuple(_from_file(keys, place, files)), "file")
     if not isinstance(keys, TogetherAxisConfig):
         return Axis((_single(keys, place),), keys.spacing if isinstance(keys, RangeAxisConfig) else "list")
     found = [_single(single, (*place, "together", i)) for i, single in enumerate(keys.together)]
@@ -170,8 +169,8 @@ def _swept_key(name: str, values: tuple[Any, ...], place: Path, key_place: Path)
     return SweptKey(name, path, values, place)
 
 
-def _from_file(keys: FileAxisConfig, place: Path, folder: FilePath) -> Iterator[SweptKey]:
-    headings, rows = _table(keys.file, (*place, "file"), folder)
+def _from_file(keys: FileAxisConfig, place: Path, files: NamedFiles) -> Iterator[SweptKey]:
+    headings, rows = _table(keys.file, (*place, "file"), files)
     for name, heading in keys.columns.items():
         if headings.count(heading) != 1:
             raise _AxisFault(
@@ -183,20 +182,16 @@ def _from_file(keys: FileAxisConfig, place: Path, folder: FilePath) -> Iterator[
         yield _swept_key(name, tuple(_value(row[column]) for row in rows), place, (*place, "columns", name))
 
 
-def _table(file: str, place: Path, folder: FilePath) -> tuple[list[str], list[list[str]]]:
+def _table(file: str, place: Path, files: NamedFiles) -> tuple[list[str], list[list[str]]]:
     """Headings and rows of a file of comma-separated values; empty lines and those that begin with # are no rows."""
     try:
-        path = path_inside(file, folder)
-        raw = path.read_bytes()
-        if len(raw) > _MAX_BYTES:
-            raise _AxisFault(place, f"{file}: is larger than {_MAX_BYTES // 1_000_000} MB")
-        text = raw.decode("utf-8-sig")
+        text = read_plain(files.path(file), _MAX_BYTES, "table").decode("utf-8-sig")
         lines = [line for line in text.splitlines() if line.strip() and not line.startswith("#")]
         table = [[cell.strip() for cell in row] for row in csv.reader(io.StringIO("\n".join(lines)), strict=True)]
     except PydanticCustomError as error:
         raise _AxisFault(place, error.message()) from None
-    except OSError as error:
-        raise _AxisFault(place, f"{file}: cannot be read: {error.strerror}") from None
+    except NotPlainError as error:
+        raise _AxisFault(place, f"{file}: {error}") from None
     except (UnicodeDecodeError, csv.Error) as error:
         raise _AxisFault(place, f"{file}: is no UTF-8 text of comma-separated values: {error}") from None
     if len(table) < 2:

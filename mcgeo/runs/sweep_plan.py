@@ -20,6 +20,7 @@ from pydantic import ValidationError
 from mcgeo.errors import ConfigError
 from mcgeo.runs.config import Config, resolved, state_identity, validated
 from mcgeo.runs.config_faults import Remark, explain
+from mcgeo.runs.named_files import NamedFiles
 from mcgeo.runs.sweep_axes import Axis, NoSuchPlaceError, axes_of, data_at, indices_at, named_values
 from mcgeo.runs.sweep_config import MOST_POINTS, SweepConfig
 from mcgeo.runs.sweep_exclusions import exclusions_of
@@ -71,6 +72,7 @@ class SweepPlan:
     axes: list[Axis]
     points: list[Point]
     _base: Mapping[str, Any] = field(repr=False)
+    _files: NamedFiles = field(repr=False)
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -92,7 +94,7 @@ class SweepPlan:
     def resolved(self, point: Point) -> dict[str, Any]:
         """The whole configuration of a point, every default filled in."""
         data = data_at(self._base, self.axes, indices_at(self.shape, point.position))
-        config, _ = validated(data, Path(self.file).parent)
+        config, _ = validated(data, self._files)
         assert config is not None
         return resolved(config)
 
@@ -108,8 +110,8 @@ def has_sweep(path: str | os.PathLike[str]) -> bool:
     return parse_yaml(path)[0].data.get("sweep") is not None
 
 
-def load_sweep(path: str | os.PathLike[str]) -> SweepPlan:
-    """Read a YAML file with ``sweep`` and validate every point.
+def load_sweep(path: str | os.PathLike[str], *, allow_outside: bool = False) -> SweepPlan:
+    """Read a YAML file with ``sweep`` and validate every point; ``allow_outside`` as that of `load_config`.
 
     Raises
     ------
@@ -118,7 +120,7 @@ def load_sweep(path: str | os.PathLike[str]) -> SweepPlan:
         values at which they occur, and the number of the others.
     """
     source, faults = parse_yaml(path)
-    folder = Path(path).parent
+    files = NamedFiles(Path(path).parent, allow_outside)
     keys = source.data.get("sweep")
     if keys is None:
         fault = Fault(source.locate(()), (), "has no key sweep; mcgeo sample and scan do a single run")
@@ -126,7 +128,7 @@ def load_sweep(path: str | os.PathLike[str]) -> SweepPlan:
     settings, remarks = _settings(keys)
     axes: list[Axis] = []
     if settings is not None:
-        axes, remarks = axes_of(settings, folder)
+        axes, remarks = axes_of(settings, files)
         n = math.prod(len(axis) for axis in axes)
         if n > MOST_POINTS:
             remarks.append(Remark(("sweep", "axes"), f"give {n} points; at most {MOST_POINTS} work", at_key=True))
@@ -135,13 +137,13 @@ def load_sweep(path: str | os.PathLike[str]) -> SweepPlan:
         raise ConfigError(_lines(source, faults))
     base = {key: value for key, value in source.data.items() if key != "sweep"}
     is_excluded, remarks = exclusions_of(settings.exclude, axes)
-    points, point_faults = _expanded(source, base, axes, is_excluded)
+    points, point_faults = _expanded(source, base, axes, is_excluded, files)
     faults = [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks] + point_faults
     if not faults and not points:
         faults = [Fault(source.locate(("sweep", "exclude"), at_key=True), ("sweep", "exclude"), "leaves no point")]
     if faults:
         raise ConfigError(_lines(source, faults))
-    return SweepPlan(source.path, settings, axes, points, base)
+    return SweepPlan(source.path, settings, axes, points, base, files)
 
 
 def _lines(source: YamlSource, faults: Sequence[Fault]) -> list[str]:
@@ -159,9 +161,12 @@ def _settings(keys: Any) -> tuple[SweepConfig | None, list[Remark]]:
 
 
 def _expanded(
-    source: YamlSource, base: Mapping[str, Any], axes: Sequence[Axis], is_excluded: Callable[[Sequence[int]], bool]
+    source: YamlSource,
+    base: Mapping[str, Any],
+    axes: Sequence[Axis],
+    is_excluded: Callable[[Sequence[int]], bool],
+    files: NamedFiles,
 ) -> tuple[list[Point], list[Fault]]:
-    folder = Path(source.path).parent
     points: list[Point] = []
     faults = PointFaults(source, axes)
     for position, indices in enumerate(itertools.product(*(range(len(axis)) for axis in axes))):
@@ -169,7 +174,7 @@ def _expanded(
             continue
         faults.n_points += 1
         try:
-            config, remarks = validated(data_at(base, axes, indices), folder)
+            config, remarks = validated(data_at(base, axes, indices), files)
         except NoSuchPlaceError as fault:
             faults.add(indices, Remark(fault.key.path, "there is no such place in the configuration", at_key=True))
             continue

@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import os
 from collections.abc import Mapping
-from pathlib import Path
 from typing import Any, NamedTuple
 
 from pydantic import GetCoreSchemaHandler, ValidationInfo
@@ -12,11 +10,9 @@ from pydantic_core import CoreSchema, core_schema
 
 from mcgeo.problem.table_text import TableError, parse_table
 from mcgeo.runs.config_types import rule
+from mcgeo.runs.named_files import NamedFiles, NotPlainError, files_of, read_plain
 
 MAX_BYTES = 4_000_000
-
-# What the validation is told of the place of the configuration, under this key of its context.
-FOLDER = "folder"
 
 
 class TableFile(NamedTuple):
@@ -50,7 +46,7 @@ def _read(value: object, info: ValidationInfo) -> TableFile:
     elif isinstance(value, Mapping) and all(isinstance(value.get(key), str) for key in TableFile._fields):
         table = TableFile(value["name"], value["content"])
     elif isinstance(value, str):
-        table = TableFile(value, _content(value, Path((info.context or {}).get(FOLDER, "."))))
+        table = TableFile(value, _content(value, files_of(info.context)))
     else:
         raise ValueError
     try:
@@ -60,22 +56,12 @@ def _read(value: object, info: ValidationInfo) -> TableFile:
     return table
 
 
-def _content(name: str, folder: Path) -> str:
-    if not name or "\\" in name or os.path.isabs(name) or ".." in Path(name).parts:
-        raise rule(f"must be a path inside the folder of the configuration, not {name!r}")
-    path = folder / name
-    if not path.resolve().is_relative_to(folder.resolve()):
-        raise rule(f"must stay inside the folder of the configuration, but {name!r} links out of it")
+def _content(name: str, files: NamedFiles) -> str:
+    path = files.path(name)
     try:
-        if not path.is_file():
-            raise rule(f"there is no file {name!r} in the folder of the configuration")
-        raw = path.read_bytes()
-    except OSError as error:
-        raise rule(f"{name}: cannot be read: {error.strerror}") from None
-    if len(raw) > MAX_BYTES:
-        raise rule(f"{name}: is larger than {MAX_BYTES // 1_000_000} MB, which no table needs to be")
-    try:
-        return raw.decode("utf-8")
+        return read_plain(path, MAX_BYTES, "table").decode("utf-8")
+    except NotPlainError as error:
+        raise rule(f"{name}: {error}") from None
     except UnicodeDecodeError:
         raise rule(f"{name}: is not UTF-8 text") from None
 

@@ -14,6 +14,7 @@ from typing import Any, NamedTuple
 import yaml
 
 from mcgeo.errors import ConfigError
+from mcgeo.runs.named_files import NotPlainError, read_plain
 from mcgeo.runs.yaml_nodes import Mark, StrictLoader, mark_of, scalar_value
 
 Path = tuple[str | int, ...]
@@ -112,17 +113,9 @@ class _Builder:
 
 def _read_text(path: str) -> str:
     try:
-        with open(path, "rb") as stream:
-            raw = stream.read(MAX_BYTES + 1)
-    except FileNotFoundError:
-        raise ConfigError([f"{path}: there is no such file"]) from None
-    except (OSError, ValueError) as error:
-        reason = (error.strerror if isinstance(error, OSError) else None) or str(error)
-        raise ConfigError([f"{path}: the file cannot be read: {reason}"]) from None
-    if len(raw) > MAX_BYTES:
-        raise ConfigError(
-            [f"{path}: the file is larger than {MAX_BYTES // 1_000_000} MB, which no configuration is"]
-        )
+        raw = read_plain(path, MAX_BYTES, "configuration")
+    except NotPlainError as error:
+        raise ConfigError([f"{path}: {error}"]) from None
     raw = raw.removeprefix(_BYTE_ORDER_MARK)
     try:
         return raw.decode("utf-8")

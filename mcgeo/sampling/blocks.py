@@ -47,6 +47,10 @@ class BlockRecord:
 class Measurement(Protocol):
     """The plan of what is measured on one state."""
 
+    @property
+    def shapes(self) -> Mapping[str, tuple[int, ...]]:
+        """``means/NAME`` or ``counts/NAME`` -> shape per block and walker, of all that may be measured."""
+
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
     ) -> BlockRecord:

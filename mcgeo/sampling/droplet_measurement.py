@@ -59,6 +59,17 @@ class DropletMeasurement:
         """Number of bins of pair distances."""
         return int((2.0 * self.state.background.radius + _MARGIN) / PAIR_BIN_WIDTH)
 
+    @property
+    def shapes(self) -> dict[str, tuple[int, ...]]:
+        """See `mcgeo.sampling.blocks.Measurement`."""
+        energies = (ELECTRON_ELECTRON, ELECTRON_ELECTRON_LAB, ELECTRON_BACKGROUND)
+        return {
+            **{f"means/{name}": () for name in energies},
+            f"means/{SECOND_MOMENTS}": (3,),
+            f"counts/{RADIAL}": (self.n_bins,),
+            f"counts/{PAIRS}": (self.n_pair_bins,),
+        }
+
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
     ) -> BlockRecord:

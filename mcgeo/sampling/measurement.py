@@ -40,6 +40,15 @@ class TorusMeasurement:
     n_bins: int
     stein: SteinTables
 
+    @property
+    def shapes(self) -> dict[str, tuple[int, ...]]:
+        """See `mcgeo.sampling.blocks.Measurement`."""
+        return {
+            f"means/{STRUCTURE}": (len(self.waves.integers),),
+            f"means/{CONTROLS}": (self.stein.n_controls,),
+            f"counts/{PAIRS}": (self.n_bins,),
+        }
+
     def block(
         self, group: WalkerGroup, step: float, n_measurements: int, sweeps_between: int, stop: threading.Event
     ) -> BlockRecord:

@@ -191,7 +191,7 @@ def faults(path: str) -> list[str]:
         ),
         (
             LAUGHLIN + "scan: {stretch: {points: §2}}\n",
-            "scan.stretch.points: must be a whole number of at least 3",
+            "scan.stretch.points: must be a whole number from 3 to 10000",
         ),
         # The file.
         (
@@ -265,7 +265,7 @@ def test_long_values_are_cut_in_messages(write):
         (
             {"state": {"kind": "laughlin", "exponent": 3, "electrons": 1}, 5: 1},
             [
-                "state.electrons: must be a whole number of at least 2, not 1",
+                "state.electrons: must be a whole number from 2 to 10000, not 1",
                 "5: unknown key; allowed are state, ",
             ],
         ),

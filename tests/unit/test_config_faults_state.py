@@ -31,27 +31,27 @@ def faults(path: str) -> list[str]:
         ("state: {kind: §[a]}\n", "state.kind: must be one of"),
         (
             "§state: {kind: laughlin, exponent: 3}\n",
-            "state.electrons: missing; must be a whole number of at least 2",
+            "state.electrons: missing; must be a whole number from 2 to 10000",
         ),
         (
             "state: {kind: laughlin, exponent: 3, electrons: §1}\n",
-            "state.electrons: must be a whole number of at least 2, not 1",
+            "state.electrons: must be a whole number from 2 to 10000, not 1",
         ),
         (
             "state: {kind: laughlin, exponent: 3, electrons: §true}\n",
-            "state.electrons: must be a whole number of at least 2, not true",
+            "state.electrons: must be a whole number from 2 to 10000, not true",
         ),
         (
             "state: {kind: laughlin, exponent: 3, electrons: §'10'}\n",
-            "state.electrons: must be a whole number of at least 2, not '10' (remove the quotes)",
+            "state.electrons: must be a whole number from 2 to 10000, not '10' (remove the quotes)",
         ),
         (
             "state: {kind: laughlin, exponent: 3, electrons: §10.5}\n",
-            "state.electrons: must be a whole number of at least 2, not 10.5",
+            "state.electrons: must be a whole number from 2 to 10000, not 10.5",
         ),
         (
             "state: {kind: laughlin, exponent: 3, electrons: §1e300}\n",
-            "state.electrons: must be a whole number of at least 2, not 1e+300",
+            "state.electrons: must be a whole number from 2 to 10000, not 1e+300",
         ),
         (
             "state: {kind: laughlin, exponent: §13, electrons: 10}\n",
@@ -103,7 +103,7 @@ def faults(path: str) -> list[str]:
         ),
         (
             "state: {kind: moore_read, filling: 1/2, electrons: §7}\n",
-            "state.electrons: must be an even number of at least 2, not 7",
+            "state.electrons: must be an even number from 2 to 10000, not 7",
         ),
         (
             "state: {kind: moore_read, filling: §0.5, electrons: 10}\n",

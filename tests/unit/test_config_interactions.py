@@ -129,7 +129,7 @@ FAULTS = [
     ("{kind: sum, terms: [{weight: 1, interaction: {kind: yukawa, screening: §x}}]}",
      "terms[0].interaction.screening: must be a finite number of at least 0, not 'x'"),
     ("{kind: table, file: §3}", "file: must be a text, not 3"),
-    ("{kind: table, file: §no.csv}", "file: there is no file 'no.csv' in the folder of the configuration"),
+    ("{kind: table, file: §no.csv}", "file: no.csv: there is no such file"),
     ("{kind: table, file: §../run.yaml}", "file: must be a path inside the folder of the configuration, not "),
     ("{kind: table, file: §/etc/hostname}", "file: must be a path inside the folder of the configuration, not "),
     ("{kind: sum, terms: [{weight: 1, interaction: {kind: table, file: §run.yaml}}]}",

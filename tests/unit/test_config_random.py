@@ -45,7 +45,7 @@ def samplings(draw):
         st.fixed_dictionaries(
             {"sweeps": st.integers(2, 10**6)},
             optional={
-                "walkers": st.integers(1, 100),
+                "walkers": st.integers(1, 60),
                 "equilibration": st.integers(0, 100),
                 "step": st.none() | positive,
                 "seed": st.none() | st.integers(0, 2**128),
@@ -55,7 +55,7 @@ def samplings(draw):
             },
         )
     )
-    sampling["blocks"] = draw(st.integers(2, sampling["sweeps"]))
+    sampling["blocks"] = draw(st.integers(2, min(100, sampling["sweeps"])))
     sampling["measure_every"] = draw(st.none() | st.integers(1, sampling["sweeps"] // sampling["blocks"]))
     if draw(st.booleans()):
         sampling["target_error"] = draw(positive)
