@@ -71,11 +71,13 @@ def build_parser() -> argparse.ArgumentParser:
         help="result file, a folder that holds one, or a configuration of a catalogue liquid",
     )  # fmt: skip
     plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file instead")
+    _add_allow_outside(plot)
     plot.add_argument("--out", type=Path, metavar="DIR", help="where figures go (default: beside the file)")
     plot.add_argument("--format", action="append", choices=["pdf", "svg", "png"], help="repeatable (default: pdf, png)")
 
     check = _command(commands, "check", "validate a configuration, show the plan and its cost", "mcgeo check well.yaml")
     check.add_argument("config", type=Path, metavar="CONFIG")
+    _add_allow_outside(check)
     check.add_argument("--json", action="store_true", help="one JSON object on standard output")
 
     liquids = _command(commands, "liquids", "the catalogue: liquids that need no sampling", "mcgeo liquids")
@@ -90,6 +92,7 @@ def build_parser() -> argparse.ArgumentParser:
 def _add_sweep(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
     sweep = _command(commands, "sweep", "every point of a grid of configurations", "mcgeo sweep wells.yaml --workers 4")
     sweep.add_argument("config", type=Path, metavar="CONFIG", help="YAML configuration with the key sweep")
+    _add_allow_outside(sweep)
     sweep.add_argument("--out", type=Path, metavar="DIR", help="folder of the sweep (default: NAME_sweep here)")
     sweep.add_argument("--workers", type=_positive, metavar="N", help="processes (default: all cores allowed)")
     sweep.add_argument(
@@ -121,11 +124,18 @@ def _positive(text: str) -> int:
 
 def _add_run_options(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("config", type=Path, metavar="CONFIG", help="YAML configuration, or a result file")
+    _add_allow_outside(parser)
     parser.add_argument("--out", type=Path, metavar="DIR", help="folder of the results (default: NAME_results here)")
     parser.add_argument("--threads", type=_positive, metavar="N", help="threads (default: all cores allowed)")
     parser.add_argument("--overwrite", action="store_true", help="replace a liquid of another configuration")
     parser.add_argument("--json", action="store_true", help="one JSON object on standard output")
     parser.add_argument("-q", "--quiet", action="store_true", help="no progress on standard error")
+
+
+def _add_allow_outside(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument(
+        "--allow-outside", action="store_true", help="files named in the configuration may lie outside its folder"
+    )
 
 
 def main(argv: Sequence[str] | None = None) -> int:

@@ -36,9 +36,10 @@ def _rows(summary: dict[str, Any]) -> str:
 def run_check(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo check``: the plan of a valid configuration and what it will cost."""
     if has_sweep(arguments.config):
-        sweep = sweep_summary(load_sweep(arguments.config), cores=available_threads())
+        plan_of_sweep = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
+        sweep = sweep_summary(plan_of_sweep, cores=available_threads())
         return as_json(sweep) if arguments.json else sweep_plan_text(sweep), 0
-    plan = plan_of(resolved(load_config(arguments.config)))
+    plan = plan_of(resolved(load_config(arguments.config, allow_outside=arguments.allow_outside)))
     return as_json(plan) if arguments.json else _rows(plan), 0
 
 

@@ -53,9 +53,10 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo plot``."""
     path = result_file(arguments.file)
-    result, keys, folder = _subject(path)
+    result, keys, folder = _subject(path, arguments.allow_outside)
     if arguments.problem is not None:
-        keys.update(load_config(arguments.problem).model_dump(mode="json", by_alias=True, include={"problem", "scan"}))
+        other = load_config(arguments.problem, allow_outside=arguments.allow_outside)
+        keys.update(other.model_dump(mode="json", by_alias=True, include={"problem", "scan"}))
     if isinstance(result, CatalogueLiquid):
         axes, table = _of_catalogue(result, arguments.what, keys)
     elif arguments.what in COMMON:
@@ -82,7 +83,7 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     return "\n".join(str(file) for file in written), 0
 
 
-def _subject(path: Path) -> tuple[Sampled | CatalogueLiquid, dict[str, Any], Path]:
+def _subject(path: Path, allow_outside: bool) -> tuple[Sampled | CatalogueLiquid, dict[str, Any], Path]:
     """What is drawn, the configuration it has, and where figures go.
 
     Raises
@@ -93,7 +94,7 @@ def _subject(path: Path) -> tuple[Sampled | CatalogueLiquid, dict[str, Any], Pat
     if path.suffix not in YAML_SUFFIXES:
         result = read_result(path)
         return result, dict(result.resolved), path.parent
-    keys, folder = resolved(load_config(path)), default_folder(path)
+    keys, folder = resolved(load_config(path, allow_outside=allow_outside)), default_folder(path)
     if keys["state"]["kind"] != KIND:
         raise StorageError(f"{path}: its liquid has to be sampled (mcgeo sample {path}); then plot {folder}")
     return catalogue_liquid(keys["state"]), keys, folder

@@ -43,8 +43,13 @@ def result_file(path: Path) -> Path:
     return path / LIQUID_FILE if path.is_dir() else path
 
 
-def read_config(path: Path, threads: int | None) -> Config:
-    config = config_from_resolved(read_result(path).resolved) if path.suffix == RESULT_SUFFIX else load_config(path)
+def read_config(path: Path, arguments: argparse.Namespace) -> Config:
+    """Of a YAML file or a result file, with the options that a command has for it."""
+    if path.suffix == RESULT_SUFFIX:
+        config = config_from_resolved(read_result(path).resolved)
+    else:
+        config = load_config(path, allow_outside=arguments.allow_outside)
+    threads = arguments.threads
     if threads is None:
         return config
     return config.model_copy(update={"sampling": config.sampling.model_copy(update={"threads": threads})})
@@ -53,7 +58,7 @@ def read_config(path: Path, threads: int | None) -> Config:
 def run_sample(arguments: argparse.Namespace) -> Answer:
     """``mcgeo sample``."""
     arguments.config = result_file(arguments.config)
-    config = read_config(arguments.config, arguments.threads)
+    config = read_config(arguments.config, arguments)
     folder = arguments.out or default_folder(arguments.config)
     if arguments.extend is not None and arguments.overwrite:
         raise ConfigError(["--extend keeps what --overwrite throws away; give one of them"])

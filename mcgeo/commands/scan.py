@@ -34,7 +34,7 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 def run_scan(arguments: argparse.Namespace) -> Answer:
     """``mcgeo scan``: samples first when a liquid is missing."""
     arguments.config = result_file(arguments.config)
-    config = read_config(arguments.config, arguments.threads)
+    config = read_config(arguments.config, arguments)
     folder = arguments.out or default_folder(arguments.config)
     keys = config.model_dump(mode="json", by_alias=True)
     require_reach(problem_from(keys["problem"]), keys["scan"])

@@ -33,7 +33,7 @@ def sweep_folder(config: Path) -> Path:
 
 def run_sweep(arguments: argparse.Namespace) -> Answer:
     """``mcgeo sweep``: do what is missing, then write the tables."""
-    plan = load_sweep(arguments.config)
+    plan = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
     folder = arguments.out or sweep_folder(arguments.config)
     costs = costs_of(plan, liquid_plans(plan))
     with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
