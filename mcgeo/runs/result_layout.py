@@ -14,6 +14,7 @@ from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.checked_hdf5 import Shape, Unexpected, array, member, number, require_names, text
 from mcgeo.runs.config import config_from_resolved, resolved
+from mcgeo.runs.ending import ending_of
 from mcgeo.runs.experiment import experiment_of
 from mcgeo.runs.sampled import Blocks
 from mcgeo.sampling.chain import ChainState, Schedule
@@ -102,10 +103,11 @@ def read_contents(file: h5py.File, keys: Mapping[str, Any], size: int) -> tuple[
     if len(places) != layout.n_components:
         raise Unexpected(f"it holds {len(places)} chains; its configuration has {layout.n_components}")
     n_blocks = number(places[0], "blocks_done", INTEGER)
-    if not 1 <= n_blocks <= layout.schedule.n_blocks:
-        raise Unexpected(f"it holds {n_blocks} blocks; its configuration has {layout.schedule.n_blocks}")
+    ending = ending_of(keys["sampling"], layout.schedule)
+    if not 1 <= n_blocks <= ending.most_blocks:
+        raise Unexpected(f"it holds {n_blocks} blocks; its configuration has {ending.most_blocks}")
     complete, seconds = number(file, "complete", FLAG), number(file, "seconds", FLOAT)
-    if complete != (n_blocks == layout.schedule.n_blocks) or seconds < 0.0:
+    if (complete and n_blocks < ending.first_blocks) or seconds < 0.0:
         raise Unexpected("what it says of its length and time cannot be")
     _require_size([*layout.blocks(n_blocks).values(), *layout.n_components * [*layout.chain().values()]], size)
     return _blocks(file, layout, n_blocks), [_chain(place, layout, n_blocks) for place in places], seconds, complete

@@ -29,6 +29,9 @@ def size_remarks(given: Mapping[str, Any]) -> Iterator[Remark]:
     if not all(isinstance(number, int | float) and 0 < number < 1e30 for number in numbers):
         return
     walkers, sweeps, blocks, q_max, electrons = numbers
+    most = keys["most_sweeps"]
+    if isinstance(most, int) and most > sweeps:
+        blocks, sweeps = blocks * most / sweeps, most
     # Waves of a half-plane within q_max: A pi q^2 / (2 pi)^2 / 2 with the area A = 2 pi N / nu.
     waves = 0.25 * electrons * _inverse_filling(state) * q_max**2
     between = keys["measure_every"] if isinstance(keys["measure_every"], int) and keys["measure_every"] > 0 else 1

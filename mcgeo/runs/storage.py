@@ -19,6 +19,7 @@ import mcgeo
 from mcgeo.errors import StorageError
 from mcgeo.runs.atomic import write_whole
 from mcgeo.runs.checked_hdf5 import Unexpected
+from mcgeo.runs.ending import blocks_of
 from mcgeo.runs.experiment import result_class
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.result_layout import FLAG, FLOAT, INTEGER, WORD, read_config, read_contents
@@ -192,7 +193,7 @@ def _advice(path: Path) -> str:
         return ""
     with suppress(StorageError):
         earlier = read_result(previous)
-        found = f"{previous.name} beside it is whole, with {earlier.n_blocks} of {earlier.schedule.n_blocks} blocks"
+        found = f"{previous.name} beside it is whole, with {blocks_of(earlier)}"
         return f"; {found}: rename it to {path.name} and the same command goes on"
     return ""
 

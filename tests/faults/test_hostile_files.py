@@ -191,7 +191,7 @@ FAULTS: dict[str, tuple[Edit, str]] = {
     "step of nothing": (attribute("checkpoint/0", "step", 0.0), "cannot be continued"),
     "no blocks": (attribute("checkpoint/0", "blocks_done", 0), "holds 0 blocks"),
     "10^18 blocks": (attribute("checkpoint/0", "blocks_done", 10**18), "blocks; its configuration has 8"),
-    "said to be unfinished": (attribute("/", "complete", np.False_), "cannot be"),
+    "said to be finished before its time": (setting("sampling", sweeps=960, blocks=16), "cannot be"),
     "configuration that is no JSON": (config_text("state: {}"), "not JSON"),
     "configuration of another encoding": (
         replaced("config", data=np.bytes_(b"\xff\xfe{}")), "not UTF-8"),
@@ -214,7 +214,7 @@ FAULTS: dict[str, tuple[Edit, str]] = {
     "more walkers": (setting("sampling", walkers=16), "bytes for what"),
     "10^15 walkers": (setting("sampling", walkers=10**15), "configuration is not valid"),
     "more waves": (setting("sampling", q_max=9.0), "bytes for what"),
-    "fewer blocks": (setting("sampling", blocks=4), "holds 8 blocks"),
+    "fewer blocks": (setting("sampling", blocks=4, sweeps=240), "holds 8 blocks"),
     "longer blocks": (setting("sampling", sweeps=10**5), "bytes for what"),
     "a droplet": (configured(lambda keys: (keys.pop("cell"), keys.update(geometry={"kind": "disk"}))), "missing"),
 }  # fmt: skip
