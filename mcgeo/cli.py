@@ -99,6 +99,9 @@ def _add_sweep(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
         "--threads", type=_positive, metavar="N", help="threads of every sampling (default: cores shared out)"
     )
     sweep.add_argument("--retry", action="store_true", help="try points again that have failed before")
+    sweep.add_argument(
+        "--status", action="store_true", help="how far the sweep of CONFIG, or in the folder CONFIG, is"
+    )
     sweep.add_argument("--json", action="store_true", help="one JSON object on standard output")
     sweep.add_argument("-q", "--quiet", action="store_true", help="no progress on standard error")
 

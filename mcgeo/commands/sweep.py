@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from mcgeo.commands.run import CONVERGED_CODE, NOT_CONVERGED_CODE, Answer, as_json
-from mcgeo.report.sweep_text import sweep_text
+from mcgeo.report.sweep_text import status_text, sweep_text
 from mcgeo.report.tables import write_csv, write_json
 from mcgeo.runs import sweep as engine
 from mcgeo.runs.build import available_threads
@@ -19,6 +19,7 @@ from mcgeo.runs.lock import run_lock
 from mcgeo.runs.sweep_estimate import costs_of, liquid_plans
 from mcgeo.runs.sweep_file import write_sweep_file
 from mcgeo.runs.sweep_plan import SweepPlan, load_sweep
+from mcgeo.runs.sweep_status import note_run, noted_run, sweep_status
 from mcgeo.runs.sweep_table import DONE, FAILED, MISSING, SweepTable, sweep_table
 
 INCOMPLETE_CODE = 4
@@ -32,15 +33,26 @@ def sweep_folder(config: Path) -> Path:
 
 
 def run_sweep(arguments: argparse.Namespace) -> Answer:
-    """``mcgeo sweep``: do what is missing, then write the tables."""
+    """``mcgeo sweep``: do what is missing, then write the tables; with ``--status`` tell how far it is."""
+    if arguments.status:
+        return _status(arguments)
     plan = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
     folder = arguments.out or sweep_folder(arguments.config)
-    costs = costs_of(plan, liquid_plans(plan))
+    costs, crew = costs_of(plan, liquid_plans(plan)), _crew(arguments)
     with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
-        engine.run_sweep(plan, folder, _crew(arguments), costs, retry=arguments.retry, quiet=arguments.quiet)
+        note_run(folder, plan, crew)
+        engine.run_sweep(plan, folder, crew, costs, retry=arguments.retry, quiet=arguments.quiet)
         table = sweep_table(plan, folder)
         summary = write_tables(plan, table, folder)
     return as_json(summary) if arguments.json else sweep_text(summary), exit_code(summary)
+
+
+def _status(arguments: argparse.Namespace) -> Answer:
+    folder, config = arguments.out or sweep_folder(arguments.config), arguments.config
+    if config.is_dir():
+        folder, config = config, noted_run(config)["config"]
+    found = sweep_status(load_sweep(config, allow_outside=arguments.allow_outside), folder)
+    return as_json(found) if arguments.json else status_text(found), CONVERGED_CODE
 
 
 def _crew(arguments: argparse.Namespace) -> Crew:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+from mcgeo.runs.config_faults import show
 from mcgeo.runs.sweep_progress import duration
 
 _SHOWN, _SHOWN_LIQUIDS = 5, 12
@@ -51,17 +52,39 @@ def sweep_plan_text(plan: Mapping[str, Any]) -> str:
     return "\n".join(_lines(rows))
 
 
+def status_text(status: Mapping[str, Any]) -> str:
+    """How far a sweep is."""
+    liquids = status["liquids"]
+    begun = [liquid for liquid in liquids if liquid["blocks_done"] and not liquid["complete"]]
+    whole = sum(liquid["complete"] for liquid in liquids)
+    rows = [
+        ("points done", f"{status['done']} of {status['points']}"),
+        ("failed", str(status["failed"])),
+        ("left", str(status["left"])),
+        ("liquids sampled", f"{whole} of {len(liquids)}"),
+        *(
+            (liquid["liquid"], f"{liquid['state']}, block {liquid['blocks_done']} of {liquid['blocks']}")
+            for liquid in begun
+        ),
+        ("time left", f"about {duration(status['estimated_seconds_left'])} on {_plural(status['threads'], 'thread')}"),
+    ]
+    return "\n".join(_lines(rows))
+
+
 def _axis_words(axis: Mapping[str, Any]) -> str:
     spacing = f", {axis['spacing']}" if axis["spacing"] in ("linear", "logarithmic") else ""
     return f"{_plural(axis['values'], 'value')}{spacing}"
 
 
 def _liquid_words(liquid: Mapping[str, Any]) -> str:
-    first = ", ".join(f"{name} {value}" for name, value in liquid["first_point"].items())
     return (
         f"{liquid['state']}, {duration(liquid['estimated_seconds'])}, serves {_plural(liquid['points'], 'point')}, "
-        f"the first at {first}"
+        f"the first at {_point_words(liquid['first_point'])}"
     )
+
+
+def _point_words(values: Mapping[str, Any]) -> str:
+    return ", ".join(f"{name} {value if isinstance(value, str) else show(value)}" for name, value in values.items())
 
 
 def _lines(rows: list[tuple[str, str]]) -> list[str]:
@@ -82,8 +105,7 @@ def _values(axis: Mapping[str, Any]) -> str:
 
 def _failures(failures: list[Mapping[str, Any]]) -> list[str]:
     lines = [
-        f"failed at {', '.join(f'{name} {value}' for name, value in failure['point'].items())}: {failure['error']}"
-        for failure in failures[:_SHOWN]
+        f"failed at {_point_words(failure['point'])}: {failure['error']}" for failure in failures[:_SHOWN]
     ]
     more = len(failures) - _SHOWN
     return lines + [f"and {more} more, all in sweep.json"] * (more > 0)

@@ -108,7 +108,8 @@ def _other_forms(place: _Place, root: Schema) -> list[Schema]:
 def _missing(place: _Place, key: str, root: Schema) -> str:
     names = _deref(place.schema, root)["properties"]
     message = f"missing; must be {_allowed(names[key], root)}"
-    instead = [name for form in _other_forms(place, root) for name in form["required"]]
+    others = [name for form in _other_forms(place, root) for name in form["required"]]
+    instead = [name for name in dict.fromkeys(others) if name not in names]
     if instead and "kind" not in names:
         message += f", unless {' or '.join(instead)} is given instead"
     return message

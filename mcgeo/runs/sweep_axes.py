@@ -172,14 +172,15 @@ def _swept_key(name: str, values: tuple[Any, ...], place: Path, key_place: Path)
 def _from_file(keys: FileAxisConfig, place: Path, files: NamedFiles) -> Iterator[SweptKey]:
     headings, rows = _table(keys.file, (*place, "file"), files)
     for name, heading in keys.columns.items():
+        column_place = (*place, "columns", name)
         if headings.count(heading) != 1:
             raise _AxisFault(
-                (*place, "columns", name),
+                column_place,
                 f"{keys.file} has {'no' if heading not in headings else 'more than one'} column {heading!r}; "
                 f"its columns are {', '.join(headings)}",
             )
         column = headings.index(heading)
-        yield _swept_key(name, tuple(_value(row[column]) for row in rows), place, (*place, "columns", name))
+        yield _swept_key(name, tuple(_value(row[column]) for row in rows), column_place, column_place)
 
 
 def _table(file: str, place: Path, files: NamedFiles) -> tuple[list[str], list[list[str]]]:

@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from mcgeo.errors import ConfigError, GeometryError
+from mcgeo.runs.config_faults import show
 from mcgeo.runs.plan import optimum_seconds, sampling_plan
 from mcgeo.runs.sweep import Costs
 from mcgeo.runs.sweep_plan import SweepPlan
@@ -31,7 +32,7 @@ def liquid_plans(plan: SweepPlan) -> dict[str, dict[str, Any]]:
         try:
             found[liquid] = sampling_plan(plan.resolved(points[0]))
         except GeometryError as fault:
-            values = ", ".join(f"{name} {value}" for name, value in plan.values(points[0]).items())
+            values = ", ".join(f"{name} {show(value)}" for name, value in plan.values(points[0]).items())
             faults.append(f"{plan.file}: at {values}: {fault}")
     if faults:
         more = [f"{plan.file}: and {len(faults) - _SHOWN_FAULTS} more faults"] * (len(faults) > _SHOWN_FAULTS)
