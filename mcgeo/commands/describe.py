@@ -36,8 +36,8 @@ def _rows(summary: dict[str, Any]) -> str:
 def run_check(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo check``: the plan of a valid configuration and what it will cost."""
     if has_sweep(arguments.config):
-        plan_of_sweep = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
-        sweep = sweep_summary(plan_of_sweep, cores=available_threads())
+        grid = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
+        sweep = sweep_summary(grid, available_threads())
         return as_json(sweep) if arguments.json else sweep_plan_text(sweep), 0
     plan = plan_of(resolved(load_config(arguments.config, allow_outside=arguments.allow_outside)))
     return as_json(plan) if arguments.json else _rows(plan), 0

@@ -11,9 +11,8 @@ from mcgeo.estimate.statistics import mean_estimate
 from mcgeo.geometry.metric import ISOTROPIC
 from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.problem import Problem
-from mcgeo.runs.build import problem_from
 from mcgeo.runs.catalogue import CatalogueLiquid, catalogue_liquid
-from mcgeo.runs.scan import optimum, optimum_summary, require_reach
+from mcgeo.runs.scan import optimum, optimum_summary
 from mcgeo.runs.state_config import CATALOGUE_NAMES
 from mcgeo.variational.energy_surface import EnergySurface
 
@@ -45,15 +44,7 @@ def _parts(total: Any, statistical: Any) -> dict[str, Any]:
 
 
 def catalogue_plan(resolved: Mapping[str, Any]) -> dict[str, Any]:
-    """What a configuration of a catalogue liquid will do.
-
-    Raises
-    ------
-    ConfigError
-        If metrics of the scan go out of reach.
-    """
-    problem = problem_from(resolved["problem"])
-    require_reach(problem, resolved["scan"])
+    """What of a plan belongs to the sampling, which for a liquid of the catalogue has been done."""
     state = catalogue_liquid(resolved["state"]).state_summary()
     large, small = state["origin"]["large"], state["origin"]["small"]
     return {
@@ -64,10 +55,9 @@ def catalogue_plan(resolved: Mapping[str, Any]) -> dict[str, Any]:
         "electrons_compared_with": small["electrons"],
         "seed": large["seed"],
         "sampled_by": f"mcgeo {large['mcgeo_version']}",
-        "interaction": problem.interaction.name,
-        "level": problem.level,
-        "mass_stretch": problem.mass_metric.stretch,
-        "scan_points": resolved["scan"]["stretch"]["points"],
+        "blocks": 0,
+        "core_seconds": 0.0,
+        "estimated_megabytes": 0.0,
     }
 
 

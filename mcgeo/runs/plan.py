@@ -19,10 +19,10 @@ _SECONDS_PER_PAIR = 1.0e-9
 _SECONDS_PER_WAVE_AND_ELECTRON = 0.25e-9
 _SECONDS_PER_MEASURED_PAIR = 1.7e-9
 # Seconds of one optimum with its response, and what a tilted field makes of them.
-_SECONDS_PER_OPTIMUM = {"projected": 0.1, "rigid": 0.2, "two_metric": 0.5}
-_TILTED_COST = 8.0
+_SECONDS_PER_OPTIMUM = {"projected": 0.005, "rigid": 0.2, "two_metric": 0.35}
+_TILTED_COST = 4.0
 # Points of the curve that cost as much as the optimum.
-_CURVE_POINTS_PER_OPTIMUM = 40.0
+_CURVE_POINTS_PER_OPTIMUM = 20.0
 # Numbers per block and walker beside the waves and the trace: histograms.
 _KEPT_BESIDE_WAVES = 200
 
@@ -41,7 +41,7 @@ def plan_of(resolved: Mapping[str, Any]) -> dict[str, Any]:
     require_reach(problem, resolved["scan"])
     found = sampling_plan(resolved)
     core_seconds, points = found.pop("core_seconds"), resolved["scan"]["stretch"]["points"]
-    cores = min(found["threads"], -(-found["walkers"] // LANES))
+    cores = min(found["threads"], -(-found["walkers"] // LANES)) if core_seconds else 1
     if resolved["scan"]["road"] == "torus":
         # Every metric of the scan is sampled by itself.
         core_seconds, scanning = points * core_seconds, 0.0

@@ -19,7 +19,7 @@ from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points
-from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, sample_liquid
+from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, needs_sampling, sample_liquid
 
 _SECONDS_BETWEEN_LOOKS = 0.5
 # Executors that break so often in a row, without one task done, will not do better the next time.
@@ -119,10 +119,10 @@ class _Run:
         self._any_point = {liquid: points[0] for liquid, points in wanted.items()}
         waiting = {}
         for liquid, points in wanted.items():
-            if liquid_progress(folder, liquid).complete:
-                self._queue.add_points(liquid, points)
-            else:
+            if needs_sampling(folder, liquid, plan.resolved(points[0])["state"]):
                 waiting[liquid] = points
+            else:
+                self._queue.add_points(liquid, points)
         self._queue.add_liquids(waiting, costs.liquids)
         self._n_liquids, self._n_points = len(waiting), sum(map(len, wanted.values()))
         self._seconds = sum(costs.liquids[liquid] for liquid in waiting) + costs.optimum * self._n_points
@@ -171,11 +171,12 @@ class _Run:
         if not job.points:
             keys = self._plan.resolved(self._any_point[job.liquid])
             return executor.submit(sample_liquid, self._folder, job.liquid, keys, job.threads, self._sign)
-        questions = []
-        for point in job.points:
-            keys = self._plan.resolved(point)
-            questions.append(Question(point.name, keys["problem"], keys["material"]))
-        return executor.submit(find_optima, self._folder, job.liquid, questions, self._sign)
+        resolved = [self._plan.resolved(point) for point in job.points]
+        questions = [
+            Question(point.name, keys["problem"], keys["material"])
+            for point, keys in zip(job.points, resolved, strict=True)
+        ]
+        return executor.submit(find_optima, self._folder, job.liquid, resolved[0]["state"], questions, self._sign)
 
     def _take(self, future: Future[Report], job: Job, stop: StopFlag) -> bool:
         """What a task reports; true if the executor has broken."""

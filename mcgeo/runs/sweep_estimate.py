@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from pathlib import Path
 from typing import Any
 
 from mcgeo.errors import ConfigError, GeometryError
@@ -11,7 +10,6 @@ from mcgeo.runs.config_faults import show
 from mcgeo.runs.plan import optimum_seconds, sampling_plan
 from mcgeo.runs.sweep import Costs
 from mcgeo.runs.sweep_plan import SweepPlan
-from mcgeo.runs.sweep_tasks import liquid_progress
 
 _MEGABYTES_PER_ROW = 1e-3
 # An optimum's cost is taken from so many points, spread over the sweep.
@@ -47,13 +45,11 @@ def costs_of(plan: SweepPlan, plans: Mapping[str, Mapping[str, Any]]) -> Costs:
     return Costs({liquid: keys["core_seconds"] for liquid, keys in plans.items()}, optimum)
 
 
-def sweep_summary(plan: SweepPlan, folder: Path | None = None, *, cores: int) -> dict[str, Any]:
+def sweep_summary(plan: SweepPlan, cores: int) -> dict[str, Any]:
     """The JSON object of ``check`` for a sweep: points, liquids and which points share them, time and disk.
 
     Parameters
     ----------
-    folder : Path, optional
-        Samplings that are whole in this folder are not counted.
     cores : int
         Over which the time is divided.
 
@@ -64,8 +60,7 @@ def sweep_summary(plan: SweepPlan, folder: Path | None = None, *, cores: int) ->
     """
     plans = liquid_plans(plan)
     costs = costs_of(plan, plans)
-    there = {liquid for liquid in plans if folder is not None and liquid_progress(folder, liquid).complete}
-    sampling = sum(seconds for liquid, seconds in costs.liquids.items() if liquid not in there)
+    sampling = sum(costs.liquids.values())
     scanning = costs.optimum * len(plan.points)
     return {
         "axes": [

@@ -68,7 +68,7 @@ def sweep_status(plan: SweepPlan, folder: Path) -> dict[str, Any]:
         progress = liquid_progress(folder, liquid)
         missing = {point.name for point in points} - done - failed
         blocks = plans[liquid]["blocks"]
-        if missing and not progress.complete:
+        if missing and not progress.complete and blocks:
             seconds += costs.liquids[liquid] * max(1.0 - progress.blocks / blocks, 0.0)
         liquids.append(
             {
@@ -76,7 +76,7 @@ def sweep_status(plan: SweepPlan, folder: Path) -> dict[str, Any]:
                 "state": plans[liquid]["state"],
                 "blocks_done": progress.blocks,
                 "blocks": blocks,
-                "complete": progress.complete,
+                "complete": progress.complete or not blocks,
                 "points": len(points),
                 "points_left": sum(point.name in missing for point in points),
             }

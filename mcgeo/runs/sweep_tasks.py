@@ -17,12 +17,13 @@ from typing import Any, NamedTuple
 import h5py
 
 from mcgeo.errors import McgeoError, RunInterrupted, StorageError
+from mcgeo.runs.catalogue import KIND, catalogue_liquid
 from mcgeo.runs.config import config_from_resolved
 from mcgeo.runs.executors import StopSign
 from mcgeo.runs.lock import FileBusy
 from mcgeo.runs.sample import LIQUID_FILE, sample
-from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import SharedAnswers, optimum, optimum_summary, problem_summary
+from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.signals import StopFlag
 from mcgeo.runs.storage import read_result
 from mcgeo.runs.sweep_rows import RowFile
@@ -116,16 +117,23 @@ def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, sign: Sto
     return Report("done")
 
 
-def find_optima(folder: Path, liquid: str, questions: Sequence[Question], sign: StopSign) -> Report:
+def find_optima(
+    folder: Path, liquid: str, state: Keys, questions: Sequence[Question], sign: StopSign
+) -> Report:
     """The optima of some points of a sampled liquid, left as one file of rows.
 
     A point whose optimum cannot be found is kept with the reason.
+
+    Parameters
+    ----------
+    state : mapping
+        Resolved keys of ``state``.
     """
     started = time.monotonic()
     rows: dict[str, Keys] = {}
     failed: dict[str, str] = {}
     try:
-        opened = _opened(folder / LIQUIDS / liquid / LIQUID_FILE)
+        opened = _opened(folder, liquid, state)
         with _watched(sign) as stop:
             for question in questions:
                 if stop.is_set():
@@ -153,9 +161,9 @@ def _words(fault: BaseException) -> str:
 class _Opened:
     """A liquid that questions are put to."""
 
-    def __init__(self, result: Sampled) -> None:
-        self._liquid = result
-        self._state = result.state_summary()
+    def __init__(self, liquid: Scannable, seed: int) -> None:
+        self._liquid, self._seed = liquid, seed
+        self._state = liquid.state_summary()
         self._answers = SharedAnswers()
 
     @property
@@ -166,7 +174,7 @@ class _Opened:
             "label": self._state["label"],
             "filling": self._state["filling"],
             "electrons": self._state["liquid_electrons"],
-            "seed": self._liquid.resolved["sampling"]["seed"],
+            "seed": self._seed,
             "acceptance": health["acceptance"],
             "autocorrelation_time": health["autocorrelation_time"],
             "effective_samples": health["effective_samples"],
@@ -183,14 +191,24 @@ class _Opened:
         return {**best, **{name: problem[name] for name in _OF_PROBLEM}, **summary.get("units", {})}
 
 
-def _opened(path: Path) -> _Opened:
+def _opened(folder: Path, liquid: str, state: Keys) -> _Opened:
+    if state["kind"] == KIND:
+        return _opened_of_catalogue(state["catalogue"], state["conjugate"])
+    path = folder / LIQUIDS / liquid / LIQUID_FILE
     return _opened_as_of(path, path.stat().st_mtime_ns)
 
 
 @lru_cache(maxsize=_LIQUIDS_KEPT)
 def _opened_as_of(path: Path, changed: int) -> _Opened:
     """Kept from task to task of a process; ``changed`` tells a file from one that has taken its place."""
-    return _Opened(read_result(path))
+    result = read_result(path)
+    return _Opened(result, result.resolved["sampling"]["seed"])
+
+
+@lru_cache(maxsize=_LIQUIDS_KEPT)
+def _opened_of_catalogue(name: str, conjugate: bool) -> _Opened:
+    found = catalogue_liquid({"kind": KIND, "catalogue": name, "conjugate": conjugate})
+    return _Opened(found, found.entry.large.resolved["sampling"]["seed"])
 
 
 class LiquidProgress(NamedTuple):
@@ -207,3 +225,14 @@ def liquid_progress(folder: Path, liquid: str) -> LiquidProgress:
             return LiquidProgress(len(file["blocks/drift"][0]), bool(file.attrs["complete"]))
     except (OSError, KeyError, ValueError):
         return LiquidProgress(0, False)
+
+
+def needs_sampling(folder: Path, liquid: str, state: Keys) -> bool:
+    """Whether optima of a liquid have to wait for its sampling; those of the catalogue never do.
+
+    Parameters
+    ----------
+    state : mapping
+        Resolved keys of ``state``.
+    """
+    return bool(state["kind"] != KIND) and not liquid_progress(folder, liquid).complete
