@@ -21,6 +21,7 @@ from mcgeo.errors import ConfigError
 from mcgeo.runs.config import Config, resolved, state_identity, validated
 from mcgeo.runs.config_faults import Remark, explain
 from mcgeo.runs.named_files import NamedFiles
+from mcgeo.runs.sampling_config import STRETCH
 from mcgeo.runs.sweep_axes import Axis, NoSuchPlaceError, axes_of, data_at, indices_at, named_values
 from mcgeo.runs.sweep_config import MOST_POINTS, SweepConfig
 from mcgeo.runs.sweep_exclusions import exclusions_of
@@ -194,6 +195,10 @@ def point_of(config: Config, position: int = 0) -> Point:
     """Name and liquid of a configuration; ``scan`` and threads, which change no number of the optimum, are left out."""
     sampling, data = state_identity(config), resolved(config)
     problem = data["problem"]
+    if config.sampling.target_error is not None:
+        # The run is as long as this problem's error needs: another problem has another run.
+        decides = problem if config.sampling.target_quantity == STRETCH else problem["interaction"]
+        sampling = {**sampling, "target_of": decides}
     name = _hash({**sampling, "problem": problem, "material": data["material"]})
     return Point(position, name, _hash(sampling), _hash({key: problem[key] for key in problem if key != "mass"}))
 

@@ -186,6 +186,23 @@ def test_points_that_differ_in_the_problem_share_a_liquid(write):
     assert len({point.name for point in plan.points}) == 12
 
 
+@pytest.mark.parametrize(("quantity", "liquids"), [("energy", 2), ("stretch", 6)])
+def test_a_run_that_ends_by_a_problem_s_error_is_that_problem_s(write, quantity, liquids):
+    """The energy's error depends on the interaction, the stretch's on the mass too."""
+    base = BASE.replace("sweeps: 480", f"sweeps: 480, target_error: 0.001, target_quantity: {quantity}")
+    axes = ("{key: problem.mass.ratio, values: [1, 2, 3]}", "{key: problem.interaction.width, values: [0, 1]}")
+    assert len(load_sweep(write(sweep_of(*axes, base=base))).liquids) == liquids
+    assert len(load_sweep(write(sweep_of(*axes))).liquids) == 1
+
+
+def test_a_liquid_of_the_catalogue_takes_part(write):
+    base = BASE.replace("{kind: laughlin, exponent: 3, electrons: 4}", "{catalogue: laughlin-1/3}")
+    base = base.replace("sampling: {seed: 5, sweeps: 480}\n", "")
+    plan = load_sweep(write(sweep_of("{key: state.catalogue, values: [laughlin-1/3, laughlin-1/5]}", base=base)))
+    assert [plan.resolved(point)["state"]["catalogue"] for point in plan.points] == ["laughlin-1/3", "laughlin-1/5"]
+    assert len(plan.liquids) == 2
+
+
 def test_names_do_not_depend_on_what_changes_no_number(write):
     axis, same = "{key: problem.mass.ratio, values: [%s]}", set()
     for value, base in (
