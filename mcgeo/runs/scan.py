@@ -32,7 +32,7 @@ from mcgeo.variational.susceptibility import (
     with_deformed_interaction,
     with_deformed_mass,
 )
-from mcgeo.variational.variation import Variation, orbit_estimates, surface_of
+from mcgeo.variational.variation import PROJECTED, Variation, orbit_estimates, surface_of
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,7 +73,7 @@ class Scan(Optimum):
 class SharedAnswers:
     """What many problems put to one liquid share, kept between calls of `optimum`: interactions and responses.
 
-    Neither depends on the mass; the results are those without it, to the last bit.
+    Neither depends on the mass; the results are those without this object, to the last bit.
     """
 
     def __init__(self) -> None:
@@ -89,10 +89,20 @@ class SharedAnswers:
 
     def response(self, keys: Mapping[str, Any], surface_for: SurfaceMaker, problem: Problem) -> Response:
         """Response at the isotropic working point of the problem."""
-        name = json.dumps({key: value for key, value in keys.items() if key != "mass"}, sort_keys=True)
+        name = _isotropic_question(keys)
         if name not in self._responses:
             self._responses[name] = mass_response(surface_for, problem)
         return self._responses[name]
+
+
+def _isotropic_question(keys: Mapping[str, Any]) -> str:
+    """The keys that a response depends on: neither mass nor tilt, and level mixing only where the orbit varies."""
+    kept = {key: value for key, value in keys.items() if key != "mass"}
+    if kept["tilt"] is not None:
+        kept["tilt"] = {k: v for k, v in kept["tilt"].items() if k not in ("angle_degrees", "direction_degrees")}
+    if kept["variation"] == PROJECTED:
+        del kept["level_mixing"]
+    return json.dumps(kept, sort_keys=True)
 
 
 def optimum(

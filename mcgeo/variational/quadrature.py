@@ -84,16 +84,16 @@ def _distance(first: UnimodularMetric, second: UnimodularMetric) -> float:
 
 
 def _mirror_axis(problem: Problem, metric: UnimodularMetric) -> float | None:
-    """Angle of an axis that hole, orbit and interaction share, or None."""
+    """Angle of an axis that hole, mass, field and interaction share, or None."""
     symmetry = problem.interaction.symmetry
-    if symmetry is None or problem.tilt is not None:
+    if symmetry is None:
         return None
-    stretched = [g for g in (metric, problem.orbit.metric, symmetry) if g.stretch > 0.0]
-    if not stretched:
+    angles = [g.angle for g in (metric, problem.mass_metric, symmetry) if g.stretch > 0.0]
+    if problem.tilt is not None and problem.tilt.angle > 0.0:
+        angles.append(problem.tilt.direction)
+    if not angles:
         return 0.0
-    axis = stretched[0].angle
-    shared = all(abs(math.sin(2.0 * (g.angle - axis))) < _SAME_AXIS for g in stretched[1:])
-    return axis if shared else None
+    return angles[0] if all(abs(math.sin(2.0 * (a - angles[0]))) < _SAME_AXIS for a in angles[1:]) else None
 
 
 def require_resolved(problem: Problem, metric: UnimodularMetric) -> float:

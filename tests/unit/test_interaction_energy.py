@@ -8,6 +8,7 @@ from fractions import Fraction
 import mpmath
 import numpy as np
 import pytest
+from numpy.typing import NDArray
 
 from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
@@ -90,15 +91,32 @@ def test_mean_is_that_of_the_samples(interaction: Interaction) -> None:
 
 
 @pytest.mark.parametrize("hole", [(0.7, 0.3), (-0.7, 0.3), (0.0, 0.0)])
-@pytest.mark.parametrize("interaction", [Coulomb(), Coulomb(UnimodularMetric(-0.5, 0.3)), INTERACTIONS["yukawa"](1.0)])
+@pytest.mark.parametrize(
+    ("interaction", "tilt"),
+    [
+        (Coulomb(), None),
+        (Coulomb(UnimodularMetric(-0.5, 0.3)), None),
+        (INTERACTIONS["yukawa"](1.0), None),
+        (Coulomb(), TiltedField(0.7, 2.0, 0.3)),
+        (Coulomb(), TiltedField(0.7, 2.0, 0.3 + math.pi / 2)),
+    ],
+)
 def test_quarter_turn_where_axes_coincide(
-    monkeypatch: pytest.MonkeyPatch, interaction: Interaction, hole: tuple[float, float]
+    monkeypatch: pytest.MonkeyPatch, interaction: Interaction, tilt: TiltedField | None, hole: tuple[float, float]
 ) -> None:
-    problem, metric = Problem(UnimodularMetric(0.9, 0.3), interaction, 1), UnimodularMetric(*hole)
-    radii = np.array([1e-3, 0.4, 1.5, 3.0])
+    problem, metric = Problem(UnimodularMetric(0.9, 0.3), interaction, 1, tilt), UnimodularMetric(*hole)
+    radii, sizes = np.array([1e-3, 0.4, 1.5, 3.0]), []
+    potential = Problem.effective_potential
+
+    def counted(self: Problem, wavevectors: NDArray[np.float64]) -> NDArray[np.float64]:
+        sizes.append(wavevectors.size)
+        return potential(self, wavevectors)
+
+    monkeypatch.setattr(Problem, "effective_potential", counted)
     quarter = quadrature.angular_harmonics(problem, metric, radii)
     monkeypatch.setattr(quadrature, "_mirror_axis", lambda problem, metric: None)
     half = quadrature.angular_harmonics(problem, metric, radii)
+    assert sizes[1] == 2 * sizes[0]
     np.testing.assert_allclose(quarter, half, atol=1e-12 * np.max(np.abs(half)))
 
 
@@ -108,6 +126,7 @@ def test_quarter_turn_where_axes_coincide(
         Problem(UnimodularMetric(0.9, 0.3), Coulomb(UnimodularMetric(0.5))),
         Problem(UnimodularMetric(0.9), INTERACTIONS["dipole"](0.6, 0.9, 0.4)),
         Problem(UnimodularMetric(0.9), Coulomb(), 0, TiltedField(0.7, 2.0, 0.4)),
+        Problem(ISOTROPIC, Coulomb(), 0, TiltedField(0.7, 2.0, 0.4)),
     ],
 )
 def test_no_quarter_turn_where_they_do_not(problem: Problem) -> None:
