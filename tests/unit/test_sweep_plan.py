@@ -274,7 +274,7 @@ FAULTS = {
     ),
     "no such file": (
         ["{file: none.csv, columns: {problem.level: level}}"],
-        [("none.csv", "sweep.axes[0].file: none.csv: cannot be read: No such file or directory")],
+        [("none.csv", "sweep.axes[0].file: none.csv: there is no such file")],
     ),
     "a file outside": (
         ["{file: ../none.csv, columns: {problem.level: level}}"],
