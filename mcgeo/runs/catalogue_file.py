@@ -120,6 +120,8 @@ def read_entry(name: str, path: Path | None = None) -> CatalogueEntry:
     if path is None:
         with as_file(files("mcgeo.runs") / _FILE) as shipped:
             return read_entry(name, shipped)
+    if not path.is_file():
+        raise StorageError(f"{path}: no such file; scripts/make_catalogue.py makes the catalogue")
     try:
         with h5py.File(path, "r") as file:
             found = file.attrs.get("format")
