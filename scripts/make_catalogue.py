@@ -13,7 +13,6 @@ from __future__ import annotations
 import argparse
 import json
 import math
-import os
 import sys
 from collections.abc import Mapping, Sequence
 from pathlib import Path
@@ -28,7 +27,7 @@ from mcgeo.geometry.metric import ISOTROPIC
 from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.catalogue import CatalogueLiquid
-from mcgeo.runs.catalogue_file import N_SAMPLES, CatalogueEntry, CatalogueRun, read_entry, write_entry
+from mcgeo.runs.catalogue_file import N_SAMPLES, CatalogueEntry, CatalogueRun, read_entry, write_catalogue
 from mcgeo.runs.config import config_from_resolved
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import LIQUID_FILE, sample
@@ -58,27 +57,27 @@ class Plan(NamedTuple):
     seed: int
 
 
-def _laughlin(exponent: int, seed: int, equilibration: int = 1000) -> Plan:
+def _laughlin(exponent: int, seed: int, equilibration: int = 500) -> Plan:
     state = {"kind": "laughlin", "exponent": exponent}
-    return Plan(state, Size(100, 48_000, equilibration), Size(50, 96_000, equilibration), seed)
+    return Plan(state, Size(100, 20_000, equilibration), Size(50, 32_000, equilibration), seed)
 
 
 def _moore_read(filling: str, seed: int) -> Plan:
     state = {"kind": "moore_read", "filling": filling}
-    return Plan(state, Size(60, 5000, 200), Size(30, 8000, 200), seed)
+    return Plan(state, Size(60, 2000, 160), Size(30, 3200, 160), seed)
 
 
 def _sea(filling: str, seed: int) -> Plan:
     # Closed shells of the hexagonal cell; the energy depends on which shell is the last.
     state = {"kind": "fermi_sea", "filling": filling}
-    return Plan(state, Size(61, 600, 100), Size(37, 1000, 100), seed)
+    return Plan(state, Size(61, 400, 100), Size(37, 640, 100), seed)
 
 
 PLANS: dict[str, Plan] = {
     "laughlin-1": _laughlin(1, 2026_11),
     "laughlin-1/3": _laughlin(3, 2026_13),
     "laughlin-1/5": _laughlin(5, 2026_15),
-    "laughlin-1/7": _laughlin(7, 2026_17, equilibration=2000),
+    "laughlin-1/7": _laughlin(7, 2026_17, equilibration=1000),
     "laughlin-1/2": _laughlin(2, 2026_21),
     "laughlin-1/4": _laughlin(4, 2026_23),
     "moore_read-1/2": _moore_read("1/2", 2026_31),
@@ -179,19 +178,6 @@ def faults_of(name: str, entry: CatalogueEntry) -> list[str]:
         if abs(energy.value - published) > 4.0 * math.hypot(energy.error, uncertainty):
             faults.append(f"{name}: energy {energy.value:.6f} +- {energy.error:.1e}, published {published:.6f}")
     return faults
-
-
-def write_catalogue(path: Path, entries: Mapping[str, CatalogueEntry]) -> None:
-    """Write the file whole or not at all."""
-    path.parent.mkdir(parents=True, exist_ok=True)
-    temporary = path.with_name(f".{path.name}.part")
-    try:
-        with h5py.File(temporary, "w") as file:
-            for name, entry in entries.items():
-                write_entry(file, name, entry)
-        os.replace(temporary, path)
-    finally:
-        temporary.unlink(missing_ok=True)
 
 
 def main(argv: Sequence[str] | None = None) -> int:

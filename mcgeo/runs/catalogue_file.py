@@ -1,8 +1,8 @@
 """The shipped catalogue: occupations of common liquids at two sizes, in one HDF5 file inside the package.
 
 One group per liquid, named as in ``state.catalogue`` with ``_`` for ``/``; in it the groups ``large`` and ``small``,
-one per size, each with the datasets ``m``, ``samples`` (c_m), ``q``, ``S``, ``S_error`` and, as attributes, where they
-come from. ``scripts/make_catalogue.py`` makes the file.
+one per size, each with the datasets ``m``, ``samples`` (c_m), ``q``, ``S``, ``S_error`` and where they come from.
+``scripts/make_catalogue.py`` makes the file.
 """
 
 from __future__ import annotations
@@ -18,9 +18,11 @@ import h5py
 import numpy as np
 from numpy.typing import NDArray
 
-from mcgeo.errors import StorageError
 from mcgeo.estimate.statistics import JACKKNIFE_GROUPS
 from mcgeo.estimate.structure_factor import Curve
+from mcgeo.runs.checked_hdf5 import Unexpected, array, dataset, member, require_names, text
+from mcgeo.runs.result_layout import FLOAT, INTEGER
+from mcgeo.runs.storage import opened_file, written_file
 
 Array = NDArray[np.float64]
 
@@ -29,7 +31,9 @@ FORMAT = "mcgeo-catalogue/1"
 N_SAMPLES = JACKKNIFE_GROUPS - 2
 
 _FILE = "catalogue.h5"
-_LARGEST_M = 1000
+_TEXTS = ("label", "filling", "statistics")
+_SIZES = ("large", "small")
+_MOST_M = 1000
 _MOST_WAVES = 100_000
 _LONGEST_TEXT = 100_000
 
@@ -91,22 +95,37 @@ def group_name(name: str) -> str:
     return name.replace("/", "_")
 
 
-def write_entry(file: Any, name: str, entry: CatalogueEntry) -> None:
-    """Add an entry to an open HDF5 file, without time stamps."""
-    file.attrs["format"] = FORMAT
-    group = file.create_group(group_name(name))
-    group.attrs.update({"label": entry.label, "filling": entry.filling, "statistics": entry.statistics})
-    for size in ("large", "small"):
-        run: CatalogueRun = getattr(entry, size)
-        place = group.create_group(size)
-        place.attrs["config"] = json.dumps(run.resolved)
-        place.attrs["mcgeo_version"] = run.mcgeo_version
-        place.attrs["libraries"] = json.dumps(run.libraries)
-        place.attrs["diagnostics"] = json.dumps(run.diagnostics)
-        curve = run.structure
-        arrays = {"m": run.m, "samples": run.samples, "q": curve.x, "S": curve.value, "S_error": curve.error}
-        for key, values in arrays.items():
-            place.create_dataset(key, data=values, track_times=False, fletcher32=True)
+def write_catalogue(path: Path, entries: Mapping[str, CatalogueEntry]) -> None:
+    """Write entries by their names; the same entries give the same bytes.
+
+    Raises
+    ------
+    StorageError
+        If the file cannot be written; an older one is then untouched.
+    """
+    with written_file(path, FORMAT) as file:
+        for name, entry in entries.items():
+            group = file.create_group(group_name(name))
+            for key in _TEXTS:
+                _write_text(group, key, getattr(entry, key))
+            for size in _SIZES:
+                _write_run(group.create_group(size), getattr(entry, size))
+
+
+def _write_run(place: Any, run: CatalogueRun) -> None:
+    _write_text(place, "config", json.dumps(run.resolved))
+    _write_text(place, "mcgeo_version", run.mcgeo_version)
+    _write_text(place, "libraries", json.dumps(run.libraries))
+    _write_text(place, "diagnostics", json.dumps(run.diagnostics))
+    place.create_dataset("m", data=run.m, dtype=INTEGER)
+    curve = run.structure
+    for key, values in (("samples", run.samples), ("q", curve.x), ("S", curve.value), ("S_error", curve.error)):
+        place.create_dataset(key, data=values, dtype=FLOAT)
+
+
+def _write_text(group: Any, key: str, words: str) -> None:
+    data = words.encode()
+    group.create_dataset(key, data=data, dtype=h5py.string_dtype("utf-8", len(data)))
 
 
 def read_entry(name: str, path: Path | None = None) -> CatalogueEntry:
@@ -120,58 +139,31 @@ def read_entry(name: str, path: Path | None = None) -> CatalogueEntry:
     if path is None:
         with as_file(files("mcgeo.runs") / _FILE) as shipped:
             return read_entry(name, shipped)
-    if not path.is_file():
-        raise StorageError(f"{path}: no such file; scripts/make_catalogue.py makes the catalogue")
-    try:
-        with h5py.File(path, "r") as file:
-            found = file.attrs.get("format")
-            if found != FORMAT:
-                raise StorageError(f"{path}: not a catalogue of this version: format {found!r}, needed {FORMAT!r}")
-            if group_name(name) not in file:
-                raise StorageError(f"{path}: holds no {name}")
-            return _entry(file[group_name(name)])
-    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as fault:
-        raise StorageError(f"{path}: damaged or not a catalogue: {fault}") from fault
-
-
-def _entry(group: Any) -> CatalogueEntry:
-    label, filling, statistics = (_text(group, key) for key in ("label", "filling", "statistics"))
-    return CatalogueEntry(label, filling, statistics, _run(group["large"]), _run(group["small"]))
+    with opened_file(path, FORMAT) as file:
+        group = member(file, group_name(name), h5py.Group)
+        require_names(group, (*_TEXTS, *_SIZES))
+        label, filling, statistics = (text(group, key, _LONGEST_TEXT) for key in _TEXTS)
+        large, small = (_run(member(group, size, h5py.Group)) for size in _SIZES)
+        return CatalogueEntry(label, filling, statistics, large, small)
 
 
 def _run(place: Any) -> CatalogueRun:
-    m = _array(place, "m", (_LARGEST_M,), "i")
-    samples = _array(place, "samples", (N_SAMPLES, len(m)), "f")
-    if len(samples) != N_SAMPLES or samples.shape[1] != len(m):
-        raise ValueError(f"samples of shape {samples.shape} where {(N_SAMPLES, len(m))} is needed")
-    x, value, error = (_array(place, key, (_MOST_WAVES,), "f") for key in ("q", "S", "S_error"))
-    if not len(x) == len(value) == len(error):
-        raise ValueError("q, S and S_error differ in length")
+    m = array(place, "m", (_length(place, "m", _MOST_M),), INTEGER)
+    n_waves = _length(place, "q", _MOST_WAVES)
+    x, value, error = (array(place, key, (n_waves,), FLOAT) for key in ("q", "S", "S_error"))
     return CatalogueRun(
-        json.loads(_text(place, "config")),
-        _text(place, "mcgeo_version"),
-        json.loads(_text(place, "libraries")),
-        json.loads(_text(place, "diagnostics")),
-        m.astype(np.int64),
-        samples,
+        json.loads(text(place, "config", _LONGEST_TEXT)),
+        text(place, "mcgeo_version", _LONGEST_TEXT),
+        json.loads(text(place, "libraries", _LONGEST_TEXT)),
+        json.loads(text(place, "diagnostics", _LONGEST_TEXT)),
+        m,
+        array(place, "samples", (N_SAMPLES, len(m)), FLOAT),
         Curve(x, value, error),
     )
 
 
-def _text(place: Any, key: str) -> str:
-    text = place.attrs[key]
-    if not isinstance(text, str) or len(text) > _LONGEST_TEXT:
-        raise ValueError(f"attribute {key} is no text")
-    return text
-
-
-def _array(place: Any, key: str, limits: tuple[int, ...], kind: str) -> NDArray[Any]:
-    """A dataset, read only if its type and shape are as they should be."""
-    dataset = place[key]
-    fits = len(dataset.shape) == len(limits) and all(n <= limit for n, limit in zip(dataset.shape, limits, strict=True))
-    if dataset.dtype.kind != kind or dataset.dtype.itemsize != 8 or not fits:
-        raise ValueError(f"{key} has type {dataset.dtype} and shape {dataset.shape}")
-    values = dataset[()]
-    if not np.all(np.isfinite(values)):
-        raise ValueError(f"{key} holds numbers that are not finite")
-    return np.asarray(values)
+def _length(place: Any, key: str, most: int) -> int:
+    shape = dataset(place, key).shape
+    if len(shape) != 1 or not 1 <= shape[0] <= most:
+        raise Unexpected(f"{key} has the shape {shape}")
+    return int(shape[0])
