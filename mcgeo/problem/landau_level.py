@@ -57,6 +57,45 @@ def form_factor_sq(wavevectors: Array, level: int, orbit_metric: UnimodularMetri
     return np.asarray(laguerre(level, half) ** 2 * gaussian if level else gaussian)
 
 
+def form_factor_derivatives(wavevectors: Array, level: int, orbit_metric: UnimodularMetric) -> Array:
+    """F_n(q)^2 and its derivatives by the flat coordinates (x, y) of the orbit about its metric.
+
+    F^2 = f(h), h = |q|_L^2/2, and a displaced orbit has h [1 - x c - y s + (x^2 + y^2)/2 + ...], c and s the cosine and
+    sine of twice the angle of g_L^(-1/2) q: F_x = -c h f', F_xx = h f' + c^2 h^2 f'', F_xy = c s h^2 f'' and so on.
+
+    Parameters
+    ----------
+    wavevectors : ndarray, shape (..., 2)
+        None of them zero.
+
+    Returns
+    -------
+    ndarray, shape (6, ...)
+        F^2, F_x, F_y, F_xx, F_xy, F_yy.
+    """
+    p = wavevectors @ orbit_metric.inverse_linear_map
+    along, across = 0.5 * (p[..., 0] ** 2 - p[..., 1] ** 2), p[..., 0] * p[..., 1]
+    h = 0.5 * (p[..., 0] ** 2 + p[..., 1] ** 2)
+    c, s = along / h, across / h
+    polynomial, gaussian = laguerre(level, h), np.exp(-h)
+    # h L' = n (L_n - L_{n-1}) and h L'' = (h - 1) L' - n L (DLMF 18.9.23 and 18.8.1).
+    slope = level * (polynomial - laguerre(level - 1, h)) if level else np.zeros_like(h)
+    bend = (h - 1.0) * slope - level * h * polynomial
+    first = (2.0 * polynomial * slope - h * polynomial**2) * gaussian
+    second = 2.0 * (slope**2 + polynomial * bend) - 4.0 * h * polynomial * slope + (h * polynomial) ** 2
+    second = second * gaussian
+    return np.stack(
+        [
+            polynomial**2 * gaussian,
+            -c * first,
+            -s * first,
+            first + c * c * second,
+            c * s * second,
+            first + s * s * second,
+        ]
+    )
+
+
 @dataclass(frozen=True)
 class LandauOrbit:
     """Orbit of an infinitely thin layer in a field across the plane: its shape is the mass metric.

@@ -8,9 +8,10 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from mcgeo.errors import GeometryError
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.interaction import Interaction
-from mcgeo.problem.landau_level import LandauOrbit, Orbit
+from mcgeo.problem.landau_level import LandauOrbit, Orbit, form_factor_derivatives
 from mcgeo.problem.tilted_field import TiltedField, TiltedOrbit
 
 
@@ -47,6 +48,23 @@ class Problem:
         V(q) F_n(q; g_m)^2, or the integral over q_z of `TiltedOrbit.effective_potential`.
         """
         return self.orbit.effective_potential(wavevectors, self.interaction)
+
+    def orbit_derivatives(self, wavevectors: NDArray[np.float64]) -> NDArray[np.float64]:
+        """v(q) and its derivatives v_x, v_y, v_xx, v_xy, v_yy by the flat coordinates of the orbit, shape (6, ...).
+
+        Raises
+        ------
+        GeometryError
+            In a tilted field, where the orbit is that of mass and field.
+        """
+        if self.tilt is not None:
+            raise GeometryError("the orbit's shape can vary in a field across the plane only")
+        factors = form_factor_derivatives(wavevectors, self.level, self.orbit.metric)
+        found = np.empty(factors.shape)
+        found[:] = self.interaction.guiding_centre_potential(wavevectors, factors)
+        # Parts that act on guiding centres themselves do not know the orbit.
+        found[1:] -= self.interaction.guiding_centre_potential(wavevectors, np.zeros_like(factors[0]))
+        return found
 
     @property
     def reach(self) -> float:

@@ -31,7 +31,7 @@ from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.variational.derivatives import LocalExpansion
-from mcgeo.variational.quadrature import angular_harmonics, half_line_rule
+from mcgeo.variational.quadrature import angular_harmonics, half_line_rule, orbit_harmonics
 
 Array = NDArray[np.float64]
 
@@ -92,7 +92,11 @@ class InteractionEnergy:
 
     def expansion(self, problem: Problem, metric: UnimodularMetric) -> LocalExpansion:
         """Energies above the background, gradients and Hessians in the flat coordinates about the metric."""
-        value, first, second = self.projections @ angular_harmonics(problem, metric, self.radii)
+        return self._along_hole(self.projections @ angular_harmonics(problem, metric, self.radii))
+
+    def _along_hole(self, projected: Array) -> LocalExpansion:
+        """Expansion from the harmonics' integrals with f, s f' and s^2 f'', shape (3, n, 5)."""
+        value, first, second = projected
         columns = [
             value[:, 0],
             -first[:, 1],
@@ -103,6 +107,28 @@ class InteractionEnergy:
         ]
         found = self.coefficients @ np.array(columns).T
         return LocalExpansion(found[:, 0], found[:, 1:3], found[:, [3, 5, 5, 4]].reshape(-1, 2, 2))
+
+    def background_expansion(self, problem: Problem) -> LocalExpansion:
+        """The background in the flat coordinates of the orbit about its metric, as one sample."""
+        radii, weights = half_line_rule(problem.reach)
+        harmonics = orbit_harmonics(problem, problem.orbit.metric, radii)[:, :, 0]
+        v = self.uniform / (4.0 * math.pi) * (harmonics @ (weights * radii))
+        return LocalExpansion(v[:1], v[None, 1:3], v[[3, 4, 4, 5]].reshape(1, 2, 2))
+
+    def joint_expansion(self, problem: Problem, metric: UnimodularMetric) -> LocalExpansion:
+        """Energies above the background in the flat coordinates of the orbit (first two) and of the hole."""
+        harmonics = orbit_harmonics(problem, metric, self.radii)
+        hole = self._along_hole(self.projections @ harmonics[0])
+        by_orbit = self.projections[0] @ harmonics[1:, :, 0].T
+        mixed = -(self.projections[1] @ harmonics[1:3, :, 1:3])
+        n = len(self.coefficients)
+        hessian = np.empty((n, 4, 4))
+        orbit = self.coefficients @ by_orbit
+        hessian[:, :2, :2] = orbit[:, [2, 3, 3, 4]].reshape(n, 2, 2)
+        hessian[:, :2, 2:] = np.moveaxis(self.coefficients @ mixed, 0, 1)
+        hessian[:, 2:, :2] = np.swapaxes(hessian[:, :2, 2:], 1, 2)
+        hessian[:, 2:, 2:] = hole.hessian
+        return LocalExpansion(hole.energy, np.concatenate([orbit[:, :2], hole.gradient], axis=1), hessian)
 
 
 @lru_cache(maxsize=_KEPT_LIQUIDS)

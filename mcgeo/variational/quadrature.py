@@ -123,7 +123,7 @@ def angular_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) 
     problem : Problem
     metric : UnimodularMetric
     radii : ndarray, shape (n,)
-        |k|.
+        |k|, ascending.
 
     Returns
     -------
@@ -134,20 +134,33 @@ def angular_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) 
     GeometryError
         If metric and orbit are farther apart than 4 (relative aspect ratio 55).
     """
+    wavevectors, waves = _polar_grid(problem, metric, radii, _mirror_axis(problem, metric))
+    found = np.zeros((len(radii), 5))
+    found[: len(wavevectors)] = problem.effective_potential(wavevectors) @ waves
+    return found
+
+
+def orbit_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) -> Array:
+    """The same of v and its derivatives by the orbit's metric, `Problem.orbit_derivatives`: shape (6, n, 5)."""
+    wavevectors, waves = _polar_grid(problem, metric, radii, None)
+    found = np.zeros((6, len(radii), 5))
+    found[:, : len(wavevectors)] = problem.orbit_derivatives(wavevectors) @ waves
+    return found
+
+
+def _polar_grid(problem: Problem, metric: UnimodularMetric, radii: Array, axis: float | None) -> tuple[Array, Array]:
+    """Wavevectors S k up to the reach of v(q), shape (n, n_angles, 2), and their harmonics, shape (n_angles, 5)."""
     distance = require_resolved(problem, metric)
     n_angles = _n_angles(max(distance, *(_distance(metric, other) for other in problem.interaction.metrics)))
-    axis = _mirror_axis(problem, metric)
     units, waves = _angles(n_angles, axis is not None)
     turn = metric.angle if axis is None else axis
     c, s = math.cos(turn), math.sin(turn)
     directions = metric.linear_map @ np.array([[c, -s], [s, c]]) @ units
-    found = np.zeros((len(radii), 5))
     # |S k|_L >= |k| exp(-distance/2): beyond the reach of v(q) every angle gives nothing.
     inside = int(np.searchsorted(radii, problem.reach * math.exp(0.5 * distance), side="right"))
     # Components along the first axis in memory: either one is then read in one piece.
     wavevectors = (radii[:inside, None] * directions[:, None, :]).transpose(1, 2, 0)
-    found[:inside] = problem.effective_potential(wavevectors) @ (waves @ _turned(turn))
-    return found
+    return wavevectors, waves @ _turned(turn)
 
 
 def _turned(angle: float) -> Array:

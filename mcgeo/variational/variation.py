@@ -11,7 +11,9 @@ wavefunction deformed as a whole. *two_metric*: both free; the surface over g is
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,8 +22,8 @@ from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.estimate.statistics import Estimate, jackknife_means
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
-from mcgeo.variational.derivatives import LocalExpansion, expansion
-from mcgeo.variational.energy_surface import DirectSurface, EnergySurface, Surface
+from mcgeo.variational.derivatives import LocalExpansion
+from mcgeo.variational.energy_surface import EnergySurface, Surface
 from mcgeo.variational.interaction_energy import InteractionEnergy, interaction_energy
 from mcgeo.variational.minimum import Minimum, metric_estimates, on_axis
 from mcgeo.variational.ray_table import rough_energies
@@ -31,7 +33,7 @@ Array = NDArray[np.float64]
 PROJECTED, RIGID, TWO_METRIC = "projected", "rigid", "two_metric"
 
 _NEWTON_STEPS = 12
-_TOLERANCE = 1e-7
+_TOLERANCE = 1e-6
 # A Newton step longer than this is cut: far from the minimum the Hessian promises too much.
 _LONGEST_STEP = 0.5
 
@@ -59,112 +61,129 @@ def kinetic_energy(problem: Problem, orbit_metric: UnimodularMetric, level_mixin
 
 
 @dataclass(frozen=True, eq=False)
-class RigidSurface(DirectSurface):
-    """E(g, g) with the kinetic energy; see `mcgeo.variational.energy_surface.Surface`."""
+class JointEnergy:
+    """E(g_L, g) of one liquid, kinetic energy included.
+
+    Parameters
+    ----------
+    interaction : InteractionEnergy
+        Of the samples, or of their average.
+    problem : Problem
+        Its mass is that of the kinetic energy.
+    level_mixing : float
+    """
+
+    interaction: InteractionEnergy
+    problem: Problem
+    level_mixing: float
+
+    def energies(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> Array:
+        """E(g_L, g) of every sample, shape (n_samples,)."""
+        seen = self.problem.with_mass(orbit_metric)
+        constant = self.interaction.background(seen) + kinetic_energy(self.problem, orbit_metric, self.level_mixing)
+        return constant + self.interaction.energies(seen, metric)
+
+    def expansion(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> LocalExpansion:
+        """Expansion of every sample in the flat coordinates of the orbit (first two) and of the hole."""
+        seen = self.problem.with_mass(orbit_metric)
+        found = self.interaction.joint_expansion(seen, metric)
+        background, kinetic = self.interaction.background_expansion(seen), self._kinetic_expansion(orbit_metric)
+        gradient, hessian = found.gradient.copy(), found.hessian.copy()
+        gradient[:, :2] += background.gradient + kinetic.gradient
+        hessian[:, :2, :2] += background.hessian + kinetic.hessian
+        return LocalExpansion(found.energy + background.energy + kinetic.energy, gradient, hessian)
+
+    def _kinetic_expansion(self, orbit_metric: UnimodularMetric) -> LocalExpansion:
+        """Tr(g_m^-1 g_L^(1/2) exp(x sigma_z + y sigma_x) g_L^(1/2)) to second order, as one sample."""
+        root = orbit_metric.linear_map
+        seen = root @ self.problem.mass_metric.inverse_matrix @ root
+        unit = (2 * self.problem.level + 1) / (4.0 * self.level_mixing)
+        trace = unit * np.trace(seen)
+        gradient = unit * np.array([[seen[0, 0] - seen[1, 1], 2.0 * seen[0, 1]]])
+        return LocalExpansion(np.array([trace]), gradient, trace * np.eye(2)[None])
+
+
+@dataclass(frozen=True, eq=False)
+class _VariedOrbit(ABC):
+    """A surface whose orbit varies with the hole: what its two kinds share."""
 
     occupations: PairOccupations
     problem: Problem
     level_mixing: float
 
+    @cached_property
+    def joint(self) -> JointEnergy:
+        """E(g_L, g) of the samples."""
+        return JointEnergy(interaction_energy(self.occupations), self.problem, self.level_mixing)
+
+    @cached_property
+    def joint_mean(self) -> JointEnergy:
+        """That of their mean."""
+        return JointEnergy(interaction_energy(self.occupations).average, self.problem, self.level_mixing)
+
+    @abstractmethod
+    def orbit_of(self, metric: UnimodularMetric) -> UnimodularMetric:
+        """The orbit metric that goes with a hole of metric g."""
+
+    @abstractmethod
+    def _following(self, joint: LocalExpansion) -> LocalExpansion:
+        """Expansion along the hole from the joint one, the orbit following."""
+
     def sample_energies(self, metric: UnimodularMetric) -> Array:
-        """E(g, g) of every block sample, shape (n_samples,)."""
-        return self._energies(metric, interaction_energy(self.occupations))
+        """E(g) of every block sample, shape (n_samples,)."""
+        return self.joint.energies(self.orbit_of(metric), metric)
 
     def energy(self, metric: UnimodularMetric) -> float:
-        """Mean E(g, g)."""
-        return float(self._energies(metric, interaction_energy(self.occupations).average)[0])
+        """Mean E(g)."""
+        return float(self.joint_mean.energies(self.orbit_of(metric), metric)[0])
 
-    def _energies(self, metric: UnimodularMetric, interaction: InteractionEnergy) -> Array:
-        rigid = self.problem.with_mass(metric)
-        constant = interaction.background(rigid) + kinetic_energy(self.problem, metric, self.level_mixing)
-        return constant + interaction.energies(rigid, metric)
+    def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
+        """Gradient and Hessian of every sample along the hole."""
+        return self._following(self.joint.expansion(self.orbit_of(metric), metric))
+
+    def mean_expansion(self, metric: UnimodularMetric) -> LocalExpansion:
+        """That of the mean."""
+        return self._following(self.joint_mean.expansion(self.orbit_of(metric), metric))
 
 
-@dataclass(frozen=True, eq=False)
-class TwoMetricSurface:
+class RigidSurface(_VariedOrbit):
+    """E(g, g) with the kinetic energy; see `mcgeo.variational.energy_surface.Surface`."""
+
+    def orbit_of(self, metric: UnimodularMetric) -> UnimodularMetric:
+        """The hole's own."""
+        return metric
+
+    def _following(self, joint: LocalExpansion) -> LocalExpansion:
+        both = np.concatenate([np.eye(2), np.eye(2)])
+        return LocalExpansion(joint.energy, joint.gradient @ both, both.T @ joint.hessian @ both)
+
+    def rough_energies(self, points: Array) -> Array:
+        """Energies one by one."""
+        centre = self.problem.orbit.metric
+        return np.array([self.energy(centre.displaced(*point)) for point in points])
+
+
+class TwoMetricSurface(_VariedOrbit):
     """Least E(g_L, g) over the orbit metric; see `mcgeo.variational.energy_surface.Surface`.
 
     The orbit is the one that is best for the mean; by the envelope theorem the samples' energies are right to first
     order, and derivatives along the hole follow from those of the joint energy: the gradient is the joint one, the
-    Hessian H_hh - H_ho H_oo^-1 H_oh. Derivatives by the hole are exact, those by the orbit taken by differences.
+    Hessian H_hh - H_ho H_oo^-1 H_oh.
     """
-
-    occupations: PairOccupations
-    problem: Problem
-    level_mixing: float
-
-    @property
-    def _interaction(self) -> InteractionEnergy:
-        return interaction_energy(self.occupations)
-
-    def joint_samples(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> Array:
-        """E(g_L, g) of every block sample, shape (n_samples,)."""
-        return self._joint(orbit_metric, metric, self._interaction)
-
-    def _joint(
-        self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, interaction: InteractionEnergy
-    ) -> Array:
-        seen = self.problem.with_mass(orbit_metric)
-        return self._constant(orbit_metric) + interaction.energies(seen, metric)
-
-    def _constant(self, orbit_metric: UnimodularMetric) -> float:
-        seen = self.problem.with_mass(orbit_metric)
-        return self._interaction.background(seen) + kinetic_energy(self.problem, orbit_metric, self.level_mixing)
 
     def orbit_of(self, metric: UnimodularMetric) -> UnimodularMetric:
         """The best orbit metric for a hole of metric g, by Newton steps from the mass metric."""
         orbit = self.problem.mass_metric
         for _ in range(_NEWTON_STEPS):
-
-            def mean(point: Array, orbit: UnimodularMetric = orbit) -> Array:
-                return self._joint(orbit.displaced(*point), metric, self._interaction.average)
-
-            step = expansion(mean, 2).downhill_step(_LONGEST_STEP)
+            joint = self.joint_mean.expansion(orbit, metric)
+            local = LocalExpansion(joint.energy, joint.gradient[:, :2], joint.hessian[:, :2, :2])
+            step = local.downhill_step(_LONGEST_STEP)
             orbit = orbit.displaced(*step)
             if float(np.hypot(*step)) < _TOLERANCE:
                 break
         return orbit
 
-    def sample_energies(self, metric: UnimodularMetric) -> Array:
-        """Least E(g_L, g) of every block sample, shape (n_samples,)."""
-        return self.joint_samples(self.orbit_of(metric), metric)
-
-    def energy(self, metric: UnimodularMetric) -> float:
-        """Mean of the least E(g_L, g)."""
-        return float(self._joint(self.orbit_of(metric), metric, self._interaction.average)[0])
-
-    def joint_expansion(self, orbit_metric: UnimodularMetric, metric: UnimodularMetric) -> LocalExpansion:
-        """Expansion of every sample in the flat coordinates of the orbit (first two) and of the hole."""
-        return self._joint_expansion(orbit_metric, metric, self._interaction)
-
-    def _joint_expansion(
-        self, orbit_metric: UnimodularMetric, metric: UnimodularMetric, interaction: InteractionEnergy
-    ) -> LocalExpansion:
-        def along_hole(orbit: UnimodularMetric) -> LocalExpansion:
-            local = interaction.expansion(self.problem.with_mass(orbit), metric)
-            return local.above(self._constant(orbit))
-
-        def energy_and_gradient(point: Array) -> Array:
-            local = along_hole(orbit_metric.displaced(*point))
-            return np.concatenate([local.energy, local.gradient.ravel()])
-
-        hole = along_hole(orbit_metric)
-        n = len(hole.energy)
-        by_orbit = expansion(energy_and_gradient, 2)
-        mixed = by_orbit.gradient[n:].reshape(n, 2, 2)
-        hessian = np.block([[by_orbit.hessian[:n], np.swapaxes(mixed, 1, 2)], [mixed, hole.hessian]])
-        return LocalExpansion(hole.energy, np.concatenate([by_orbit.gradient[:n], hole.gradient], axis=1), hessian)
-
-    def expansion_about(self, metric: UnimodularMetric) -> LocalExpansion:
-        """Gradient and Hessian of every sample along the hole, the orbit following."""
-        return self._following(metric, self._interaction)
-
-    def mean_expansion(self, metric: UnimodularMetric) -> LocalExpansion:
-        """That of the mean."""
-        return self._following(metric, self._interaction.average)
-
-    def _following(self, metric: UnimodularMetric, interaction: InteractionEnergy) -> LocalExpansion:
-        joint = self._joint_expansion(self.orbit_of(metric), metric, interaction)
+    def _following(self, joint: LocalExpansion) -> LocalExpansion:
         oo, oh, hh = joint.hessian[:, :2, :2], joint.hessian[:, :2, 2:], joint.hessian[:, 2:, 2:]
         # The samples' own orbits are a small step off the mean's; the gradient follows them.
         shift = np.linalg.solve(oo, np.concatenate([oh, joint.gradient[:, :2, None]], axis=-1))
@@ -198,7 +217,7 @@ def orbit_estimates(surface: Surface, minimum: Minimum) -> tuple[Estimate, Estim
         fixed = surface.problem.orbit.metric
         return Estimate(fixed.stretch, 0.0), Estimate(fixed.angle, 0.0)
     orbit = surface.orbit_of(minimum.metric)
-    local = surface.joint_expansion(orbit, minimum.metric)
+    local = surface.joint.expansion(orbit, minimum.metric)
     gradients, hessians = jackknife_means(local.gradient), jackknife_means(local.hessian)
     steps = np.asarray(-np.linalg.solve(hessians, gradients[..., None])[:, :2, 0])
     return metric_estimates(on_axis(orbit, surface.problem.mass_metric), steps)

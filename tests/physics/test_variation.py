@@ -95,10 +95,10 @@ def test_joint_minimum_is_stationary_in_both_metrics(third: Liquid) -> None:
     hole = find_minimum(surface).metric
     orbit = surface.orbit_of(hole)
     step = 1e-3
-    at = surface.joint_samples(orbit, hole).mean()
+    at = surface.joint.energies(orbit, hole).mean()
 
     def moved(point: np.ndarray) -> float:
-        return float(surface.joint_samples(orbit.displaced(*point[:2]), hole.displaced(*point[2:])).mean())
+        return float(surface.joint.energies(orbit.displaced(*point[:2]), hole.displaced(*point[2:])).mean())
 
     for direction in step * np.eye(4):
         up, down = moved(direction), moved(-direction)

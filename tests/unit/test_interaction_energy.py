@@ -10,9 +10,11 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
+from mcgeo.errors import GeometryError
 from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.interaction import INTERACTIONS, Coulomb, Interaction
+from mcgeo.problem.landau_level import form_factor_derivatives, form_factor_sq
 from mcgeo.problem.problem import Problem
 from mcgeo.problem.tilted_field import TiltedField
 from mcgeo.states.base import FERMIONS
@@ -20,6 +22,7 @@ from mcgeo.variational import quadrature
 from mcgeo.variational.derivatives import expansion
 from mcgeo.variational.interaction_energy import basis_derivatives, interaction_energy
 from mcgeo.variational.ray_table import rough_energies
+from mcgeo.variational.variation import JointEnergy
 
 OCCUPATIONS = PairOccupations(
     "test",
@@ -149,3 +152,37 @@ def test_no_metric_is_no_matter_for_the_isotropic_problem() -> None:
     found = interaction_energy(OCCUPATIONS).expansion(Problem(ISOTROPIC, Coulomb()), ISOTROPIC)
     np.testing.assert_allclose(found.gradient, 0.0, atol=1e-14)
     np.testing.assert_allclose(found.hessian, found.hessian[:, :1, :1] * np.eye(2), atol=1e-14)
+
+
+@pytest.mark.parametrize("level", [0, 1, 2])
+def test_derivatives_of_the_form_factor_against_differences(level: int) -> None:
+    q, orbit = np.array([[0.7, -0.4], [2.0, 1.1], [1e-3, 4.0]]), UnimodularMetric(0.8, 0.5)
+    found = form_factor_derivatives(q, level, orbit)
+    by_differences = expansion(lambda point: form_factor_sq(q, level, orbit.displaced(*point)), 2)
+    np.testing.assert_allclose(found[0], by_differences.energy, rtol=1e-14)
+    np.testing.assert_allclose(found[1:3].T, by_differences.gradient, atol=1e-5)
+    np.testing.assert_allclose(found[3:].T, by_differences.hessian[:, [0, 0, 1], [0, 1, 1]], atol=1e-5)
+    assert np.min(np.max(np.abs(found), axis=1)) > 0.01
+
+
+@pytest.mark.parametrize("level", [0, 2])
+@pytest.mark.parametrize("interaction", INTERACTIONS_OF_EVERY_KIND, ids=lambda v: v.name[:25])
+def test_joint_derivatives_against_differences(interaction: Interaction, level: int) -> None:
+    orbit, hole = UnimodularMetric(0.6, -0.3), UnimodularMetric(0.5, 0.4)
+    joint = JointEnergy(interaction_energy(OCCUPATIONS), Problem(UnimodularMetric(0.9), interaction, level), 2.0)
+    found = joint.expansion(orbit, hole)
+    by_differences = expansion(lambda point: joint.energies(orbit.displaced(*point[:2]), hole.displaced(*point[2:])), 4)
+    np.testing.assert_allclose(found.energy, by_differences.energy, atol=1e-13)
+    np.testing.assert_allclose(found.gradient, by_differences.gradient, atol=3e-6)
+    np.testing.assert_allclose(found.hessian, by_differences.hessian, atol=3e-5)
+
+
+def test_pseudopotentials_do_not_know_the_orbit() -> None:
+    interaction = INTERACTIONS["pseudopotentials"]({1: 1.0, 3: -0.3})
+    found = Problem(UnimodularMetric(0.6), interaction).orbit_derivatives(np.array([[0.3, 0.2], [1.0, -2.0]]))
+    assert np.all(found[1:] == 0.0) and np.all(found[0] != 0.0)
+
+
+def test_orbit_of_a_tilted_field_does_not_vary() -> None:
+    with pytest.raises(GeometryError, match="across the plane only"):
+        Problem(ISOTROPIC, Coulomb(), 0, TiltedField(0.7, 2.0)).orbit_derivatives(np.array([[0.3, 0.2]]))
