@@ -98,10 +98,10 @@ class SharedAnswers:
 def _isotropic_question(keys: Mapping[str, Any]) -> str:
     """The keys that a response depends on: neither mass nor tilt, and level mixing only where the orbit varies."""
     kept = {key: value for key, value in keys.items() if key != "mass"}
-    if kept["tilt"] is not None:
+    if kept.get("tilt") is not None:
         kept["tilt"] = {k: v for k, v in kept["tilt"].items() if k not in ("angle_degrees", "direction_degrees")}
     if kept["variation"] == PROJECTED:
-        del kept["level_mixing"]
+        kept.pop("level_mixing", None)
     return json.dumps(kept, sort_keys=True)
 
 
