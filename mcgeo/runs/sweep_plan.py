@@ -44,7 +44,7 @@ class Point(NamedTuple):
     liquid : str
         Hash of what its sampling depends on.
     family : str
-        Hash of all of the problem but the mass: what points of one family share is found once.
+        Hash of all of the problem but mass and tilt: what points of one family share is found once.
     """
 
     position: int
@@ -200,7 +200,8 @@ def point_of(config: Config, position: int = 0) -> Point:
         decides = problem if config.sampling.target_quantity == STRETCH else problem["interaction"]
         sampling = {**sampling, "target_of": decides}
     name = _hash({**sampling, "problem": problem, "material": data["material"]})
-    return Point(position, name, _hash(sampling), _hash({key: problem[key] for key in problem if key != "mass"}))
+    family = _hash({key: value for key, value in problem.items() if key not in ("mass", "tilt")})
+    return Point(position, name, _hash(sampling), family)
 
 
 def _hash(keys: Mapping[str, Any]) -> str:

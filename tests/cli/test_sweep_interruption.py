@@ -98,7 +98,9 @@ def is_alive(process: int) -> bool:
 
 
 @pytest.mark.parametrize(
-    ("number", "code", "workers"), [(signal.SIGINT, 130, 1), (signal.SIGTERM, 143, 2)], ids=["one", "two"]
+    ("number", "code", "workers"),
+    [pytest.param(signal.SIGINT, 130, 1, marks=pytest.mark.long), (signal.SIGTERM, 143, 2)],
+    ids=["one", "two"],
 )
 def test_a_stopped_sweep_goes_on(
     tmp_path: Path, undisturbed: tuple[bytes, bytes], number: signal.Signals, code: int, workers: int
