@@ -12,6 +12,7 @@ beta is linear in X: clearing S(q) wave by wave clears every linear function of 
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -24,10 +25,12 @@ USED, FEW_BLOCKS, NOT_ZERO = "used", "few_blocks", "not_zero"
 
 LARGEST_Z = 5.0
 _FOLDS = 16
-# Blocks outside a fold per control: with ten the noise of beta adds a tenth to the variance that is left.
+# Blocks outside a fold per control: with ten the noise of beta adds a tenth to the variance that is left. Of n blocks
+# no more than sqrt(n) controls are used: cleared blocks of two folds are correlated by tr(M M)/n^2, M = <c c^T e> with
+# controls of unit variance and e the part of X they do not explain, and the scatter of blocks does not show that.
 _BLOCKS_PER_CONTROL = 10
 # Added to the correlation matrix of the controls: bounds beta where neighbouring Gaussians are nearly the same control.
-_RIDGE = 1e-6
+_RIDGE = 1e-8
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,7 +44,7 @@ class Cleared:
     z : ndarray, shape (n_controls,)
         Means of the controls in standard errors, as normal deviates of equal tail probability.
     verdict : str
-        ``used``; ``few_blocks``: too few for beta; ``not_zero``: a control's mean is more than five errors from zero.
+        ``used``; ``few_blocks``: too few for any; ``not_zero``: a control's mean is more than five errors from zero.
     """
 
     blocks: Array
@@ -76,17 +79,19 @@ def cleared(blocks: Array, controls: Array, z: Array) -> Cleared:
     ----------
     blocks : ndarray, shape (n_blocks, n_walkers, ...)
     controls : ndarray, shape (n_blocks, n_walkers, n_controls)
-        At the same configurations.
+        At the same configurations. Where blocks are too few for all of them the first ones are used.
     z : ndarray, shape (n_controls,)
         From `control_z`.
     """
-    n_blocks, n_walkers, n_controls = controls.shape
+    n_blocks, n_walkers, _ = controls.shape
     fold = _fold_labels(n_blocks, n_walkers)
     outside = fold.size - int(np.bincount(fold.ravel()).max())
     if not np.all(np.abs(z) <= LARGEST_Z):
         return Cleared(blocks, z, NOT_ZERO)
-    if outside < _BLOCKS_PER_CONTROL * n_controls:
+    n_used = min(controls.shape[2], outside // _BLOCKS_PER_CONTROL, math.isqrt(outside))
+    if n_used == 0:
         return Cleared(blocks, z, FEW_BLOCKS)
+    controls = controls[..., :n_used]
     flat = blocks.reshape(n_blocks, n_walkers, -1)
     # In units of their overall scatter, so that a control that is quiet outside a fold gets no large coefficient.
     scaled = controls / controls.std(axis=(0, 1))

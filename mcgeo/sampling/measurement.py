@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.geometry.cell import Waves
+from mcgeo.kernels.density_controls import DensityTables, add_density_controls, density_scratch, density_tables
 from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.pair_histogram import add_pair_counts
 from mcgeo.kernels.stein import POWERS, SteinTables, add_controls, stein_tables
@@ -39,13 +40,14 @@ class TorusMeasurement:
     trace_weights: Array
     n_bins: int
     stein: SteinTables
+    densities: DensityTables
 
     @property
     def shapes(self) -> dict[str, tuple[int, ...]]:
         """See `mcgeo.sampling.blocks.Measurement`."""
         return {
             f"means/{STRUCTURE}": (len(self.waves.integers),),
-            f"means/{CONTROLS}": (self.stein.n_controls,),
+            f"means/{CONTROLS}": (self.stein.n_controls + self.densities.n_controls,),
             f"counts/{PAIRS}": (self.n_bins,),
         }
 
@@ -55,9 +57,9 @@ class TorusMeasurement:
         """Run one block of one group; see `mcgeo.sampling.blocks.Measurement`.
 
         Means: ``structure``, S(q) = |rho_q|^2 / N, shape (n_walkers, n_waves); ``controls``, of mean zero, at the same
-        configurations where the state has forces, shape (n_walkers, n_controls). Counts: ``pairs``, pair distances in
-        bins of `BIN_WIDTH` l_B, summed over `configurations_counted`, shape (n_walkers, n_bins). Trace: the weighted
-        sum of S(q).
+        configurations where the state has forces, shape (n_walkers, n_controls), those of Gaussians of the pair
+        distance before those of densities. Counts: ``pairs``, pair distances in bins of `BIN_WIDTH` l_B, summed over
+        `configurations_counted`, shape (n_walkers, n_bins). Trace: the weighted sum of S(q).
 
         Raises
         ------
@@ -68,7 +70,9 @@ class TorusMeasurement:
         cell = self.state.frame.isotropic
         sums = wave_sums(self.tables, self.trace_weights / n, n)
         counts = np.zeros((self.n_bins, LANES), dtype=np.int64)
-        controls = np.zeros((len(POWERS), LANES))
+        gaussians = np.zeros((len(POWERS), LANES))
+        densities = np.zeros((self.densities.n_controls, LANES))
+        scratch = density_scratch(self.densities, n)
         trace = np.empty((n_measurements, LANES))
         forces = None
         group.refresh()
@@ -82,7 +86,8 @@ class TorusMeasurement:
             trace[k] = sums.scalar[0]
             forces = group.forces()
             if forces is not None:
-                add_controls(self.stein, group.a, group.b, forces, controls)
+                add_controls(self.stein, group.a, group.b, forces, gaussians)
+                add_density_controls(self.densities, group.a, group.b, forces, scratch, densities)
             if k % _MEASUREMENTS_PER_HISTOGRAM == 0:
                 add_pair_counts(
                     group.a, group.b, cell.tau.real, cell.tau.imag, cell.side, BIN_WIDTH, counts
@@ -90,7 +95,8 @@ class TorusMeasurement:
         proposals = n_measurements * sweeps_between * n * self.state.proposals_per_sweep
         means = {STRUCTURE: sums.total.T / (n * n_measurements)}
         if forces is not None:
-            means[CONTROLS] = controls[: self.stein.n_controls].T / n_measurements
+            controls = np.concatenate([gaussians[: self.stein.n_controls], densities])
+            means[CONTROLS] = controls.T / n_measurements
         return BlockRecord(
             means,
             {PAIRS: counts.T.copy()},
@@ -106,4 +112,5 @@ def torus_measurement(state: TrialState, waves: Waves, trace_weights: Array) -> 
     tables = wave_tables(waves.integers, cell.tau.real)
     n_bins = int(cell.largest_radius / BIN_WIDTH)
     stein = stein_tables(cell.tau, cell.side, state.n_electrons)
-    return TorusMeasurement(state, waves, tables, np.asarray(trace_weights, dtype=float), n_bins, stein)
+    densities = density_tables(cell.tau, cell.side, state.n_electrons)
+    return TorusMeasurement(state, waves, tables, np.asarray(trace_weights, dtype=float), n_bins, stein, densities)

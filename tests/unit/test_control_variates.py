@@ -52,10 +52,21 @@ def test_refusals():
     controls, blocks = correlated_controls(random, 3), random.standard_normal((*SHAPE, 2))
     off_zero = cleared(blocks, controls, np.array([0.0, -5.1, 0.0]))
     undefined = cleared(blocks, controls, np.array([0.0, np.nan, 0.0]))
-    few = cleared(blocks[:1], controls[:1], np.zeros(3))
+    few = cleared(blocks[:1, :9], controls[:1, :9], np.zeros(3))
     assert (off_zero.verdict, undefined.verdict, few.verdict) == (NOT_ZERO, NOT_ZERO, FEW_BLOCKS)
     assert off_zero.blocks is blocks
     assert cleared(blocks, controls, np.full(3, 4.9)).verdict == USED
+
+
+def test_few_blocks_use_the_first_controls():
+    random = np.random.default_rng(7)
+    controls = correlated_controls(random, 3)
+    controls = controls[:2, :13]
+    blocks = (controls @ np.ones(3))[..., None]
+    found = cleared(blocks, controls, np.zeros(3))
+    expected = cleared(blocks, controls[..., :2], np.zeros(2))
+    assert found.verdict == USED and found.z.shape == (3,)
+    np.testing.assert_array_equal(found.blocks, expected.blocks)
 
 
 def test_a_lone_walker_is_folded_along_its_blocks():
