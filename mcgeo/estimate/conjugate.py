@@ -52,4 +52,5 @@ def conjugate_occupations(occupations: PairOccupations) -> PairOccupations:
         occupations.statistics,
         occupations.m,
         r**2 * occupations.samples,
+        None if occupations.free_errors is None else r**2 * occupations.free_errors,
     )

@@ -73,6 +73,9 @@ class PairOccupations:
         Relative angular momenta of one parity, from the lowest.
     samples : ndarray, shape (n_samples, n_m)
         Independent samples of c_m; every one obeys the sum rules. Errors of all that follows come from them.
+    free_errors : ndarray, shape (n_m,), optional
+        Standard errors of single c_m by a fit without the bounds n_m >= 0: where one is in force samples stand still,
+        and their neighbours, tied to them by the rules, scatter too little. What is smooth in m does not notice.
     """
 
     label: str
@@ -80,6 +83,7 @@ class PairOccupations:
     statistics: str
     m: NDArray[np.int64]
     samples: Array
+    free_errors: Array | None = None
 
     @property
     def coefficients(self) -> Array:
@@ -92,9 +96,10 @@ class PairOccupations:
         return -1.0 if self.statistics == FERMIONS else 1.0
 
     def occupation(self, index: int) -> Estimate:
-        """n_m = 1 + c_m."""
+        """n_m = 1 + c_m; the error is of either sign, also where n_m is held at its bound."""
         c = mean_estimate(self.samples[:, index])
-        return Estimate(1.0 + c.value, c.error, c.autocorrelation_time, c.effective_samples)
+        error = c.error if self.free_errors is None else float(self.free_errors[index])
+        return Estimate(1.0 + c.value, error, c.autocorrelation_time, c.effective_samples)
 
     def basis(self, norm: Array) -> Array:
         """4 nu L_m(q^2) exp(-q^2/2) for |q| of shape (n_q,): shape (n_m, n_q)."""
@@ -140,12 +145,14 @@ def fit_occupations(state: TrialState, norm: Array, samples: Array) -> PairOccup
     fit = occupation_fit(state, norm, samples)
     order, values = sum_rules(state.filling, state.statistics, state.shift)
     rules = rule_matrix(order, fit.m)
-    pinned = fit.m < state.first_occupied
+    absent = fit.m < state.first_occupied
     target = (fit.data.mean(axis=0) - fit.offset) * fit.weight
-    pinned |= _bounds_in_force(fit.basis * fit.weight[:, None], target, rules, values, fit.penalty, pinned)
-    response, constant = _linear_solution(fit.basis, fit.weight, rules, values, fit.penalty, pinned)
+    bound = _bounds_in_force(fit.basis * fit.weight[:, None], target, rules, values, fit.penalty, absent)
+    response, constant = _linear_solution(fit.basis, fit.weight, rules, values, fit.penalty, absent | bound)
     coefficients = (fit.data - fit.offset) @ response.T + constant
-    return PairOccupations(state.label, state.filling, state.statistics, fit.m, coefficients)
+    free, _ = _linear_solution(fit.basis, fit.weight, rules, values, fit.penalty, absent)
+    errors = (fit.data @ free.T).std(axis=0, ddof=1) / np.sqrt(len(fit.data))
+    return PairOccupations(state.label, state.filling, state.statistics, fit.m, coefficients, errors)
 
 
 class OccupationFit(NamedTuple):

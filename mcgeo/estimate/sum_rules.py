@@ -23,7 +23,8 @@ def sum_rule_z(state: TrialState, norm: Array, samples: Array) -> dict[str, floa
     A c - b over the root of A C A^T, C = (X^T W^2 X + P^2)^-1 the covariance of the fit with its penalty read as a
     prior: waves of a finite cell start at some q, and what the rules say of q = 0 is partly the prior's. Deviations
     are therefore smaller than those of a normal deviate. A compressible liquid (no shift) has none: its S(q) goes on
-    with a power |q|^3 that a finite cell does not resolve.
+    with a power |q|^3 that a finite cell does not resolve. They are the infinite liquid's: in a cell of a few l_B the
+    pairs of opposite sides see one another, and large deviations say that such a liquid is not what was sampled.
 
     Parameters
     ----------

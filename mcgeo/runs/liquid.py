@@ -130,15 +130,19 @@ class Liquid(Sampled):
 
     @property
     def rules(self) -> dict[str, float]:
-        """Sum rules of the pair occupations; and pairs counted one by one against those that S(q) tells of."""
-        found = sum_rule_z(self.states[0], self.norm, self._sampled_structure)
-        if self.q_max >= _WHOLE_STRUCTURE:
-            counts = self.blocks.counts[PAIRS]
-            radius, electrons = BIN_WIDTH * counts.shape[-1], self.states[0].n_electrons
-            expected = pairs_within(self.frame, self.norm, self.blocks.means[STRUCTURE], electrons, radius)
-            difference = counts.sum(axis=-1) / self.configurations_per_count - expected
-            found["pair_count"] = float(control_z(self.independent(difference[..., None]))[0])
-        return found
+        """Pairs counted one by one against those that S(q) tells of."""
+        if self.q_max < _WHOLE_STRUCTURE:
+            return {}
+        counts = self.blocks.counts[PAIRS]
+        radius, electrons = BIN_WIDTH * counts.shape[-1], self.states[0].n_electrons
+        expected = pairs_within(self.frame, self.norm, self.blocks.means[STRUCTURE], electrons, radius)
+        difference = counts.sum(axis=-1) / self.configurations_per_count - expected
+        return {"pair_count": float(control_z(self.independent(difference[..., None]))[0])}
+
+    @property
+    def bulk_rules(self) -> dict[str, float]:
+        """Sum rules of the infinite liquid's pair occupations."""
+        return sum_rule_z(self.states[0], self.norm, self._sampled_structure)
 
     @cached_property
     def structure_samples(self) -> Array:

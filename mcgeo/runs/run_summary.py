@@ -72,7 +72,7 @@ def diagnostics_summary(result: Sampled) -> dict[str, Any]:
             "plateau": health.blocking.reached,
         },
         "drift": health.drift,
-        "rules_z": dict(health.rules),
+        "rules_z": {**health.rules, **result.bulk_rules},
         **({} if target is None else {"target": target}),
         **result.control_summary,
     }

@@ -196,7 +196,12 @@ class Sampled(ABC):
     @property
     @abstractmethod
     def rules(self) -> Mapping[str, float]:
-        """What must come out exactly, in standard errors of what was found."""
+        """What must come out exactly at any size, in standard errors of what was found."""
+
+    @property
+    def bulk_rules(self) -> Mapping[str, float]:
+        """What must come out exactly in an infinite liquid; a cell too thin for it is no fault of the sampling."""
+        return {}
 
     @cached_property
     def diagnostics(self) -> Diagnostics:
