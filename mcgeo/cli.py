@@ -96,7 +96,13 @@ def _add_sweep(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     sweep.add_argument("--out", type=Path, metavar="DIR", help="folder of the sweep (default: NAME_sweep here)")
     sweep.add_argument("--workers", type=_positive, metavar="N", help="processes (default: all cores allowed)")
     sweep.add_argument(
-        "--threads", type=_positive, metavar="N", help="threads of every sampling (default: cores shared out)"
+        "--scheduler", metavar="WHERE", help="workers of a dask cluster instead: tcp://HOST:PORT, or a scheduler file"
+    )
+    sweep.add_argument(
+        "--threads",
+        type=_positive,
+        metavar="N",
+        help="threads of every sampling (default: cores shared out; 1 on a cluster)",
     )
     sweep.add_argument("--retry", action="store_true", help="try points again that have failed before")
     sweep.add_argument(

@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 
 from mcgeo.commands.run import CONVERGED_CODE, NOT_CONVERGED_CODE, Answer, as_json
+from mcgeo.errors import ConfigError
 from mcgeo.report.sweep_text import status_text, sweep_text
 from mcgeo.report.tables import write_csv, write_json
 from mcgeo.runs import sweep as engine
@@ -38,7 +39,7 @@ def run_sweep(arguments: argparse.Namespace) -> Answer:
         return _status(arguments)
     plan = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
     folder = arguments.out or sweep_folder(arguments.config)
-    costs, crew = costs_of(plan, liquid_plans(plan)), _crew(arguments)
+    costs, crew = costs_of(plan, liquid_plans(plan)), _crew(arguments, plan, folder)
     with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
         note_run(folder, plan, crew)
         engine.run_sweep(plan, folder, crew, costs, retry=arguments.retry, quiet=arguments.quiet)
@@ -55,9 +56,31 @@ def _status(arguments: argparse.Namespace) -> Answer:
     return as_json(found) if arguments.json else status_text(found), CONVERGED_CODE
 
 
-def _crew(arguments: argparse.Namespace) -> Crew:
+def _crew(arguments: argparse.Namespace, plan: SweepPlan, folder: Path) -> Crew:
+    scheduler = arguments.scheduler or _scheduler_of(plan)
+    if scheduler is not None and arguments.workers is None:
+        return _cluster(scheduler, folder, arguments.threads or 1)
+    if arguments.scheduler is not None:
+        raise ConfigError(["--scheduler and --workers: give one; the cluster's workers are started beside it"])
     cores = available_threads()
     return LocalCrew(arguments.workers or cores, cores, arguments.threads)
+
+
+def _scheduler_of(plan: SweepPlan) -> str | None:
+    given = plan.settings.scheduler
+    if given is None or "://" in given:
+        return given
+    return str(Path(plan.file).parent / given)
+
+
+def _cluster(scheduler: str, folder: Path, threads: int) -> Crew:
+    try:
+        from mcgeo.runs.cluster import ClusterCrew
+    except ModuleNotFoundError as fault:
+        if fault.name not in ("distributed", "dask"):
+            raise
+        raise ConfigError([f"{scheduler}: workers of a scheduler need dask: pip install 'mcgeo[cluster]'"]) from fault
+    return ClusterCrew(scheduler, folder, threads)
 
 
 def write_tables(plan: SweepPlan, table: SweepTable, folder: Path) -> dict[str, Any]:

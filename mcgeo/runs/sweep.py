@@ -113,7 +113,9 @@ class _Run:
     ) -> None:
         self._plan, self._folder, self._crew, self._costs = plan, folder, crew, costs
         self._queue = Queue(crew)
-        self._sign = crew.stop_sign(_stop_sign(folder).path)
+        # Workers of a cluster may stand in other folders than this process.
+        self._place = folder.absolute()
+        self._sign = crew.stop_sign(_stop_sign(self._place).path)
         self._in_flight: dict[Future[Report], Job] = {}
         self._breaks = 0
         self._any_point = {liquid: points[0] for liquid, points in wanted.items()}
@@ -170,13 +172,13 @@ class _Run:
     def _submit(self, executor: Executor, job: Job) -> Future[Report]:
         if not job.points:
             keys = self._plan.resolved(self._any_point[job.liquid])
-            return executor.submit(sample_liquid, self._folder, job.liquid, keys, job.threads, self._sign)
+            return executor.submit(sample_liquid, self._place, job.liquid, keys, job.threads, self._sign)
         resolved = [self._plan.resolved(point) for point in job.points]
         questions = [
             Question(point.name, keys["problem"], keys["material"])
             for point, keys in zip(job.points, resolved, strict=True)
         ]
-        return executor.submit(find_optima, self._folder, job.liquid, resolved[0]["state"], questions, self._sign)
+        return executor.submit(find_optima, self._place, job.liquid, resolved[0]["state"], questions, self._sign)
 
     def _take(self, future: Future[Report], job: Job, stop: StopFlag) -> bool:
         """What a task reports; true if the executor has broken."""

@@ -20,6 +20,12 @@ def _not_empty(values: tuple[Any, ...]) -> tuple[Any, ...]:
     return values
 
 
+def _named(scheduler: str) -> str:
+    if not scheduler:
+        raise rule("must be an address, as tcp://node7:8786, or the path of a scheduler file")
+    return scheduler
+
+
 class ListAxisConfig(Group):
     """A key with the values it takes."""
 
@@ -114,4 +120,9 @@ class SweepConfig(Group):
         default=(),
         description="Points left out: those with the given value of every given key, or inside its range, as in "
         "{problem.mass.ratio: {above: 4, below: 9}} [1].",
+    )
+    scheduler: Annotated[str, AfterValidator(_named)] | None = Field(
+        default=None,
+        description="Scheduler of a dask cluster whose workers do the sweep, as tcp://node7:8786, or its scheduler "
+        "file, relative to the configuration; null: processes on this machine.",
     )

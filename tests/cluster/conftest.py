@@ -1,0 +1,45 @@
+"""A small sweep, and what one process makes of it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from mcgeo.cli import main
+
+SWEEP = """\
+state: {kind: laughlin, exponent: 3, electrons: 4}
+sampling: {walkers: 16, sweeps: 320, equilibration: 40, blocks: 8, seed: 3, checkpoint_seconds: 0}
+sweep:
+  axes:
+    - {key: sampling.seed, values: [3, 4]}
+    - {key: problem.mass.ratio, from: 1.5, to: 3, points: 3}
+"""
+TABLES = ("sweep.csv", "sweep.h5")
+
+
+@pytest.fixture(scope="session")
+def serial(tmp_path_factory: pytest.TempPathFactory) -> dict[str, bytes]:
+    """Tables of the sweep, made by one process."""
+    folder = tmp_path_factory.mktemp("serial")
+    (folder / "run.yaml").write_text(SWEEP)
+    assert main(["sweep", str(folder / "run.yaml"), "--out", str(folder / "out"), "--workers", "1", "-q"]) in (0, 3)
+    return tables(folder / "out")
+
+
+def tables(folder: Path) -> dict[str, bytes]:
+    """Content of the tables in a sweep's folder."""
+    return {name: (folder / name).read_bytes() for name in TABLES}
+
+
+@pytest.fixture
+def swept(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Iterator[Path]:
+    """A current folder with the sweep in ``run.yaml``, in which a lost scheduler is given up soon."""
+    import dask
+
+    (tmp_path / "run.yaml").write_text(SWEEP)
+    monkeypatch.chdir(tmp_path)
+    with dask.config.set({"distributed.comm.timeouts.connect": "5s"}):
+        yield tmp_path
