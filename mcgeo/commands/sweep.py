@@ -19,8 +19,9 @@ from mcgeo.runs.executors import Crew, LocalCrew, single_threaded_libraries
 from mcgeo.runs.lock import run_lock
 from mcgeo.runs.sweep_estimate import costs_of, liquid_plans
 from mcgeo.runs.sweep_file import write_sweep_file
+from mcgeo.runs.sweep_note import noted_run
 from mcgeo.runs.sweep_plan import SweepPlan, load_sweep
-from mcgeo.runs.sweep_status import note_run, noted_run, sweep_status
+from mcgeo.runs.sweep_status import sweep_status
 from mcgeo.runs.sweep_table import DONE, FAILED, MISSING, SweepTable, sweep_table
 
 INCOMPLETE_CODE = 4
@@ -41,7 +42,6 @@ def run_sweep(arguments: argparse.Namespace) -> Answer:
     folder = arguments.out or sweep_folder(arguments.config)
     costs, crew = costs_of(plan, liquid_plans(plan)), _crew(arguments, plan, folder)
     with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
-        note_run(folder, plan, crew)
         engine.run_sweep(plan, folder, crew, costs, retry=arguments.retry, quiet=arguments.quiet)
         table = sweep_table(plan, folder)
         summary = write_tables(plan, table, folder)

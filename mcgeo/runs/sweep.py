@@ -15,6 +15,7 @@ from pathlib import Path
 from mcgeo.errors import McgeoError, RunInterrupted
 from mcgeo.runs.executors import Crew
 from mcgeo.runs.signals import StopFlag, stop_on_signals
+from mcgeo.runs.sweep_note import note_run
 from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
@@ -137,9 +138,11 @@ class _Run:
     def until_done(self, stop: StopFlag) -> None:
         """Hand out jobs and take reports until all is done or the flag is set, and no worker is at work."""
         if not self._queue:
+            note_run(self._folder, self._plan, self._crew)
             return
         executor = self._crew.start()
         try:
+            note_run(self._folder, self._plan, self._crew)
             while self._in_flight or (self._queue and not stop.is_set()):
                 broken = not stop.is_set() and self._hand_out(executor, stop)
                 if stop.is_set():
