@@ -104,6 +104,14 @@ def _add_sweep(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
         metavar="N",
         help="threads of every sampling (default: cores shared out; 1 on a cluster)",
     )
+    sweep.add_argument("--shard", metavar="I/N", help="only the I-th of N parts, for a job of an array; then --gather")
+    sweep.add_argument(
+        "--gather",
+        type=Path,
+        nargs="*",
+        metavar="DIR",
+        help="run nothing: make the tables, bringing rows and liquids from these folders to that of --out",
+    )
     sweep.add_argument("--retry", action="store_true", help="try points again that have failed before")
     sweep.add_argument(
         "--status", action="store_true", help="how far the sweep of CONFIG, or in the folder CONFIG, is"

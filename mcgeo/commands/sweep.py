@@ -17,10 +17,12 @@ from mcgeo.runs import sweep as engine
 from mcgeo.runs.build import available_threads
 from mcgeo.runs.executors import Crew, LocalCrew, single_threaded_libraries
 from mcgeo.runs.lock import run_lock
+from mcgeo.runs.sweep import Costs
 from mcgeo.runs.sweep_estimate import costs_of, liquid_plans
 from mcgeo.runs.sweep_file import write_sweep_file
 from mcgeo.runs.sweep_note import noted_run
 from mcgeo.runs.sweep_plan import SweepPlan, load_sweep
+from mcgeo.runs.sweep_shards import gather, note_shard, shard_from, shard_plans, unfinished_shards
 from mcgeo.runs.sweep_status import sweep_status
 from mcgeo.runs.sweep_table import DONE, FAILED, MISSING, SweepTable, sweep_table
 
@@ -35,17 +37,47 @@ def sweep_folder(config: Path) -> Path:
 
 
 def run_sweep(arguments: argparse.Namespace) -> Answer:
-    """``mcgeo sweep``: do what is missing, then write the tables; with ``--status`` tell how far it is."""
+    """``mcgeo sweep``: do what is missing, then write the tables; with ``--status`` tell how far it is.
+
+    ``--shard`` does a part and leaves the tables to ``--gather``.
+    """
     if arguments.status:
         return _status(arguments)
+    if arguments.shard is not None and arguments.gather is not None:
+        raise ConfigError(["--shard and --gather: give one; the tables are made when all shards are done"])
     plan = load_sweep(arguments.config, allow_outside=arguments.allow_outside)
     folder = arguments.out or sweep_folder(arguments.config)
-    costs, crew = costs_of(plan, liquid_plans(plan)), _crew(arguments, plan, folder)
-    with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
-        engine.run_sweep(plan, folder, crew, costs, retry=arguments.retry, quiet=arguments.quiet)
-        table = sweep_table(plan, folder)
-        summary = write_tables(plan, table, folder)
+    costs = costs_of(plan, liquid_plans(plan))
+    if arguments.gather is not None:
+        summary = _gathered(plan, costs, folder, arguments.gather)
+    elif arguments.shard is not None:
+        summary = _shard(arguments, plan, costs, folder)
+    else:
+        crew = _crew(arguments, plan, folder)
+        with run_lock(folder / SWEEP_FILE), single_threaded_libraries():
+            engine.run_sweep(plan, folder, crew, costs, retry=arguments.retry, quiet=arguments.quiet)
+            summary = write_tables(plan, sweep_table(plan, folder), folder)
     return as_json(summary) if arguments.json else sweep_text(summary), exit_code(summary)
+
+
+def _shard(arguments: argparse.Namespace, plan: SweepPlan, costs: Costs, folder: Path) -> dict[str, Any]:
+    shard = shard_from(arguments.shard)
+    part = shard_plans(plan, costs, shard.of)[shard.number - 1]
+    crew, options = _crew(arguments, plan, folder), {"retry": arguments.retry, "quiet": arguments.quiet}
+    with run_lock(folder / f"shard-{shard.label}"), single_threaded_libraries():
+        note_shard(folder, shard)
+        engine.run_sweep(part, folder, crew, costs, label=f"-{shard.label}", **options)
+        summary = summary_of(part, sweep_table(part, folder), folder)
+    return {**summary, "shard": str(shard), "table": None}
+
+
+def _gathered(plan: SweepPlan, costs: Costs, folder: Path, others: list[Path]) -> dict[str, Any]:
+    with run_lock(folder / SWEEP_FILE):
+        gather(others or [folder], folder)
+        table = sweep_table(plan, folder)
+        known = {point.name for point, status in zip(plan.points, table.status, strict=True) if status != MISSING}
+        shards = [str(shard) for shard in unfinished_shards(plan, costs, folder, known)]
+        return write_tables(plan, table, folder, unfinished_shards=shards)
 
 
 def _status(arguments: argparse.Namespace) -> Answer:
@@ -83,9 +115,9 @@ def _cluster(scheduler: str, folder: Path, threads: int) -> Crew:
     return ClusterCrew(scheduler, folder, threads)
 
 
-def write_tables(plan: SweepPlan, table: SweepTable, folder: Path) -> dict[str, Any]:
+def write_tables(plan: SweepPlan, table: SweepTable, folder: Path, **also: Any) -> dict[str, Any]:
     """``sweep.csv``, ``sweep.h5`` and ``sweep.json`` of a table; gives the content of the last."""
-    summary = summary_of(plan, table, folder)
+    summary = {**summary_of(plan, table, folder), **also}
     columns = {**table.swept(), "status": table.status, **table.columns}
     comment = f"{Path(plan.file).name}: {summary['points']} points, {summary['done']} done"
     write_csv(folder / SWEEP_CSV, {table.heading(name): values for name, values in columns.items()}, comment)

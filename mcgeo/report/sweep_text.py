@@ -13,9 +13,9 @@ _SHOWN, _SHOWN_LIQUIDS = 5, 12
 
 def sweep_text(summary: Mapping[str, Any]) -> str:
     """Counts of points, verdicts, the first failures, and where the table is."""
-    rows = [
-        (", ".join(axis["keys"]), _values(axis)) for axis in summary["axes"]
-    ]
+    rows = [(", ".join(axis["keys"]), _values(axis)) for axis in summary["axes"]]
+    if "shard" in summary:
+        rows.append(("shard", summary["shard"]))
     rows += [
         ("points", f"{summary['points']} over {_plural(summary['liquids'], 'liquid')}"),
         ("done", str(summary["done"])),
@@ -24,11 +24,13 @@ def sweep_text(summary: Mapping[str, Any]) -> str:
         rows.append(("of liquids not converged", f"{summary['not_converged']}; raise sampling.sweeps or walkers"))
     if summary["missing"]:
         rows.append(("missing", f"{summary['missing']}; the same command computes them"))
+    if summary.get("unfinished_shards"):
+        rows.append(("shards not finished", ", ".join(summary["unfinished_shards"])))
     if summary["failed"]:
         rows.append(("failed", f"{summary['failed']}; --retry tries them again"))
     if summary["shapes"]:
         rows.append(("shapes", ", ".join(f"{count} {word}" for word, count in summary["shapes"].items())))
-    rows.append(("table", summary["table"]))
+    rows.append(("table", summary["table"] or "with --gather, when all shards are done"))
     return "\n".join([*_lines(rows), *_failures(summary["failures"])])
 
 

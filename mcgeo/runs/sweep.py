@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, CancelledError, Executor, Future, wait
-from contextlib import suppress
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -20,6 +19,7 @@ from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points
+from mcgeo.runs.sweep_stop import SharedStopFlag
 from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, needs_sampling, sample_liquid
 
 _SECONDS_BETWEEN_LOOKS = 0.5
@@ -43,7 +43,7 @@ class Costs:
 
 def wanted_points(plan: SweepPlan, folder: Path, *, retry: bool) -> list[Point]:
     """Points without a row, each once; those that have failed before are among them only with ``retry``."""
-    known = known_points(folder)
+    known = known_points(folder, plan.liquids)
     left = {
         point.name: point
         for point in plan.points
@@ -52,7 +52,9 @@ def wanted_points(plan: SweepPlan, folder: Path, *, retry: bool) -> list[Point]:
     return list(left.values())
 
 
-def run_sweep(plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, *, retry: bool, quiet: bool) -> None:
+def run_sweep(
+    plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, *, retry: bool, quiet: bool, label: str = ""
+) -> None:
     """Do what is missing of a sweep.
 
     Parameters
@@ -61,6 +63,8 @@ def run_sweep(plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, *, retry:
         Of the sweep: ``liquids/`` and ``points/`` are in it.
     retry : bool
         Whether points that have failed before are tried again.
+    label : str
+        Tells this run from others in the same folder.
 
     Raises
     ------
@@ -72,8 +76,10 @@ def run_sweep(plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, *, retry:
     wanted: dict[str, list[Point]] = {}
     for point in wanted_points(plan, folder, retry=retry):
         wanted.setdefault(point.liquid, []).append(point)
-    run = _Run(plan, folder, crew, costs, wanted)
-    with _stop_sign(folder) as stop, stop_on_signals(stop), run.progress(quiet):
+    # Workers of a cluster may stand in other folders than this process.
+    stop = SharedStopFlag(folder.absolute() / f".stop{label}")
+    run = _Run(plan, folder, crew, costs, wanted, stop.path)
+    with stop, stop_on_signals(stop), run.progress(quiet):
         run.until_done(stop)
     if stop.is_set():
         raise RunInterrupted(
@@ -81,42 +87,22 @@ def run_sweep(plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, *, retry:
         )
 
 
-class _StopSign(StopFlag):
-    """A flag whose raising all workers see, as a file in the folder they share; a context manager."""
-
-    def __init__(self, path: Path) -> None:
-        super().__init__()
-        self.path = path
-
-    def set(self) -> None:
-        """Raise the flag and make the file."""
-        super().set()
-        with suppress(OSError):
-            self.path.touch()
-
-    def __enter__(self) -> _StopSign:
-        self.path.unlink(missing_ok=True)
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        self.path.unlink(missing_ok=True)
-
-
-def _stop_sign(folder: Path) -> _StopSign:
-    return _StopSign(folder / ".stop")
-
-
 class _Run:
     """One run of the engine."""
 
     def __init__(
-        self, plan: SweepPlan, folder: Path, crew: Crew, costs: Costs, wanted: Mapping[str, list[Point]]
+        self,
+        plan: SweepPlan,
+        folder: Path,
+        crew: Crew,
+        costs: Costs,
+        wanted: Mapping[str, list[Point]],
+        stop_file: Path,
     ) -> None:
         self._plan, self._folder, self._crew, self._costs = plan, folder, crew, costs
         self._queue = Queue(crew)
-        # Workers of a cluster may stand in other folders than this process.
         self._place = folder.absolute()
-        self._sign = crew.stop_sign(_stop_sign(self._place).path)
+        self._sign = crew.stop_sign(stop_file)
         self._in_flight: dict[Future[Report], Job] = {}
         self._breaks = 0
         self._any_point = {liquid: points[0] for liquid, points in wanted.items()}

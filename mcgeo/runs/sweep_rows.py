@@ -8,7 +8,7 @@ from __future__ import annotations
 import hashlib
 import json
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Container, Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -85,8 +85,8 @@ def _plain(value: Any) -> Any:
     return None if isinstance(value, float) and not math.isfinite(value) else value
 
 
-def row_files(folder: Path) -> Iterator[RowFile]:
-    """All files of rows in a sweep's folder, in the order of their names.
+def row_files(folder: Path, liquids: Container[str] | None = None) -> Iterator[RowFile]:
+    """All files of rows in a sweep's folder, or those of some liquids, in the order of their names.
 
     Raises
     ------
@@ -94,6 +94,8 @@ def row_files(folder: Path) -> Iterator[RowFile]:
         If one is damaged or of another version of the format.
     """
     for path in sorted((folder / POINTS).glob("*.json")):
+        if liquids is not None and path.name.partition("-")[0] not in liquids:
+            continue
         try:
             data = json.loads(path.read_bytes())
             if data.pop("format") != FORMAT:
@@ -127,8 +129,8 @@ class Known:
     failed: Mapping[str, str]
 
 
-def known_points(folder: Path) -> Known:
-    """The points of a folder; a row counts more than an earlier or later failure of the same point.
+def known_points(folder: Path, liquids: Container[str] | None = None) -> Known:
+    """The points of a folder, or those of some liquids; a row counts more than a failure of the same point.
 
     Raises
     ------
@@ -137,7 +139,7 @@ def known_points(folder: Path) -> Known:
     """
     done: dict[str, bool] = {}
     failed: dict[str, str] = {}
-    for file in row_files(folder):
+    for file in row_files(folder, liquids):
         converged = file.shared.get("run_verdict") == "converged"
         done.update(dict.fromkeys(file.rows, converged))
         failed.update(file.failed)

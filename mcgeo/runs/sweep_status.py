@@ -25,7 +25,7 @@ def sweep_status(plan: SweepPlan, folder: Path) -> dict[str, Any]:
         If a liquid of the configuration cannot be.
     """
     threads = noted_run(folder)["threads"]
-    known, plans = known_points(folder), liquid_plans(plan)
+    known, plans = known_points(folder, plan.liquids), liquid_plans(plan)
     costs = costs_of(plan, plans)
     names = {point.name for point in plan.points}
     done, failed = names & known.done.keys(), names & known.failed.keys()

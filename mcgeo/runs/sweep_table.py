@@ -202,7 +202,7 @@ def sweep_table(plan: SweepPlan, folder: Path) -> SweepTable:
     n = len(plan.points)
     columns = _Columns(n)
     status, errors = np.full(n, MISSING, dtype="U7"), {}
-    for file in row_files(folder):
+    for file in row_files(folder, plan.liquids):
         shared = {**file.shared, "liquid": file.liquid, "version": file.version}
         for name, row in file.rows.items():
             for place in places.get(name, ()):
