@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import secrets
-from contextlib import nullcontext
+from contextlib import nullcontext, suppress
 from pathlib import Path
 from typing import Any
 
+from mcgeo.errors import StorageError
 from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.catalogue import require_sampled_state
 from mcgeo.runs.config import Config, resolved
@@ -68,11 +69,21 @@ def sample(
     held = None if overwrite or extend is not None else held_liquid(config, path)
     if held is None:
         return _made(config, path, overwrite, extend, quiet, stop)
+    _remove_left_over(path)
     if not quiet:
         longer = config.sampling.target_error is None and held.n_blocks > config.sampling.blocks
         said = f", longer: {held.n_blocks} blocks where {config.sampling.blocks} are asked for" if longer else ""
         say(f"{path} holds this liquid already{said}")
     return held
+
+
+def _remove_left_over(path: Path) -> None:
+    """Remove what a run has left beside its whole file that was killed after writing it."""
+    start = path.with_name(START_FILE)
+    if start.exists() or any(path.parent.glob(f".{path.name}.*")):
+        # Whoever may not write here, or writes at this moment, leaves things as they are.
+        with suppress(StorageError, OSError), run_lock(path):
+            start.unlink(missing_ok=True)
 
 
 def held_liquid(config: Config, path: Path) -> Sampled | None:

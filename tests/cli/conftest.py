@@ -68,12 +68,12 @@ def small(tmp_path: Path) -> Path:
     return path
 
 
-def python_process(folder: Path, *arguments: str) -> subprocess.Popen[str]:
+def python_process(folder: Path, *arguments: str, stdin: int | None = None) -> subprocess.Popen[str]:
     """A Python with the package on its path and pipes for its output, run in ``folder``."""
     environment = {**os.environ, "PYTHONPATH": os.fspath(ROOT), "OMP_NUM_THREADS": "1"}
     return subprocess.Popen(
         [sys.executable, *arguments], cwd=folder, env=environment, text=True,
-        stdout=subprocess.PIPE, stderr=subprocess.PIPE,
+        stdin=stdin, stdout=subprocess.PIPE, stderr=subprocess.PIPE,
     )  # fmt: skip
 
 
