@@ -23,7 +23,7 @@ def whole_file(path: Path) -> Iterator[Path]:
         If the file cannot be written.
     """
     path.parent.mkdir(parents=True, exist_ok=True)
-    _remove_left_over(path)
+    remove_parts(path)
     # Processes of several machines may write the same file on a shared disk.
     temporary = path.with_name(f"{_head(path)}{os.getpid()}.{uuid.uuid4().hex}.part")
     try:
@@ -53,8 +53,8 @@ def _head(path: Path) -> str:
     return f".{path.name}.{socket.gethostname()}."
 
 
-def _remove_left_over(path: Path) -> None:
-    """Remove parts of ``path`` whose writers, on this machine, have ended."""
+def remove_parts(path: Path) -> None:
+    """Remove unfinished files on the way to ``path`` whose writers, on this machine, have ended."""
     head = _head(path)
     for name in os.listdir(path.parent):
         if name.startswith(head) and name.endswith(".part"):

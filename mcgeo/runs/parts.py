@@ -26,7 +26,7 @@ from mcgeo.runs.sample import LIQUID_FILE, held_liquid
 from mcgeo.runs.sampled import Blocks, Sampled
 from mcgeo.runs.signals import stop_on_signals
 from mcgeo.runs.start import START_FILE, equilibrated_chains, held_start
-from mcgeo.runs.storage import read_result, write_result
+from mcgeo.runs.storage import previous_file, read_result, write_result
 from mcgeo.sampling.chain import ChainState
 from mcgeo.sampling.walkers import WalkerArrays
 
@@ -61,6 +61,8 @@ def _keys(config: Config) -> Keys:
     keys = resolved(config)
     if keys["sampling"]["seed"] is None:
         raise ConfigError(["sampling.seed: must be given for a run in parts, which all draw from it"])
+    if keys["sampling"]["target_error"] is not None:
+        raise ConfigError(["sampling.target_error: parts do not know one another's errors; give sweeps alone"])
     return keys
 
 
@@ -76,7 +78,7 @@ def equilibrate(config: Config, folder: Path, *, quiet: bool = False) -> None:
     Raises
     ------
     ConfigError
-        If the seed is left open.
+        If the seed or the length of the run is left open.
     StorageError
         If the file cannot be written, or is being written by another process.
     RunInterrupted
@@ -94,7 +96,7 @@ def sample_part(config: Config, folder: Path, part: int, n_parts: int, *, quiet:
     Raises
     ------
     ConfigError
-        If the seed is left open, or there are fewer groups of walkers than parts.
+        If the seed or the length of the run is left open, or there are fewer groups of walkers than parts.
     StorageError
         If the walkers are not equilibrated, or the part's file cannot be written, is being written by another process
         or belongs to another configuration.
@@ -143,7 +145,7 @@ def merge_parts(config: Config, folder: Path, n_parts: int) -> Sampled:
     Raises
     ------
     ConfigError
-        If the seed is left open, or there are fewer groups of walkers than parts.
+        If the seed or the length of the run is left open, or there are fewer groups of walkers than parts.
     StorageError
         If a part is missing, unfinished or of another configuration, or the file cannot be written.
     """
@@ -155,7 +157,7 @@ def merge_parts(config: Config, folder: Path, n_parts: int) -> Sampled:
         if result is None:
             result = _merged(keys, paths)
             write_result(path, result)
-        for done in (*paths, folder / START_FILE):
+        for done in (*paths, *map(previous_file, paths), folder / START_FILE):
             done.unlink(missing_ok=True)
     return result
 

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import Any
 
 from mcgeo.errors import StorageError
+from mcgeo.runs.atomic import remove_parts
 from mcgeo.runs.build import problem_from, variation_from
 from mcgeo.runs.catalogue import require_sampled_state
 from mcgeo.runs.config import Config, resolved
@@ -22,7 +23,7 @@ from mcgeo.runs.sampling_config import STRETCH
 from mcgeo.runs.scan import require_reach
 from mcgeo.runs.signals import StopFlag, stop_on_signals
 from mcgeo.runs.start import START_FILE, equilibrated_chains, seed_of_start
-from mcgeo.runs.storage import read_result
+from mcgeo.runs.storage import previous_file, read_result
 
 LIQUID_FILE = "liquid.h5"
 
@@ -79,11 +80,13 @@ def sample(
 
 def _remove_left_over(path: Path) -> None:
     """Remove what a run has left beside its whole file that was killed after writing it."""
-    start = path.with_name(START_FILE)
-    if start.exists() or any(path.parent.glob(f".{path.name}.*")):
+    beside = [path.with_name(START_FILE), previous_file(path)]
+    if any(left.exists() for left in beside) or any(path.parent.glob(f".{path.name}.*")):
         # Whoever may not write here, or writes at this moment, leaves things as they are.
         with suppress(StorageError, OSError), run_lock(path):
-            start.unlink(missing_ok=True)
+            remove_parts(path)
+            for left in beside:
+                left.unlink(missing_ok=True)
 
 
 def held_liquid(config: Config, path: Path) -> Sampled | None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import random
 import signal
 import time
@@ -29,7 +30,6 @@ STATES = {
 }
 # Sweeps of production and of equilibration that take some tenths of a second each.
 LENGTHS = {"laughlin": (4000, 600), "conjugate": (4000, 600), "droplet": (16000, 2400), "sea": (400, 60)}
-TARGET = ", target_error: {error}, most_sweeps: {most}"
 
 
 def write(folder: Path, name: str, state: str, threads: int, more: str = "") -> str:
@@ -94,7 +94,9 @@ def check_extension(forker: Forker, root: Path, state: str, n_kills: int, seed: 
 
 def check_target(forker: Forker, root: Path, n_kills: int, seed: int) -> Killer:
     """The same of runs that go on until the error is small enough."""
-    config = write(root, "target", "laughlin", 1, TARGET.format(error=6e-5, most=40000))
+    whole_run(forker, write(root, "eight", "laughlin", 1), "eight_whole")
+    error = 0.75 * json.loads((root / "eight_whole/sample.json").read_text())["energy_plane"]["error"]
+    config = write(root, "target", "laughlin", 1, f", target_error: {error!r}")
     seconds = whole_run(forker, config, "target_whole")
     assert held_blocks(root / "target_whole")[0] > 8
     killer = Killer(forker, root, seed)
@@ -108,10 +110,10 @@ def check_target(forker: Forker, root: Path, n_kills: int, seed: int) -> Killer:
 
 def test_killed_runs_end_like_a_run_that_nobody_killed(tmp_path: Path) -> None:
     with warm(tmp_path, ["laughlin", "all_sectors"]) as forker:
-        check_kills(forker, tmp_path, "laughlin", 1, 4, seed=1)
-        check_kills(forker, tmp_path, "all_sectors", 2, 4, seed=2)
-        check_extension(forker, tmp_path, "laughlin", 3, seed=3)
-        check_target(forker, tmp_path, 3, seed=4)
+        check_kills(forker, tmp_path, "laughlin", 1, 3, seed=1)
+        check_kills(forker, tmp_path, "all_sectors", 2, 3, seed=2)
+        check_extension(forker, tmp_path, "laughlin", 2, seed=3)
+        check_target(forker, tmp_path, 2, seed=4)
 
 
 def test_a_block_that_was_lost_is_noticed(tmp_path: Path) -> None:

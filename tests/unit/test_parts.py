@@ -160,6 +160,13 @@ def test_division_into_groups() -> None:
         group_range(29, 0, 5)
 
 
-def test_open_seed_is_refused(tmp_path: Path) -> None:
-    with pytest.raises(ConfigError, match=r"sampling\.seed"):
-        equilibrate(config("laughlin", seed=None), tmp_path)
+@pytest.mark.parametrize(("key", "value"), [("seed", None), ("target_error", 1e-4)])
+def test_what_is_left_open_is_refused(tmp_path: Path, key: str, value: float | None) -> None:
+    open_run = config("laughlin", **{key: value})
+    for work in (
+        lambda: equilibrate(open_run, tmp_path),
+        lambda: sample_part(open_run, tmp_path, 0, 2),
+        lambda: merge_parts(open_run, tmp_path, 2),
+    ):
+        with pytest.raises(ConfigError, match=rf"sampling\.{key}"):
+            work()
