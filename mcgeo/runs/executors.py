@@ -8,14 +8,11 @@ import signal
 import threading
 from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterator
-from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, ParamSpec, Protocol, TypeVar
-
-_P = ParamSpec("_P")
-_R = TypeVar("_R")
+from typing import Any, Protocol
 
 # The kernels bring their own threads; libraries that read these would start one per core beside them in every process.
 _ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "VECLIB_MAXIMUM_THREADS")
@@ -92,8 +89,8 @@ class LocalCrew(Crew):
         self.threads_per_sampling = threads_per_sampling
 
     def start(self) -> Executor:
-        """A new executor."""
-        return SerialExecutor() if self._workers == 1 else local_processes(self._workers)
+        """A new executor; this process's own thread is left to signals and progress."""
+        return ThreadPoolExecutor(1) if self._workers == 1 else local_processes(self._workers)
 
     @property
     def tasks(self) -> int:
@@ -104,19 +101,6 @@ class LocalCrew(Crew):
     def threads(self) -> int:
         """One per core, but at least one per process."""
         return max(self._workers, self._cores)
-
-
-class SerialExecutor(Executor):
-    """Does each task at once, in this process."""
-
-    def submit(self, fn: Callable[_P, _R], /, *args: _P.args, **kwargs: _P.kwargs) -> Future[_R]:
-        """The task's future, already done."""
-        future: Future[_R] = Future()
-        try:
-            future.set_result(fn(*args, **kwargs))
-        except Exception as fault:
-            future.set_exception(fault)
-        return future
 
 
 def local_processes(n: int) -> Executor:

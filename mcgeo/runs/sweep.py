@@ -18,7 +18,7 @@ from mcgeo.runs.sweep_note import note_run
 from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
-from mcgeo.runs.sweep_rows import RowFile, known_points
+from mcgeo.runs.sweep_rows import RowFile, known_points, tidy
 from mcgeo.runs.sweep_stop import SharedStopFlag
 from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, needs_sampling, sample_liquid
 
@@ -35,10 +35,11 @@ class WorkersLost(McgeoError):
 
 @dataclass(frozen=True)
 class Costs:
-    """Estimated seconds of one core: of every liquid to sample, and of one optimum."""
+    """Estimated seconds of one core, of every liquid to sample and of one optimum, and the blocks of every liquid."""
 
     liquids: Mapping[str, float]
     optimum: float
+    blocks: Mapping[str, int]
 
 
 def wanted_points(plan: SweepPlan, folder: Path, *, retry: bool) -> list[Point]:
@@ -76,6 +77,7 @@ def run_sweep(
     wanted: dict[str, list[Point]] = {}
     for point in wanted_points(plan, folder, retry=retry):
         wanted.setdefault(point.liquid, []).append(point)
+    tidy(folder)
     # Workers of a cluster may stand in other folders than this process.
     stop = SharedStopFlag(folder.absolute() / f".stop{label}")
     run = _Run(plan, folder, crew, costs, wanted, stop.path)
@@ -141,6 +143,12 @@ class _Run:
                     broken |= self._take(future, self._in_flight.pop(future), stop)
                 if broken:
                     executor = self._renewed(executor)
+                if self._progress.is_due:
+                    self._progress.show(self._seconds_in_flight())
+        except BaseException:
+            # Nobody waits for a sampling of hours whose sweep has failed.
+            stop.set()
+            raise
         finally:
             executor.shutdown(wait=True, cancel_futures=True)
 
@@ -153,10 +161,13 @@ class _Run:
                 self._queue.again(job)
                 return True
             self._in_flight[future] = job
-            if future.done() or stop.is_set():
-                # A task done at once, in this process: its report first, which may bring more to do.
-                return False
         return False
+
+    def _seconds_in_flight(self) -> float:
+        """Estimated seconds behind the blocks that running samplings have kept."""
+        liquids = [job.liquid for job in self._in_flight.values() if not job.points]
+        shares = [liquid_progress(self._folder, liquid).blocks / self._costs.blocks[liquid] for liquid in liquids]
+        return sum(share * self._costs.liquids[liquid] for share, liquid in zip(shares, liquids, strict=True))
 
     def _submit(self, executor: Executor, job: Job) -> Future[Report]:
         if not job.points:

@@ -39,10 +39,14 @@ def liquid_plans(plan: SweepPlan) -> dict[str, dict[str, Any]]:
 
 
 def costs_of(plan: SweepPlan, plans: Mapping[str, Mapping[str, Any]]) -> Costs:
-    """Seconds of one core."""
+    """Seconds of one core, and blocks."""
     asked = plan.points[:: -(-len(plan.points) // _POINTS_ASKED)]
     optimum = sum(optimum_seconds(plan.resolved(point)["problem"]) for point in asked) / len(asked)
-    return Costs({liquid: keys["core_seconds"] for liquid, keys in plans.items()}, optimum)
+    return Costs(
+        {liquid: keys["core_seconds"] for liquid, keys in plans.items()},
+        optimum,
+        {liquid: keys["blocks"] for liquid, keys in plans.items()},
+    )
 
 
 def sweep_summary(plan: SweepPlan, cores: int) -> dict[str, Any]:

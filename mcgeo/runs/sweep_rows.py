@@ -20,6 +20,8 @@ from mcgeo.runs.atomic import write_whole
 FORMAT = "mcgeo-rows/1"
 POINTS = "points"
 
+_SECONDS_OF_A_WRITER = 3600.0
+
 Row = Mapping[str, Any]
 
 
@@ -144,3 +146,11 @@ def known_points(folder: Path, liquids: Container[str] | None = None) -> Known:
         done.update(dict.fromkeys(file.rows, converged))
         failed.update(file.failed)
     return Known(done, {point: why for point, why in failed.items() if point not in done})
+
+
+def tidy(folder: Path) -> None:
+    """Remove partial files of rows that a killed writer left; a young one may be another machine's, at work."""
+    for path in (folder / POINTS).glob(".*.part"):
+        with suppress(OSError):
+            if time.time() - path.stat().st_mtime > _SECONDS_OF_A_WRITER:
+                path.unlink()

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import threading
 from collections.abc import Callable
 from concurrent.futures import Executor, Future, ThreadPoolExecutor
@@ -12,10 +13,11 @@ from typing import Any
 import pytest
 
 from mcgeo.runs import sweep as engine
-from mcgeo.runs import sweep_queue
-from mcgeo.runs.executors import Crew, SerialExecutor
+from mcgeo.runs import sweep_progress, sweep_queue
+from mcgeo.runs.executors import Crew
 from mcgeo.runs.sweep import Costs, WorkersLost, run_sweep
 from mcgeo.runs.sweep_plan import Point, SweepPlan, load_sweep
+from mcgeo.runs.sweep_progress import SweepProgress, duration
 from mcgeo.runs.sweep_queue import MOST_HINDRANCES, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points
 from mcgeo.runs.sweep_tasks import Report
@@ -46,6 +48,10 @@ class Troubled(Crew):
     @property
     def threads(self) -> int:
         return self._tasks
+
+
+def alone() -> Executor:
+    return ThreadPoolExecutor(1)
 
 
 class DyingExecutor(Executor):
@@ -102,7 +108,7 @@ def plan(write: Callable[[str], str], monkeypatch: pytest.MonkeyPatch) -> SweepP
 
 
 def run(plan: SweepPlan, crew: Crew, folder: Path) -> None:
-    costs = Costs(dict.fromkeys(plan.liquids, 1.0), 1e-3)
+    costs = Costs(dict.fromkeys(plan.liquids, 1.0), 1e-3, dict.fromkeys(plan.liquids, 16))
     run_sweep(plan, folder, crew, costs, retry=False, quiet=True)
 
 
@@ -166,7 +172,7 @@ def test_what_hinders_a_task_may_pass(
         return Report("hindered", "no space left") if left[liquid] >= 0 else Report("done")
 
     monkeypatch.setattr(engine, "sample_liquid", hindered)
-    run(plan, Troubled(SerialExecutor, 1), tmp_path)
+    run(plan, Troubled(alone, 1), tmp_path)
     everybody = {point.name for point in plan.points}
     check_only_failed(plan, tmp_path, set() if troubles < MOST_HINDRANCES else everybody, "sampling: no space left")
 
@@ -184,7 +190,7 @@ def test_what_is_lost_on_the_way_is_sent_again(
         return Report("done")
 
     monkeypatch.setattr(engine, "sample_liquid", lost_at_first)
-    run(plan, Troubled(SerialExecutor, 1), tmp_path)
+    run(plan, Troubled(alone, 1), tmp_path)
     check_only_failed(plan, tmp_path, set(), "")
 
 
@@ -192,7 +198,7 @@ class Fixed(Troubled):
     """So many cores and workers."""
 
     def __init__(self, tasks: int, threads: int, threads_per_sampling: int | None = None) -> None:
-        super().__init__(SerialExecutor, tasks)
+        super().__init__(alone, tasks)
         self._threads = threads
         self.threads_per_sampling = threads_per_sampling
 
@@ -259,3 +265,43 @@ def test_tasks_grow_to_what_optima_take() -> None:
     quick = queue.next_job([])
     assert slow is not None and quick is not None
     assert sizes[0] < 10 and len(slow.points) == 5 and len(quick.points) == 256
+
+
+def test_partial_files_of_killed_writers_do_not_pile_up(plan: SweepPlan, tmp_path: Path) -> None:
+    old, young = (tmp_path / "points" / f".{name}.json.1f.part" for name in ("old", "young"))
+    old.parent.mkdir()
+    for path in (old, young):
+        path.write_text("{")
+    os.utime(old, (0.0, 0.0))
+    run(plan, Troubled(alone, 1), tmp_path)
+    assert not old.exists() and young.exists()
+    check_only_failed(plan, tmp_path, set(), "")
+
+
+def test_progress_tells_counts_and_the_time_left(
+    capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    now = 1000.0
+    monkeypatch.setattr(sweep_progress.time, "monotonic", lambda: now)
+    with SweepProgress(2, 10, 100.0, quiet=False) as progress:
+        assert not progress.is_due
+        now += 40.0
+        assert progress.is_due
+        progress.show(20.0)
+        progress.step(liquids=1, seconds=50.0)
+        assert not progress.is_due
+        now += 40.0
+        progress.step(points=4, failures=1, seconds=0.0)
+        progress.show(10.0)
+        progress.step(liquids=1, points=5, seconds=50.0)
+    assert capsys.readouterr().err.splitlines() == [
+        "liquid 0/2, point 0/10, 3 min left",
+        "liquid 1/2, point 0/10, 40 s left",
+        "liquid 1/2, point 4/10, 1 failed, 53 s left",
+        "liquid 2/2, point 9/10, 1 failed, 0 s left",
+    ]
+
+
+@pytest.mark.parametrize(("seconds", "words"), [(42.4, "42 s"), (700.0, "12 min"), (12345.0, "3.4 h")])
+def test_durations(seconds: float, words: str) -> None:
+    assert duration(seconds) == words
