@@ -8,7 +8,9 @@ from __future__ import annotations
 import hashlib
 import json
 import math
+import time
 from collections.abc import Container, Iterator, Mapping
+from contextlib import suppress
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
