@@ -23,7 +23,7 @@ from mcgeo.runs.sizes import size_remarks
 from mcgeo.runs.state_config import SAMPLING_SECTIONS, StateConfig, catalogue_remarks, with_kind
 from mcgeo.runs.sweep_config import SweepConfig
 from mcgeo.runs.tilt_config import tilt_remarks
-from mcgeo.runs.yaml_source import Fault, dotted, parse_yaml
+from mcgeo.runs.yaml_source import Fault, dotted, fault_lines, parse_yaml
 
 # Keys of ``sampling`` that say how a run is done and change none of its results.
 UNRELATED_TO_RESULTS = ("threads", "checkpoint_seconds")
@@ -155,7 +155,7 @@ def load_config(path: str | os.PathLike[str], *, allow_outside: bool = False) ->
     config, remarks = validated(source.data, NamedFiles(Path(path).parent, allow_outside))
     faults += [Fault(source.locate(r.path, at_key=r.at_key), r.path, r.message) for r in remarks]
     if config is None or faults:
-        raise ConfigError([fault.line(source.path) for fault in sorted(faults, key=lambda fault: fault.mark)])
+        raise ConfigError(fault_lines(faults, source.path))
     return config
 
 

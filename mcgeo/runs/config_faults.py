@@ -134,7 +134,8 @@ def _wrong(schema: Schema, value: object, root: Schema) -> str:
 
 def _suggestion(word: str, known: list[str]) -> str:
     # Without a letter it is a fraction, and the nearest other fraction is no spelling of it.
-    close = get_close_matches(word.lower(), known, n=1) if re.search("[a-zA-Z]", word) else []
+    is_word = len(word) <= _LONGEST and re.search("[a-zA-Z]", word)
+    close = get_close_matches(word.lower(), known, n=1) if is_word else []
     return f" (did you mean '{close[0]}'?)" if close else ""
 
 

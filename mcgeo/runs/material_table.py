@@ -14,7 +14,7 @@ from mcgeo.errors import ConfigError
 from mcgeo.runs.config_faults import explain
 from mcgeo.runs.config_types import Group, ListOf, Positive, Real, given_key, rule
 from mcgeo.runs.problem_config import MassAxesConfig, MassTensorConfig
-from mcgeo.runs.yaml_source import Fault, parse_yaml
+from mcgeo.runs.yaml_source import Fault, fault_lines, parse_yaml
 
 _SHIPPED = Path(mcgeo.problem.__file__).with_name("materials.yaml")
 
@@ -87,7 +87,7 @@ def read_materials(path: Path) -> dict[str, dict[str, Any]]:
             message = "needs one of permittivity and permittivity_tensor"
             faults.append(Fault(source.locate((name,), at_key=True), (name,), message))
     if faults:
-        raise ConfigError([fault.line(source.path) for fault in sorted(faults, key=lambda fault: fault.mark)])
+        raise ConfigError(fault_lines(faults, source.path))
     return entries
 
 

@@ -31,7 +31,7 @@ class NamedFiles(NamedTuple):
     def path(self, name: str) -> Path:
         """The file of this name; raises the error of a validator if it may not be read."""
         path = self.folder / name
-        if "\0" in name or not name:
+        if not name or not name.isprintable():
             raise rule(f"must be the name of a file, not {name!r}")
         if self.anywhere:
             return path

@@ -7,6 +7,7 @@ from fractions import Fraction
 from typing import Any
 
 from mcgeo.runs.config_faults import Remark
+from mcgeo.runs.config_types import MOST_ELECTRONS
 from mcgeo.runs.sampling_config import SamplingConfig
 
 # In memory a result is held about three times while it is written.
@@ -29,6 +30,8 @@ def size_remarks(given: Mapping[str, Any]) -> Iterator[Remark]:
     if not all(isinstance(number, int | float) and 0 < number < 1e30 for number in numbers):
         return
     walkers, sweeps, blocks, q_max, electrons = numbers
+    if electrons > MOST_ELECTRONS:
+        return
     most = keys["most_sweeps"]
     if isinstance(most, int) and most > sweeps:
         blocks, sweeps = blocks * most / sweeps, most
@@ -50,5 +53,5 @@ def _inverse_filling(state: Mapping[str, Any]) -> float:
         return float(state["exponent"])
     try:
         return float(1 / Fraction(state.get("filling", 1)))
-    except (ValueError, TypeError, ZeroDivisionError):
+    except (ValueError, TypeError, ArithmeticError):
         return 1.0

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterator, Mapping
 from fractions import Fraction
 from typing import Annotated, Any, Literal, get_args
@@ -114,7 +115,7 @@ class FermiSeaConfig(Group):
         if points is None:
             return None
         electrons = info.data.get("electrons", len(points))
-        repeated = sorted({point for point in points if points.count(point) > 1})
+        repeated = sorted(point for point, times in Counter(points).items() if times > 1)
         if repeated:
             raise rule(f"points must all be different, but {list(repeated[0])} is given more than once")
         if len(points) != electrons:

@@ -12,6 +12,8 @@ from typing import Any, NamedTuple
 import yaml
 
 MAX_DEPTH = 20
+# A hundred times what a configuration has; reading takes a second or two for each ten thousand.
+MAX_NODES = 20_000
 
 _TAG = "tag:yaml.org,2002:"
 _INTEGER = r"[-+]?[0-9]{1,100}"
@@ -37,7 +39,7 @@ def looks_like_number(text: str) -> bool:
 
 
 class StrictLoader(yaml.SafeLoader):
-    """Composes nodes with the scalars of YAML 1.2 and stops at too deep a nesting.
+    """Composes nodes with the scalars of YAML 1.2 and stops at too deep a nesting or too many values.
 
     Attributes
     ----------
@@ -53,11 +55,14 @@ class StrictLoader(yaml.SafeLoader):
         super().__init__(text)
         self.refused: list[tuple[Mark, str]] = []
         self.has_alias = False
-        self._depth = 0
+        self._depth = self._count = 0
 
     def compose_node(self, parent: yaml.Node | None, index: Any) -> yaml.Node | None:
         event: Any = self.peek_event()  # type: ignore[no-untyped-call]
         start, end = event.start_mark, event.end_mark
+        self._count += 1
+        if self._count > MAX_NODES:
+            raise yaml.MarkedYAMLError(problem=f"more than {MAX_NODES} keys and values", problem_mark=start)
         mark = mark_of(start)
         if isinstance(event, yaml.AliasEvent):
             self.get_event()  # type: ignore[no-untyped-call]

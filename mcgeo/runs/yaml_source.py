@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import os
 import re
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from typing import Any, NamedTuple
 
 import yaml
@@ -20,6 +20,9 @@ from mcgeo.runs.yaml_nodes import Mark, StrictLoader, mark_of, scalar_value
 Path = tuple[str | int, ...]
 
 MAX_BYTES = 1_000_000
+
+MOST_LINES = 50
+_LONGEST_KEY, _LONGEST_MESSAGE = 60, 1000
 
 _BYTE_ORDER_MARK = b"\xef\xbb\xbf"
 
@@ -34,7 +37,8 @@ class Fault(NamedTuple):
     def line(self, file: str) -> str:
         """``file:line:column: key.path: message``."""
         key = f"{dotted(self.path)}: " if self.path else ""
-        return f"{file}:{self.mark.line}:{self.mark.column}: {key}{self.message}"
+        said = self.message if len(self.message) <= _LONGEST_MESSAGE else f"{self.message[:_LONGEST_MESSAGE]} ..."
+        return f"{file}:{self.mark.line}:{self.mark.column}: {key}{said}"
 
 
 class YamlSource(NamedTuple):
@@ -74,7 +78,18 @@ def dotted(path: Path) -> str:
 
 
 def _name(key: str) -> str:
-    return key if key and key.isprintable() else repr(key)
+    shown = key if len(key) <= _LONGEST_KEY else f"{key[:_LONGEST_KEY]}..."
+    return shown if shown and shown.isprintable() else repr(shown)
+
+
+def fault_lines(faults: Iterable[Fault], file: str) -> list[str]:
+    """A line for each fault, in the order of the file; of very many the first, and how many more there are."""
+    ordered = sorted(faults, key=lambda fault: fault.mark)
+    lines = [fault.line(file) for fault in ordered[:MOST_LINES]]
+    if len(ordered) > MOST_LINES:
+        first = ordered[MOST_LINES]
+        lines.append(Fault(first.mark, (), f"{len(ordered) - MOST_LINES} more faults from here on").line(file))
+    return lines
 
 
 class _Builder:
@@ -101,7 +116,8 @@ class _Builder:
             if type(key) is int and key >= 0:
                 key = str(key)
             if not isinstance(key, str):
-                shown = repr(key_node.value) if isinstance(key_node, yaml.ScalarNode) else "a list or a group"
+                is_scalar = isinstance(key_node, yaml.ScalarNode)
+                shown = repr(key_node.value[:_LONGEST_KEY]) if is_scalar else "a list or a group"
                 self.faults.append(Fault(mark, path, f"a key must be a name, not {shown}"))
             elif (first := self.key_marks.get((*path, key))) is not None:
                 message = f"given twice, first on line {first.line} and again on line {mark.line}; keep one"
@@ -141,7 +157,7 @@ def _syntax_fault(error: Any, text: str) -> Fault:
         return Fault(mark, (), "a tab cannot indent or separate here; use spaces")
     if "another document" in problem:
         return Fault(mark, (), "a second document begins here; one file holds one configuration")
-    if "nested" in problem:
+    if "nested" in problem or "more than" in problem:
         return Fault(mark, (), problem)
     opened = mark_of(error.context_mark or place)
     began = f", in what began on line {opened.line}" if opened.line < mark.line else ""
@@ -163,7 +179,7 @@ def _compose(text: str, name: str) -> tuple[yaml.Node | None, list[Fault]]:
         raise ConfigError([fault.line(name)]) from None
     faults = [Fault(mark, (), message) for mark, message in loader.refused]
     if loader.has_alias:
-        raise ConfigError([fault.line(name) for fault in faults])
+        raise ConfigError(fault_lines(faults, name))
     return node, faults
 
 
@@ -181,18 +197,18 @@ def parse_yaml(path: str | os.PathLike[str]) -> tuple[YamlSource, list[Fault]]:
     ------
     ConfigError
         If the file cannot be read, is no UTF-8, larger than 1 MB, empty, not a group of keys, not valid YAML,
-        nested deeper than 20 levels, holds a second document or an alias.
+        nested deeper than 20 levels, of more than 20000 keys and values, holds a second document or an alias.
     """
     name = os.fspath(path)
     node, faults = _compose(_read_text(name), name)
     if node is None or (isinstance(node, yaml.ScalarNode) and scalar_value(node) is None):
         empty = Fault(Mark(1, 1), (), "the file is empty; it needs at least the key state")
-        raise ConfigError([fault.line(name) for fault in [*faults, empty]])
+        raise ConfigError(fault_lines([*faults, empty], name))
     builder = _Builder()
     data = builder.build(node, ())
     if not isinstance(data, dict):
         no_keys = Fault(builder.marks[()], (), "the file must be a group of keys, as in 'state: ...'")
-        raise ConfigError([fault.line(name) for fault in [*faults, no_keys]])
+        raise ConfigError(fault_lines([*faults, no_keys], name))
     faults = sorted(faults + builder.faults, key=lambda fault: fault.mark)
     return YamlSource(name, data, builder.marks, builder.key_marks), faults
 
@@ -207,5 +223,5 @@ def load_yaml(path: str | os.PathLike[str]) -> YamlSource:
     """
     source, faults = parse_yaml(path)
     if faults:
-        raise ConfigError([fault.line(source.path) for fault in faults])
+        raise ConfigError(fault_lines(faults, source.path))
     return source
