@@ -2,17 +2,22 @@
 
 For any block mean X and controls c with <c> = 0, X - beta.c has the mean of X, and with
 beta = Cov(c, c)^-1 Cov(c, X) the smallest variance (Owen, Monte Carlo theory, methods and examples (2013), section
-8.9). A beta fitted to the blocks that it is applied to follows their noise: errors then come out too small. Here
-it is cross-fitted: walkers are dealt into folds, and the blocks of a fold are cleared with the beta of the others.
-Walkers are independent, so the result stays unbiased whatever beta is, and the scatter of cleared blocks holds the
-noise of beta as their mean does.
+8.9). A beta fitted to the blocks that it is applied to follows their noise: the scatter of what is left is too
+small, and blocks cleared with the beta of all other walkers share its noise, which their scatter does not show either.
+Here the error is that of the jackknife: the mean t at c = 0 of the regression is found again without each walker (or
+fold of walkers) f in turn, and the walker's blocks are shifted as a whole so that their mean is the pseudo-value
+
+    p_f = (n/n_f) t - (n/n_f - 1) t_(without f)
+
+(Tukey, Ann. Math. Stat. 29, 614 (1958); for folds of unequal size Busing, Meijer and van der Leeden, Stat. Comput. 9, 3
+(1999), both from memory). The mean of pseudo-values is t without its bias of the order 1/n, and their scatter over
+walkers holds what beta adds to the noise.
 
 beta is linear in X: clearing S(q) wave by wave clears every linear function of S(q) in the same way.
 """
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -24,10 +29,9 @@ Array = NDArray[np.float64]
 USED, FEW_BLOCKS, NOT_ZERO = "used", "few_blocks", "not_zero"
 
 LARGEST_Z = 5.0
-_FOLDS = 16
-# Blocks outside a fold per control: with ten the noise of beta adds a tenth to the variance that is left. Of n blocks
-# no more than sqrt(n) controls are used: cleared blocks of two folds are correlated by tr(M M)/n^2, M = <c c^T e> with
-# controls of unit variance and e the part of X they do not explain, and the scatter of blocks does not show that.
+# A fold is a walker, or several of more walkers than this.
+_FOLDS = 64
+# Blocks outside a fold per control: with ten the noise of beta adds a tenth to the variance that is left.
 _BLOCKS_PER_CONTROL = 10
 # Added to the correlation matrix of the controls: bounds beta where neighbouring Gaussians are nearly the same control.
 _RIDGE = 1e-8
@@ -73,7 +77,7 @@ def _fold_labels(n_blocks: int, n_walkers: int) -> NDArray[np.int64]:
 
 
 def cleared(blocks: Array, controls: Array, z: Array) -> Cleared:
-    """Regression of block means on controls of mean zero, cross-fitted.
+    """Regression of block means on controls of mean zero, as pseudo-values of the jackknife over walkers.
 
     Parameters
     ----------
@@ -88,22 +92,35 @@ def cleared(blocks: Array, controls: Array, z: Array) -> Cleared:
     outside = fold.size - int(np.bincount(fold.ravel()).max())
     if not np.all(np.abs(z) <= LARGEST_Z):
         return Cleared(blocks, z, NOT_ZERO)
-    n_used = min(controls.shape[2], outside // _BLOCKS_PER_CONTROL, math.isqrt(outside))
+    n_used = min(controls.shape[2], outside // _BLOCKS_PER_CONTROL)
     if n_used == 0:
         return Cleared(blocks, z, FEW_BLOCKS)
-    controls = controls[..., :n_used]
-    flat = blocks.reshape(n_blocks, n_walkers, -1)
+    flat = blocks.reshape(fold.size, -1)
     # In units of their overall scatter, so that a control that is quiet outside a fold gets no large coefficient.
-    scaled = controls / controls.std(axis=(0, 1))
-    left = np.empty_like(flat)
-    for label in range(int(fold.max()) + 1):
-        inside = fold == label
-        left[inside] = flat[inside] - scaled[inside] @ _coefficients(scaled[~inside], flat[~inside])
-    return Cleared(left.reshape(blocks.shape), z, USED)
+    scaled = (controls / controls.std(axis=(0, 1)))[..., :n_used].reshape(fold.size, -1)
+    return Cleared(_pseudo_values(flat, scaled, fold.ravel()).reshape(blocks.shape), z, USED)
 
 
-def _coefficients(controls: Array, values: Array) -> Array:
-    """beta, shape (n_controls, n_values), by ridge regression with a free constant."""
-    design = controls - controls.mean(axis=0)
-    normal = design.T @ design / len(design) + _RIDGE * np.eye(design.shape[1])
-    return np.asarray(np.linalg.solve(normal, design.T @ (values - values.mean(axis=0)) / len(design)))
+def _pseudo_values(values: Array, controls: Array, fold: NDArray[np.int64]) -> Array:
+    """Cleared blocks, shape (n, n_values), every fold shifted to its pseudo-value."""
+    n = len(values)
+    design = np.concatenate([np.ones((n, 1)), controls], axis=1)
+    members = [np.flatnonzero(fold == label) for label in range(int(fold.max()) + 1)]
+    normal = np.array([design[inside].T @ design[inside] for inside in members])
+    right = np.array([design[inside].T @ values[inside] for inside in members])
+    all_normal, all_right = normal.sum(axis=0), right.sum(axis=0)
+    mean = _solved(all_normal, all_right)[0]
+    left = np.empty_like(values)
+    for inside, own_normal, own_right in zip(members, normal, right, strict=True):
+        without, *beta = _solved(all_normal - own_normal, all_right - own_right)
+        ratio = n / len(inside)
+        cleared_of_beta = values[inside] - controls[inside] @ np.array(beta)
+        left[inside] = cleared_of_beta - cleared_of_beta.mean(axis=0) + ratio * mean - (ratio - 1.0) * without
+    return left
+
+
+def _solved(normal: Array, right: Array) -> Array:
+    """Constant and coefficients, shape (1 + n_controls, n_values), by ridge regression."""
+    ridge = np.full(len(normal), _RIDGE * normal[0, 0])
+    ridge[0] = 0.0
+    return np.asarray(np.linalg.solve(normal + np.diag(ridge), right))

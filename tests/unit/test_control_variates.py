@@ -35,16 +35,24 @@ def test_linear_functions_are_cleared_like_the_blocks():
     assert together.var() < 0.8 * (blocks @ weights).var()
 
 
-def test_a_block_is_cleared_without_its_own_walker():
-    # Coefficients come from the other walkers only: a changed value of walker 3 changes itself and no coefficient.
+def test_walkers_have_the_pseudo_values_of_the_jackknife():
+    # Tukey, Ann. Math. Stat. 29, 614 (1958): n t - (n - 1) t_(without one), with t by a general least-squares routine.
     random = np.random.default_rng(3)
-    controls = correlated_controls(random, 2)
-    blocks = random.standard_normal((*SHAPE, 1))
-    changed = blocks.copy()
-    changed[2, 3] += 100.0
-    before, after = (cleared(x, controls, np.zeros(2)).blocks for x in (blocks, changed))
-    np.testing.assert_allclose(after[:, 3] - before[:, 3], changed[:, 3] - blocks[:, 3], atol=1e-10)
-    assert np.abs(after[:, 4] - before[:, 4]).max() > 0.1
+    for n_walkers in (16, 70):
+        controls = correlated_controls(random, 2, (8, n_walkers))
+        blocks = random.standard_normal((8, n_walkers)) + controls @ np.ones(2)
+
+        def mean(kept, blocks=blocks, controls=controls):
+            design = np.concatenate([np.ones((kept.sum() * 8, 1)), controls[:, kept].reshape(-1, 2)], axis=1)
+            return np.linalg.lstsq(design, blocks[:, kept].ravel())[0][0]
+
+        # Seventy walkers make folds of one and of two.
+        fold = np.arange(n_walkers) % 64
+        found = cleared(blocks[..., None], controls, np.zeros(2)).blocks[..., 0]
+        for f in (0, 5, 12):
+            ratio = n_walkers / np.sum(fold == f)
+            expected = ratio * mean(fold >= 0) - (ratio - 1.0) * mean(fold != f)
+            assert found[:, fold == f].mean() == pytest.approx(expected, abs=1e-6)
 
 
 def test_refusals():
