@@ -16,8 +16,9 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 
 _STEP = 0.03
-# Below it a curvature is rounding.
-_LEAST_CURVATURE = 1e-9
+# A curvature below this part of the largest is rounding; so is one below the other number.
+FLAT = 1e-6
+NO_CURVATURE = 1e-16
 _FIRST = {-2: 1.0 / 12.0, -1: -8.0 / 12.0, 1: 8.0 / 12.0, 2: -1.0 / 12.0}
 _SECOND = {-2: -1.0 / 12.0, -1: 16.0 / 12.0, 0: -30.0 / 12.0, 1: 16.0 / 12.0, 2: -1.0 / 12.0}
 
@@ -45,8 +46,9 @@ class LocalExpansion:
         """Newton's step of the mean, of at most this length; downhill also where a direction curves down."""
         curvature, directions = np.linalg.eigh(self.hessian.mean(axis=0))
         along = directions.T @ self.gradient.mean(axis=0)
-        step = -directions @ (along / np.maximum(np.abs(curvature), _LEAST_CURVATURE))
-        return np.asarray(step * min(1.0, longest / max(float(np.hypot(*step)), _LEAST_CURVATURE)))
+        least = max(FLAT * float(np.max(np.abs(curvature))), NO_CURVATURE)
+        step = -directions @ (along / np.maximum(np.abs(curvature), least))
+        return np.asarray(step * min(1.0, longest / max(float(np.hypot(*step)), NO_CURVATURE)))
 
 
 def expansion(samples: Callable[[Array], Array], dimension: int) -> LocalExpansion:

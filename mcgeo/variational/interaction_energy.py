@@ -31,7 +31,7 @@ from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.variational.derivatives import LocalExpansion
-from mcgeo.variational.quadrature import angular_harmonics, half_line_rule, orbit_harmonics
+from mcgeo.variational.quadrature import angular_harmonics, angular_mean, half_line_rule, orbit_harmonics
 
 Array = NDArray[np.float64]
 
@@ -82,13 +82,12 @@ class InteractionEnergy:
     def background(self, problem: Problem) -> float:
         """(e nu/2) int d^2q/(2 pi)^2 v(q): what does not depend on the hole."""
         radii, weights = half_line_rule(problem.reach)
-        mean = angular_harmonics(problem, problem.orbit.metric, radii)[:, 0]
+        mean = angular_mean(problem, problem.orbit.metric, radii)
         return float(self.uniform * np.sum(weights * radii * mean) / (4.0 * math.pi))
 
     def energies(self, problem: Problem, metric: UnimodularMetric) -> Array:
         """Energies of the samples above the background, shape (n_samples,)."""
-        harmonics = angular_harmonics(problem, metric, self.radii)
-        return np.asarray(self.coefficients @ (self.projections[0] @ harmonics[:, 0]))
+        return np.asarray(self.coefficients @ (self.projections[0] @ angular_mean(problem, metric, self.radii)))
 
     def expansion(self, problem: Problem, metric: UnimodularMetric) -> LocalExpansion:
         """Energies above the background, gradients and Hessians in the flat coordinates about the metric."""

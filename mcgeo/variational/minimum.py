@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.problem import Problem
-from mcgeo.variational.derivatives import LocalExpansion
+from mcgeo.variational.derivatives import FLAT, NO_CURVATURE, LocalExpansion
 from mcgeo.variational.energy_surface import Surface
 
 Array = NDArray[np.float64]
@@ -30,9 +30,6 @@ _LONGEST_STEP = 0.5
 _SHORT_STEP = 3e-6
 _TOLERANCE = 1e-9
 _ROUNDING_OF_ENERGY = 1e-14
-# A curvature of this size and either sign is none: the circle of equal holes of a symmetric problem that prefers an
-# ellipse.
-_FLAT = 1e-8
 _ROUNDING = 1e-7
 
 
@@ -118,7 +115,8 @@ def _estimates(
     """Stretch and angle from the replicas' derivatives at the mean's minimum."""
     if not interior:
         return metric_estimates(metric, np.full(gradients.shape, np.inf))
-    if np.linalg.eigvalsh(hessians.mean(axis=0))[0] > _FLAT:
+    least, largest = np.linalg.eigvalsh(hessians.mean(axis=0))
+    if least > FLAT * largest:
         return metric_estimates(metric, np.asarray(-np.linalg.solve(hessians, gradients[..., None])[..., 0]))
     # A turn of the hole costs nothing: replicas move along the stretch, and the angle is any.
     along, _ = _own_directions(metric)
@@ -180,7 +178,9 @@ def _polished(surface: Surface, start: Array, radius: float) -> tuple[Unimodular
         on_edge = beyond
         if float(np.hypot(*step)) < _SHORT_STEP:
             break
-    if np.linalg.eigvalsh(at.hessian[0])[0] < -_FLAT:
+    # Curvatures of a circle of equal holes are rounding, of either sign, along it.
+    least, largest = np.linalg.eigvalsh(at.hessian[0])
+    if largest < NO_CURVATURE or least < -FLAT * largest:
         return metric, False
     return on_axis(metric, centre), True
 

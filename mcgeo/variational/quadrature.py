@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from functools import cache
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,7 +22,7 @@ _NODES_PER_UNIT = 9.0
 # Below this |k| the nodes crowd towards 0, as far as exp(-pi sinh 5.3) = 1e-137; the last one is 1e-16 short of 1.
 _INNER = 1.0
 _INNER_RANGE = (-5.3, 3.2)
-_INNER_NODES = 96
+_INNER_NODES = 128
 _LEAST_DISTANCE = 1e-3
 _HARMONICS_TO = 26.0
 _SAME_AXIS = 1e-13
@@ -113,8 +114,8 @@ def require_resolved(problem: Problem, metric: UnimodularMetric) -> float:
     return distance
 
 
-def angular_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) -> Array:
-    """(1/2 pi) int dphi v(S k(phi)) (1, cos 2 phi, sin 2 phi, cos 4 phi, sin 4 phi), S the root of the metric.
+def angular_mean(problem: Problem, metric: UnimodularMetric, radii: Array) -> Array:
+    """(1/2 pi) int dphi v(S k(phi)), S the root of the metric, shape (n,).
 
     The trapezoidal rule on half a turn, or on a quarter where metric, orbit and interaction share their axes.
 
@@ -125,31 +126,48 @@ def angular_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) 
     radii : ndarray, shape (n,)
         |k|, ascending.
 
-    Returns
-    -------
-    ndarray, shape (n, 5)
-
     Raises
     ------
     GeometryError
         If metric and orbit are farther apart than 4 (relative aspect ratio 55).
     """
-    wavevectors, waves = _polar_grid(problem, metric, radii, _mirror_axis(problem, metric))
+    grid = _polar_grid(problem, metric, radii, _mirror_axis(problem, metric))
+    found = np.zeros(len(radii))
+    found[: len(grid.wavevectors)] = problem.effective_potential(grid.wavevectors) @ grid.waves[:, 0]
+    return found
+
+
+def angular_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) -> Array:
+    """The same of v times 1, cos 2 phi, sin 2 phi, cos 4 phi and sin 4 phi, shape (n, 5)."""
+    grid = _polar_grid(problem, metric, radii, _mirror_axis(problem, metric))
     found = np.zeros((len(radii), 5))
-    found[: len(wavevectors)] = problem.effective_potential(wavevectors) @ waves
+    found[: len(grid.wavevectors)] = problem.effective_potential(grid.wavevectors) @ grid.harmonics
     return found
 
 
 def orbit_harmonics(problem: Problem, metric: UnimodularMetric, radii: Array) -> Array:
-    """The same of v and its derivatives by the orbit's metric, `Problem.orbit_derivatives`: shape (6, n, 5)."""
-    wavevectors, waves = _polar_grid(problem, metric, radii, None)
+    """That of v and its derivatives by the orbit's metric, `Problem.orbit_derivatives`: shape (6, n, 5)."""
+    grid = _polar_grid(problem, metric, radii, None)
     found = np.zeros((6, len(radii), 5))
-    found[:, : len(wavevectors)] = problem.orbit_derivatives(wavevectors) @ waves
+    found[:, : len(grid.wavevectors)] = problem.orbit_derivatives(grid.wavevectors) @ grid.harmonics
     return found
 
 
-def _polar_grid(problem: Problem, metric: UnimodularMetric, radii: Array, axis: float | None) -> tuple[Array, Array]:
-    """Wavevectors S k up to the reach of v(q), shape (n, n_angles, 2), and their harmonics, shape (n_angles, 5)."""
+class _PolarGrid(NamedTuple):
+    """Wavevectors S k, shape (n, n_angles, 2), at angles that are counted from ``turn``."""
+
+    wavevectors: Array
+    waves: Array
+    turn: float
+
+    @property
+    def harmonics(self) -> Array:
+        """Harmonics of the lab's angle over their number, shape (n_angles, 5)."""
+        return np.asarray(self.waves @ _turned(self.turn))
+
+
+def _polar_grid(problem: Problem, metric: UnimodularMetric, radii: Array, axis: float | None) -> _PolarGrid:
+    """The wavevectors that a rule needs, up to the reach of v(q); ``axis`` that of mirror images."""
     distance = require_resolved(problem, metric)
     n_angles = _n_angles(max(distance, *(_distance(metric, other) for other in problem.interaction.metrics)))
     units, waves = _angles(n_angles, axis is not None)
@@ -160,7 +178,7 @@ def _polar_grid(problem: Problem, metric: UnimodularMetric, radii: Array, axis: 
     inside = int(np.searchsorted(radii, problem.reach * math.exp(0.5 * distance), side="right"))
     # Components along the first axis in memory: either one is then read in one piece.
     wavevectors = (radii[:inside, None] * directions[:, None, :]).transpose(1, 2, 0)
-    return wavevectors, waves @ _turned(turn)
+    return _PolarGrid(wavevectors, waves, turn)
 
 
 def _turned(angle: float) -> Array:
