@@ -37,8 +37,9 @@ class SweepProgress:
         self._is_first = True
         self._quiet = quiet
         terminal = sys.stderr.isatty() and not quiet
-        form = "{percentage:3.0f}% |{bar}| {postfix}"
-        self._bar = tqdm(total=self._seconds, file=sys.stderr, bar_format=form) if terminal else None
+        form = "{percentage:3.0f}% |{bar}| {desc}"
+        begun = self._words(self._started, 0.0)
+        self._bar = tqdm(desc=begun, total=self._seconds, file=sys.stderr, bar_format=form) if terminal else None
 
     def __enter__(self) -> SweepProgress:
         return self
@@ -70,7 +71,7 @@ class SweepProgress:
         now = self._last = time.monotonic()
         done = self._seconds_done + seconds_in_flight
         if self._bar is not None:
-            self._bar.set_postfix_str(self._words(now, done), refresh=False)
+            self._bar.set_description_str(self._words(now, done), refresh=False)
             self._bar.update(done - self._bar.n)
             self._bar.refresh()
         elif not self._quiet:
