@@ -119,7 +119,10 @@ def write_tables(plan: SweepPlan, table: SweepTable, folder: Path, **also: Any) 
     """``sweep.csv``, ``sweep.h5`` and ``sweep.json`` of a table; gives the content of the last."""
     summary = {**summary_of(plan, table, folder), **also}
     columns = {**table.swept(), "status": table.status, **table.columns}
-    comment = f"{Path(plan.file).name}: {summary['points']} points, {summary['done']} done"
+    comment = (
+        f"{Path(plan.file).name}: {summary['points']} points, {summary['done']} done\n"
+        f"rows by mcgeo {', '.join(table.versions)}; one row per point, energies per electron"
+    )
     write_csv(folder / SWEEP_CSV, {table.heading(name): values for name, values in columns.items()}, comment)
     write_sweep_file(folder / SWEEP_FILE, table)
     write_json(folder / SWEEP_JSON, summary)
@@ -145,6 +148,7 @@ def summary_of(plan: SweepPlan, table: SweepTable, folder: Path) -> dict[str, An
         **count,
         "not_converged": int(np.sum((verdicts != "converged") & (verdicts != ""))),
         "liquids": len(plan.liquids),
+        "versions": table.versions,
         "shapes": _counted(table.columns.get("shape_verdict", ())),
         "failures": [
             {"point": {name: _item(values[place]) for name, values in swept.items()}, "error": why}

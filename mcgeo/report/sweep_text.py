@@ -28,6 +28,9 @@ def sweep_text(summary: Mapping[str, Any]) -> str:
         rows.append(("shards not finished", ", ".join(summary["unfinished_shards"])))
     if summary["failed"]:
         rows.append(("failed", f"{summary['failed']}; --retry tries them again"))
+    if len(summary["versions"]) > 1:
+        listed = ", ".join(summary["versions"])
+        rows.append(("rows by versions", f"{listed}; remove points/ to have all computed by one"))
     if summary["shapes"]:
         rows.append(("shapes", ", ".join(f"{count} {word}" for word, count in summary["shapes"].items())))
     rows.append(("table", summary["table"] or "with --gather, when all shards are done"))

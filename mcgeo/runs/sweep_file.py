@@ -7,6 +7,7 @@ beside it; every result is an array over the grid, NaN (text: empty) where a poi
 from __future__ import annotations
 
 import io
+import json
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
@@ -32,6 +33,7 @@ def sweep_file_bytes(table: SweepTable) -> bytes:
     with h5py.File(stream, "w", track_order=True) as file:
         file.attrs["format"] = FORMAT
         file.attrs["mcgeo_version"] = mcgeo.__version__
+        file.attrs["config"] = json.dumps(table.config)
         scales = [_axis(file, axis, spacing) for axis, spacing in zip(table.axes, table.spacings, strict=True)]
         beside = " ".join(column.name for axis in table.axes for column in axis[1:])
         grids = {name: _on_grid(table, values) for name, values in {"status": table.status, **table.columns}.items()}

@@ -88,6 +88,11 @@ class SweepPlan:
             found.setdefault(point.liquid, []).append(point)
         return found
 
+    @property
+    def given(self) -> dict[str, Any]:
+        """The configuration as the file gives it."""
+        return {**self._base, "sweep": self.settings.model_dump(mode="json", by_alias=True, exclude_unset=True)}
+
     def values(self, point: Point) -> dict[str, Any]:
         """Swept keys of a point and their values, as the file gives them."""
         return dict(named_values(self.axes, indices_at(self.shape, point.position)))

@@ -154,6 +154,8 @@ class SweepTable:
         Why points failed, by their place in the table.
     columns : mapping of str to ndarray, shape (n_points,)
         Results: numbers, NaN where there is none, or text.
+    config : mapping
+        The configuration as it was given.
     """
 
     axes: list[list[SweptColumn]]
@@ -162,6 +164,7 @@ class SweepTable:
     status: NDArray[np.str_]
     errors: Mapping[int, str]
     columns: Mapping[str, NDArray[Any]]
+    config: Mapping[str, Any]
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -172,6 +175,11 @@ class SweepTable:
     def indices(self) -> tuple[NDArray[np.intp], ...]:
         """Positions of the points along every axis."""
         return np.unravel_index(self.positions, self.shape)
+
+    @property
+    def versions(self) -> list[str]:
+        """Of the program, by which rows were made."""
+        return sorted({version for version in self.columns.get("version", ()) if version})
 
     def swept(self) -> dict[str, NDArray[Any]]:
         """Swept keys, one value per point."""
@@ -219,6 +227,7 @@ def sweep_table(plan: SweepPlan, folder: Path) -> SweepTable:
         status,
         failed,
         {**columns.ordered(), "point": np.array([point.name for point in plan.points], dtype=object)},
+        plan.given,
     )
 
 

@@ -13,6 +13,7 @@ import numpy as np
 import pytest
 import xarray
 
+from mcgeo import __version__
 from mcgeo.errors import GeometryError
 from mcgeo.runs import sweep_tasks
 from tests.cli.conftest import Answer
@@ -202,6 +203,25 @@ def test_a_damaged_file_of_rows_is_named(mcgeo: Command) -> None:
     assert sweep(mcgeo, ONE_LIQUID).code == 0
 
 
+def test_rows_of_several_versions_are_told(mcgeo: Command) -> None:
+    assert "versions" not in sweep(mcgeo, ONE_LIQUID).out
+    sweep(mcgeo, ONE_LIQUID.replace("[1, 2, 4]", "[1, 2, 3, 4]"))
+    path = max((FOLDER / "points").iterdir(), key=lambda path: path.stat().st_mtime_ns)
+    data = json.loads(path.read_text())
+    path.write_text(json.dumps({**data, "version": "0.0.9"}))
+    answer = sweep(mcgeo, ONE_LIQUID.replace("[1, 2, 4]", "[1, 2, 3, 4]"))
+    assert f"0.0.9, {__version__}; remove points/" in answer.out
+    assert {row["problem.mass.ratio"]: row["version"] for row in rows()}["3"] == "0.0.9"
+
+
+def test_the_file_tells_its_configuration(mcgeo: Command) -> None:
+    sweep(mcgeo, ONE_LIQUID)
+    with h5py.File(FOLDER / "sweep.h5") as file:
+        config = json.loads(file.attrs["config"])
+    assert config["state"]["electrons"] == 4
+    assert config["sweep"] == {"axes": [{"key": "problem.mass.ratio", "values": [1, 2, 4]}]}
+
+
 def test_droplets_take_part_and_what_they_cannot_answer_fails_alone(mcgeo: Command) -> None:
     variations = "    - {key: problem.variation, values: [projected, rigid]}\n"
     text = f"{STATE}{SAMPLING}geometry: {{kind: disk}}\nproblem: {{level_mixing: 1}}\nsweep:\n  axes:\n{variations}"
@@ -216,7 +236,7 @@ def test_units_of_a_material_are_columns(mcgeo: Command) -> None:
     assert sweep(mcgeo, text).code == 0
     first, second = rows()
     assert float(first["magnetic_length_nm"]) == pytest.approx(2.0 * float(second["magnetic_length_nm"]))
-    headings = (FOLDER / "sweep.csv").read_text().splitlines()[1]
+    headings = (FOLDER / "sweep.csv").read_text().splitlines()[2]
     assert "material.field_tesla [T]" in headings and "energy_mev [meV per electron]" in headings
     with h5py.File(FOLDER / "sweep.h5") as file:
         assert file["material.field_tesla"].attrs["units"] == "T"
