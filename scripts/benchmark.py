@@ -5,7 +5,8 @@ Times are processor seconds of one thread, the least of several runs; all ratios
 measurements, at the program's own distance of measurements; ``stretch2_cpu`` the same of the optimum's stretch at mass
 ratio 4. ``roofline`` is the share of the processor's measured rate of fused multiply-adds that the pair factors alone
 make up. ``versus_numpy`` (256 walkers side by side) and ``versus_loop`` (one) are ratios of moves per second,
-``versus_emcee`` of effective energies per second, if emcee is installed.
+``versus_emcee`` of effective energies per second, if emcee is installed. Below the states: metrics per second, each
+with the energies of all block samples, and a whole optimum with its response, nothing kept from problem to problem.
 """
 
 from __future__ import annotations
@@ -17,12 +18,13 @@ import math
 import threading
 import time
 from collections.abc import Callable
+from fractions import Fraction
 from typing import Any
 
 import numpy as np
 from baselines import emcee_traces, numpy_moves_per_second
 
-from mcgeo.estimate.occupations import fit_occupations
+from mcgeo.estimate.occupations import PairOccupations, fit_occupations
 from mcgeo.estimate.statistics import integrated_autocorrelation_time
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.kernels._jit import lean_kernel
@@ -32,9 +34,11 @@ from mcgeo.problem.problem import Problem
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.config import config_from_resolved, resolved
 from mcgeo.runs.experiment import experiment_of
+from mcgeo.runs.scan import optimum
 from mcgeo.sampling.measurement import STRUCTURE
 from mcgeo.sampling.tuning import tuned_step
 from mcgeo.sampling.walkers import groups_of, start_walkers
+from mcgeo.states.base import FERMIONS
 from mcgeo.variational.energy_surface import EnergySurface
 from mcgeo.variational.minimum import find_minimum
 
@@ -132,8 +136,8 @@ class Case:
             return energy, None
         norm = np.sqrt(self.state.frame.metric.wavevector_norm_sq(measurement.waves.vectors))
         occupations = fit_occupations(self.state, norm, np.concatenate([r.means[STRUCTURE] for r in records]))
-        optimum = find_minimum(EnergySurface(occupations, Problem(UnimodularMetric(math.log(2.0)), Coulomb())))
-        return energy, float(optimum.stretch.error**2 * spent)
+        best = find_minimum(EnergySurface(occupations, Problem(UnimodularMetric(math.log(2.0)), Coulomb())))
+        return energy, float(best.stretch.error**2 * spent)
 
 
 def versus_emcee(seconds: float) -> float:
@@ -194,6 +198,34 @@ def exponents(rows: list[dict[str, Any]]) -> dict[str, float]:
     return found
 
 
+def variational_rows(seconds: float) -> list[dict[str, Any]]:
+    """Metrics per second and milliseconds of a whole optimum, of a liquid of the usual size."""
+    m = np.arange(1, 46, 2)
+    samples = np.where(m < 3, -1.0, 0.2 * np.random.default_rng(1).normal(1.0, 0.05, (256, len(m))) * 0.8 ** (m - 3))
+    liquid = PairOccupations("benchmark", Fraction(1, 3), FERMIONS, m, samples)
+    mass, metric = {"ratio": 4.0}, UnimodularMetric(0.31)
+    well = {"kind": "square_well", "width": 2.0}
+    problems: dict[str, dict[str, Any]] = {
+        "Coulomb": {},
+        "Coulomb, dielectric at 30 degrees": {
+            "interaction": {"kind": "coulomb", "dielectric": {"ratio": 3.0, "angle_degrees": 30.0}}
+        },
+        "square well, level 1": {"interaction": well, "level": 1},
+        "tilted field": {"tilt": {"angle_degrees": 30.0, "confinement_ratio": 3.0}},
+        "rigid": {"variation": "rigid", "level_mixing": 1.0},
+        "two metrics": {"variation": "two_metric", "level_mixing": 1.0},
+    }
+    rows = []
+    for name, keys in problems.items():
+        given = {"state": {**_LAUGHLIN, "electrons": 50}, "problem": {"mass": mass, **keys}}
+        problem = resolved(config_from_resolved(given))["problem"]
+        surface = optimum(liquid, problem).surface
+        once = least(lambda surface=surface: surface.sample_energies(metric), seconds)
+        whole = least(lambda problem=problem: optimum(liquid, problem), seconds)
+        rows.append({"problem": name, "metrics_per_second": 1.0 / once, "optimum_ms": 1e3 * whole})
+    return rows
+
+
 def table(report: dict[str, Any]) -> str:
     """The report for reading."""
     shown = {
@@ -207,6 +239,10 @@ def table(report: dict[str, Any]) -> str:
         lines.append(f"{row['state']:28} {row['geometry']:8} " + " ".join(f"{cell:>12}" for cell in cells))
     lines.append(f"fused multiply-adds on eight lanes: {report['operations_per_second']:.3g}/s")
     lines += [f"time per move, {name}: N^{power:.2f}" for name, power in report["exponents"].items()]
+    lines += [
+        f"{row['problem']:34} {row['metrics_per_second']:8.0f} metrics/s, optimum {row['optimum_ms']:6.2f} ms"
+        for row in report["variational"]
+    ]
     return "\n".join(lines)
 
 
@@ -227,8 +263,11 @@ def main() -> None:
     if importlib.util.find_spec("emcee") is not None:
         small["versus_emcee"] = versus_emcee(8.0 * seconds)
     report = {
-        "rows": [small, *rows], "operations_per_second": 1.0 / operation, "exponents": exponents(rows),
-    }  # fmt: skip
+        "rows": [small, *rows],
+        "variational": variational_rows(seconds),
+        "operations_per_second": 1.0 / operation,
+        "exponents": exponents(rows),
+    }
     print(json.dumps(report, indent=2) if arguments.json else table(report))
 
 

@@ -180,7 +180,12 @@ def require_reach(problem: Problem, scan_keys: Mapping[str, Any]) -> None:
     angle = scan_keys["angle_degrees"]
     direction = math.radians(angle) if angle is not None else orbit.angle
     ends = {key: UnimodularMetric(scan_keys["stretch"][key], direction) for key in ("from", "to")}
-    places = {"problem.mass": ISOTROPIC, **{f"scan.stretch.{key}": metric for key, metric in ends.items()}}
+    # The hole may come to lie anywhere between orbit and interaction.
+    places = {
+        "problem.mass": ISOTROPIC,
+        "problem.interaction": max(problem.interaction.metrics, key=orbit.distance),
+        **{f"scan.stretch.{key}": metric for key, metric in ends.items()},
+    }
     faults = [
         f"{key}: hole and orbit metric come to be {metric.distance(orbit):.3g} apart (relative aspect ratio "
         f"{math.exp(metric.distance(orbit)):.3g}); at most {LARGEST_DISTANCE:g} works"

@@ -9,11 +9,13 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+from mcgeo.errors import GeometryError
 from mcgeo.estimate.statistics import Estimate, jackknife_error, jackknife_means
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.problem import Problem
 from mcgeo.variational.derivatives import FLAT, NO_CURVATURE, LocalExpansion
 from mcgeo.variational.energy_surface import Surface
+from mcgeo.variational.quadrature import LARGEST_DISTANCE
 
 Array = NDArray[np.float64]
 
@@ -148,8 +150,19 @@ def _mean(samples: Array) -> Estimate:
 
 
 def search_radius(problem: Problem) -> float:
-    """Distance from the orbit metric within which a minimum is looked for."""
+    """Distance from the orbit metric within which a minimum is looked for.
+
+    Raises
+    ------
+    GeometryError
+        If interaction and orbit are farther apart than the quadrature resolves: the hole may lie anywhere between.
+    """
     farthest = max(metric.distance(problem.orbit.metric) for metric in problem.interaction.metrics)
+    if farthest > LARGEST_DISTANCE:
+        raise GeometryError(
+            f"interaction and orbit metric are {farthest:.3g} apart (relative aspect ratio {math.exp(farthest):.3g}); "
+            f"at most {LARGEST_DISTANCE:g} works"
+        )
     return min(max(SEARCH_RADIUS, farthest + _PAST_INTERACTION), _LARGEST_RADIUS)
 
 

@@ -10,13 +10,14 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from mcgeo.errors import GeometryError
+from mcgeo.errors import ConfigError, GeometryError
 from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.problem.interaction import Coulomb, Gaussian
 from mcgeo.problem.mass import mass_metric_from_ratio
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.scan import require_reach
 from mcgeo.states.base import FERMIONS
 from mcgeo.variational.energy_surface import EnergySurface
 from mcgeo.variational.interaction_energy import interaction_energy
@@ -136,3 +137,13 @@ def test_gaussian_interaction_has_its_exact_hole_at_extreme_masses(third: Liquid
 def test_metrics_farther_apart_are_refused(orbit: tuple[float, float], hole: tuple[float, float]) -> None:
     with pytest.raises(GeometryError, match="at most 4 works"):
         interaction_energy(SINGLE).energies(Problem(UnimodularMetric(*orbit), Coulomb()), UnimodularMetric(*hole))
+
+
+def test_interaction_farther_from_the_orbit_is_refused() -> None:
+    problem = Problem(UnimodularMetric(math.log(10.0)), Coulomb(UnimodularMetric(-3.0)))
+    with pytest.raises(GeometryError, match=r"interaction and orbit metric are 5.3 .*at most 4 works"):
+        find_minimum(EnergySurface(SINGLE, problem))
+    line = {"angle_degrees": None, "stretch": {"from": 0.0, "to": 1.0, "points": 3}}
+    with pytest.raises(ConfigError, match=r"problem.interaction: .* 5.3 apart .*at most 4 works"):
+        require_reach(problem, line)
+    require_reach(Problem(UnimodularMetric(math.log(10.0)), Coulomb(UnimodularMetric(-1.5))), line)
