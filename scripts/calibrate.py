@@ -138,9 +138,15 @@ def run(case: Case, seed: int, folder: Path) -> Sampled:
     return dataclasses.replace(result, blocks=dataclasses.replace(result.blocks, means=means))
 
 
-def quantities(result: Sampled) -> dict[str, Found | FoundTogether]:
-    """Everything with an error that a run hands out, by name."""
-    found = _droplet_quantities(result) if isinstance(result, Droplet) else _liquid_quantities(result)
+def quantities(result: Sampled, *, with_optimum: bool = True) -> dict[str, Found | FoundTogether]:
+    """Everything with an error that a run hands out, by name; the optimum is what takes time."""
+    is_droplet = isinstance(result, Droplet)
+    found = _droplet_quantities(result) if is_droplet else _liquid_quantities(result)
+    if with_optimum:
+        found |= _optimum_quantities(result, DROPLET_PROBLEM if is_droplet else PROBLEM, _n_samples(result))
+        if is_droplet:
+            # The axis is the mass's by symmetry.
+            del found["angle"]
     named: dict[str, Found | FoundTogether] = {name: Found(e.value, e.error, n - 1) for name, (e, n) in found.items()}
     if isinstance(result, Liquid):
         occupations = result.occupations
@@ -155,7 +161,7 @@ def quantities(result: Sampled) -> dict[str, Found | FoundTogether]:
 def _liquid_quantities(liquid: Sampled) -> dict[str, tuple[Estimate, int]]:
     assert isinstance(liquid, Liquid)
     occupations, structure = liquid.occupations, liquid.structure_samples
-    n = len(structure)
+    n = _n_samples(liquid)
     surface = EnergySurface(occupations, Problem(liquid.frame.metric, Coulomb()))
     found = {
         "energy of the cell": (liquid.torus_energy(Coulomb()), n),
@@ -166,12 +172,12 @@ def _liquid_quantities(liquid: Sampled) -> dict[str, tuple[Estimate, int]]:
     for index, m in enumerate(occupations.m[:_OCCUPATIONS]):
         if m >= liquid.states[0].first_occupied:
             found[f"n_{m}"] = (occupations.occupation(index), n)
-    return found | _optimum_quantities(liquid, PROBLEM, n)
+    return found
 
 
 def _droplet_quantities(droplet: Droplet) -> dict[str, tuple[Estimate, int]]:
     energies, occupations = droplet.energies, droplet.occupations
-    n = len(occupations.orbital_samples)
+    n = _n_samples(droplet)
     xx, yy, _ = droplet.samples("second_moments").T
     found = {
         "energy": (energies.total, n),
@@ -180,10 +186,11 @@ def _droplet_quantities(droplet: Droplet) -> dict[str, tuple[Estimate, int]]:
     }
     found |= {f"n_{k}": (occupations.orbital(k), n) for k in range(5)}
     found |= {f"w_{occupations.pair_momenta[k]}": (occupations.pair(k), n) for k in range(1, 4)}
-    optima = _optimum_quantities(droplet, DROPLET_PROBLEM, n)
-    # The axis is the mass's by symmetry.
-    del optima["angle"]
-    return found | optima
+    return found
+
+
+def _n_samples(result: Sampled) -> int:
+    return len(result.independent(result.blocks.accepted.mean(axis=0)))
 
 
 def _optimum_quantities(result: Any, problem: Mapping[str, Any], n: int) -> dict[str, tuple[Estimate, int]]:
@@ -225,7 +232,10 @@ def pulls(runs: Sequence[Mapping[str, Found | FoundTogether]], exact: Mapping[st
     result = {}
     for name, first in runs[0].items():
         if isinstance(first, FoundTogether):
-            result[name] = _deviates_together([one[name] for one in runs])
+            together = [one[name] for one in runs]
+            # Where a bound was in force samples stand still, and nothing is known of their covariance.
+            if all(np.linalg.matrix_rank(one.covariance) == len(one.value) for one in together):
+                result[name] = _deviates_together(together)
             continue
         value, error, freedom = np.array([dataclasses.astuple(one[name]) for one in runs]).T
         n = len(value)
