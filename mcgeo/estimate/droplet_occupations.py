@@ -42,6 +42,9 @@ Array = NDArray[np.float64]
 # Prior widths of the second derivatives of n_l and w_l along the radius, in units of a uniform droplet's occupation per
 # l_B^2. Exact droplets of up to six electrons reach 9, at their edges, and 0.5.
 _ORBITAL_CURVATURE, _PAIR_CURVATURE = 8.0, 2.0
+# Counts that are low by chance would weigh more than those high by chance, and bins near the centre hold few: the
+# second pass takes its weights from the first one's fit.
+_PASSES = 2
 
 
 @dataclass(frozen=True, eq=False)
@@ -99,7 +102,8 @@ def fit_droplet_occupations(
 ) -> DropletOccupations:
     """Constrained weighted least squares of both histograms.
 
-    The errors of the counts are taken as those of independent counts, their number from the scatter of the samples. A
+    The errors of the counts are taken as those of independent counts as many as were expected, their number from the
+    scatter of the samples. A
     penalty on second differences reads as a prior on the curvature of an occupation along the radius, wider than
     that of any droplet known exactly; it fixes what histograms leave open, the alternation between neighbours far out,
     on which no energy depends: without it energies stay the same within half their errors.
@@ -151,8 +155,11 @@ def _fitted(
     variance = samples.var(axis=0, ddof=1) / len(samples)
     known = variance > 0.0
     counts = float(np.median(mean[known] / variance[known]))
-    # One count more than there is: an empty bin says no more than that it holds less than about one.
-    weight = np.sqrt(counts / (mean + 1.0 / counts))
     rules = np.stack([np.ones(len(momenta)), momenta.astype(float)])
-    fit = BoundedFit(basis, weight, penalty, rules, np.array(totals), most)
-    return fit.linear_fit(mean).of(samples)
+    expected = mean
+    for _ in range(_PASSES):
+        # One count more than there is: an empty bin says no more than that it holds less than about one.
+        weight = np.sqrt(counts / (np.maximum(expected, 0.0) + 1.0 / counts))
+        fit = BoundedFit(basis, weight, penalty, rules, np.array(totals), most).linear_fit(mean)
+        expected = basis @ fit.of(mean[None, :])[0]
+    return fit.of(samples)
