@@ -24,6 +24,7 @@ _EXIT_CODES = """exit codes:
 
 
 _FIGURES = ["hole", "energy", "structure", "correlation", "occupations", "density", "trace"]
+_SWEEP_FIGURES = ["sweep", "map", "aspects"]
 _MODULES = {
     "sample": "run",
     "scan": "scan",
@@ -65,15 +66,20 @@ def build_parser() -> argparse.ArgumentParser:
     _add_sweep(commands)
 
     plot = _command(commands, "plot", "draw one figure from a result file", "mcgeo plot hole well_results/liquid.h5")
-    plot.add_argument("what", choices=_FIGURES)
+    plot.add_argument("what", choices=[*_FIGURES, *_SWEEP_FIGURES])
     plot.add_argument(
         "file", type=Path, metavar="FILE",
-        help="result file, a folder that holds one, or a configuration of a catalogue liquid",
+        help="result file, a folder that holds one or a sweep, or a configuration of a catalogue liquid",
     )  # fmt: skip
     plot.add_argument("--problem", type=Path, metavar="CONFIG", help="problem and scan of this file instead")
     _add_allow_outside(plot)
     plot.add_argument("--out", type=Path, metavar="DIR", help="where figures go (default: beside the file)")
     plot.add_argument("--format", action="append", choices=["pdf", "svg", "png"], help="repeatable (default: pdf, png)")
+    of_sweep = plot.add_argument_group("figures of a sweep (sweep, map, aspects)")
+    of_sweep.add_argument("--quantity", metavar="NAME", help="column of the table (default: stretch)")
+    of_sweep.add_argument("--along", metavar="KEY", help="swept key of the horizontal axis")
+    of_sweep.add_argument("--families", metavar="KEY", help="swept key of the lines, or of the map's vertical axis")
+    of_sweep.add_argument("--at", action="append", metavar="KEY=VALUE", help="fix another swept key, repeatable")
 
     check = _command(commands, "check", "validate a configuration, show the plan and its cost", "mcgeo check well.yaml")
     check.add_argument("config", type=Path, metavar="CONFIG")

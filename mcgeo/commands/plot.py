@@ -13,8 +13,9 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 import mcgeo
+from mcgeo.commands import plot_sweep
 from mcgeo.commands.run import default_folder, result_file
-from mcgeo.errors import StorageError
+from mcgeo.errors import ConfigError, StorageError
 from mcgeo.estimate.occupations import PairOccupations
 from mcgeo.estimate.pair_correlation import (
     bulk_radial_pair_correlation,
@@ -52,6 +53,23 @@ _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 
 def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo plot``."""
+    draw = plot_sweep.draw if arguments.what in plot_sweep.DRAWN else _draw
+    axes, table, source, stem = draw(arguments)
+    figure = axes.get_figure(root=True)
+    assert isinstance(figure, Figure)
+    written = figures.save_figure(
+        figure,
+        arguments.out / stem.name if arguments.out else stem,
+        table,
+        formats=tuple(arguments.format or _DEFAULT_FORMATS),
+        metadata={"mcgeo": mcgeo.__version__, "figure": arguments.what, **source},
+    )
+    return "\n".join(str(file) for file in written), 0
+
+
+def _draw(arguments: argparse.Namespace) -> tuple[Axes, Mapping[str, Any], dict[str, str], Path]:
+    """A figure of one liquid, its table, its provenance, and its path without ending."""
+    _refuse_sweep_options(arguments)
     path = result_file(arguments.file)
     result, keys, folder = _subject(path, arguments.allow_outside)
     if arguments.problem is not None:
@@ -65,22 +83,14 @@ def run_plot(arguments: argparse.Namespace) -> tuple[str, int]:
         axes, table = _of_droplet(result, arguments.what, path, keys)
     else:
         axes, table = LIQUID[arguments.what](as_liquid(result, path), keys)
-    figure = axes.get_figure(root=True)
-    assert isinstance(figure, Figure)
-    metadata = {
-        "mcgeo": mcgeo.__version__,
-        "figure": arguments.what,
-        "configuration": json.dumps(without_contents({key: keys[key] for key in ("state", "problem")})),
-        **_source(result, keys),
-    }
-    written = figures.save_figure(
-        figure,
-        (arguments.out or folder) / arguments.what,
-        table,
-        formats=tuple(arguments.format or _DEFAULT_FORMATS),
-        metadata=metadata,
-    )
-    return "\n".join(str(file) for file in written), 0
+    configuration = json.dumps(without_contents({key: keys[key] for key in ("state", "problem")}))
+    return axes, table, {"configuration": configuration, **_source(result, keys)}, folder / arguments.what
+
+
+def _refuse_sweep_options(arguments: argparse.Namespace) -> None:
+    given = [name for name in ("quantity", "along", "families", "at") if getattr(arguments, name)]
+    if given:
+        raise ConfigError([f"--{name} belongs to figures of a sweep, not to {arguments.what}" for name in given])
 
 
 def _subject(path: Path, allow_outside: bool) -> tuple[Sampled | CatalogueLiquid, dict[str, Any], Path]:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from mcgeo.estimate.statistics import Estimate
 from mcgeo.report.numbers import degrees_with_error, value_with_error
-from mcgeo.report.style import BLUE, ENERGY_LABEL, GREEN, GREY, VERMILION, legend_below, new_axes, styled
+from mcgeo.report.style import BLUE, ENERGY_LABEL, ENERGY_UNIT, GREEN, GREY, VERMILION, legend_below, new_axes, styled
 from mcgeo.variational.minimum import Minimum
 from mcgeo.variational.response import SOFT, STABLE, UNSTABLE
 
@@ -82,6 +82,7 @@ def energy_curve(
     axes.axvline(mass_stretch, color=GREEN, linewidth=0.8, linestyle="-.", label="hole shaped as the mass")
     if minimum is not None and minimum.interior:
         _mark_minimum(axes, stretch, minimum, angle_degrees)
+        _reach_down_to(axes, minimum.energy.value)
     axes.set(xlabel=rf"stretch $Q$ of the hole at $\theta={angle_degrees:.4g}°$", ylabel=ENERGY_LABEL)
     _aspect_ratio_axis(axes)
     axes.set_title(_findings(minimum, verdict))
@@ -101,6 +102,13 @@ def _set_limits(axes: Axes, stretch: Array, energy: Array, error: Array) -> None
     axes.set(xlim=(stretch[0], stretch[-1]), ylim=(low - margin, high + margin))
 
 
+def _reach_down_to(axes: Axes, energy: float) -> None:
+    """A minimum off the line lies below the curve."""
+    low, high = axes.get_ylim()
+    if energy < low:
+        axes.set_ylim(energy - 0.08 * (high - energy), high)
+
+
 def _mark_minimum(axes: Axes, stretch: Array, minimum: Minimum, angle_degrees: float) -> None:
     turn = 2.0 * math.radians(angle_degrees)
     direction = np.array([math.cos(turn), math.sin(turn)])
@@ -116,7 +124,7 @@ def _mark_minimum(axes: Axes, stretch: Array, minimum: Minimum, angle_degrees: f
     if on_line:
         stiffness = _stiffness_along(minimum, direction)
         parabola = minimum.energy.value + 0.5 * stiffness.value * (stretch - position) ** 2
-        label = f"stiffness $K={value_with_error(stiffness)}$"
+        label = f"stiffness $K={value_with_error(stiffness)}$ {ENERGY_UNIT}"
         axes.plot(stretch, parabola, color=VERMILION, linewidth=0.9, linestyle="--", label=label)
 
 
@@ -150,6 +158,6 @@ def _findings(minimum: Minimum | None, verdict: str) -> str:
     return (
         f"{words}\n"
         f"$Q^*={value_with_error(minimum.stretch)}$ (ratio {value_with_error(minimum.aspect_ratio)}){angle}\n"
-        f"gain on isotropic hole {value_with_error(minimum.gain_isotropic)}\n"
-        f"gain on hole shaped as the mass {value_with_error(minimum.gain_mass)}"
+        f"gain on isotropic hole {value_with_error(minimum.gain_isotropic)} {ENERGY_UNIT}\n"
+        f"gain on hole shaped as the mass {value_with_error(minimum.gain_mass)} {ENERGY_UNIT}"
     )

@@ -18,6 +18,7 @@ T = TypeVar("T")
 
 STYLE_FILE = Path(__file__).with_name("mcgeo.mplstyle")
 COLUMN_INCHES = {1: 3.4, 2: 7.0}
+ENERGY_UNIT = r"$e^2/4\pi\varepsilon\ell_B$"
 ENERGY_LABEL = r"$E\,/\,(e^2/4\pi\varepsilon\ell_B)$ per electron"
 
 BLUE, VERMILION, GREEN, GREY = "#0072B2", "#D55E00", "#009E73", "#808080"

@@ -109,8 +109,6 @@ def _values(axis: Mapping[str, Any]) -> str:
 
 
 def _failures(failures: list[Mapping[str, Any]]) -> list[str]:
-    lines = [
-        f"failed at {_point_words(failure['point'])}: {failure['error']}" for failure in failures[:_SHOWN]
-    ]
+    lines = [f"failed at {_point_words(failure['point'])}: {failure['error']}" for failure in failures[:_SHOWN]]
     more = len(failures) - _SHOWN
     return lines + [f"and {more} more, all in sweep.json"] * (more > 0)
