@@ -22,7 +22,7 @@ ANGLES = np.array([0.0, 30.0])
 
 
 def _table():
-    """Mass ratio by width by interaction, the angle with the interaction; one point missing, one unstable, one short."""
+    """Mass ratio by width by interaction, the angle with that; one point is missing, one unstable, one short."""
     shape = (len(RATIOS), len(WIDTHS), len(INTERACTIONS))
     index = np.indices(shape).reshape(3, -1)
     mass = 0.5 * np.log(RATIOS[index[0]])
@@ -47,7 +47,10 @@ def _table():
         [
             [SweptColumn("problem.mass.ratio", "1", RATIOS)],
             [SweptColumn("problem.interaction.width", "l_B", WIDTHS)],
-            [SweptColumn("problem.interaction", "1", INTERACTIONS), SweptColumn("problem.mass.angle_degrees", "degrees", ANGLES)],
+            [
+                SweptColumn("problem.interaction", "1", INTERACTIONS),
+                SweptColumn("problem.mass.angle_degrees", "degrees", ANGLES),
+            ],
         ],
         ["logarithmic", "list", "list"],
         np.flatnonzero(kept),
@@ -152,7 +155,7 @@ def test_a_figure_never_takes_the_place_of_the_table(folder):
         (["map", "--at", "width=1", "--at", "angle_degrees=0"], "a map needs two swept keys"),
         (["aspects", "--quantity", "energy"], "use plot sweep"),
         (["aspects", "--at", "ratio=2"], "aspects need a sweep over the mass"),
-        (["sweep", "--along", "angle_degrees", "--families", "problem.interaction", "--at", "width=1"], "changes together"),
+        (["sweep", "--along", "angle_degrees", "--families", "interaction", "--at", "width=1"], "changes together"),
         (["hole", "--along", "width"], "--along belongs to figures of a sweep"),
     ],
 )  # fmt: skip
