@@ -29,6 +29,12 @@ class StorageError(McgeoError):
     """A result file that cannot be read, written, or that belongs to another configuration."""
 
 
+class NumericalError(McgeoError):
+    """Numbers that are none where there should be some: nothing the user did; exit code 1."""
+
+    exit_code = 1
+
+
 class RunInterrupted(McgeoError):
     """A run stopped by a signal; exit code 128 + the signal's number."""
 

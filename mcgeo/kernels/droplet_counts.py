@@ -165,7 +165,8 @@ def add_radial_counts(x: np.ndarray, y: np.ndarray, width: float, counts: np.nda
     for i in range(x.shape[0]):
         for lane in range(LANES):
             radius = math.sqrt(x[i, lane] ** 2 + y[i, lane] ** 2)
-            counts[min(int(radius / width), last), lane] += 1
+            # What is no number counts as beyond too: made an index, it would be one outside of the array.
+            counts[int(radius / width) if radius < last * width else last, lane] += 1
 
 
 @kernel

@@ -31,6 +31,9 @@ def whole_file(path: Path) -> Iterator[Path]:
         with open(temporary, "rb+") as written:
             os.fsync(written.fileno())
         os.replace(temporary, path)
+    except OSError as fault:
+        # The name that was asked for, not that on the way to it.
+        raise OSError(fault.errno, fault.strerror or str(fault), str(path)) from fault
     finally:
         # A full disk, or a folder that has gone: the fault that led here says more.
         with suppress(OSError):

@@ -11,7 +11,7 @@ from typing import Any, NoReturn
 
 import numpy as np
 
-from mcgeo.errors import RunInterrupted
+from mcgeo.errors import NumericalError, RunInterrupted
 from mcgeo.runs.build import schedule_from
 from mcgeo.runs.ending import ending_of
 from mcgeo.runs.experiment import Experiment
@@ -94,6 +94,8 @@ class Production:
         ------
         RunInterrupted
             When ``stop`` was set meanwhile; whole blocks are in the file.
+        NumericalError
+            If a walker met what is no number; the blocks before are in the file.
         """
         with Progress(self._ending.expected_blocks(0, math.inf), self._n_blocks, self._quiet) as progress:
             while not self._at_end(progress):
@@ -121,6 +123,11 @@ class Production:
                 acceptance = self._one_block(stop)
             except Interrupted:
                 self._give_up(stop)
+            except NumericalError as fault:
+                if self._n_blocks:
+                    self.save(complete=False)
+                    raise NumericalError(f"{fault}; the {self._n_blocks} blocks before are in {self._path}") from fault
+                raise
             progress.step(f"acceptance {acceptance:.3f}{self._note}")
 
     def _one_block(self, stop: StopFlag) -> float:

@@ -6,6 +6,7 @@ import threading
 from dataclasses import dataclass
 
 from mcgeo.sampling.blocks import BlockRecord, Interrupted, Measurement, merged
+from mcgeo.sampling.soundness import require_sound_block, require_sound_walkers
 from mcgeo.sampling.tuning import tuned_step
 from mcgeo.sampling.walkers import WalkerArrays, arrays_of, for_each_group, groups_of, start_walkers
 from mcgeo.states.base import SampledState, WalkerGroup
@@ -86,7 +87,9 @@ def equilibrated(state: SampledState, schedule: Schedule, stop: threading.Event)
         sweeps = max(_LEAST_TUNING_SWEEPS, half // 16)
         step, _ = tuned_step(state, groups, sweeps, schedule.threads)
     advance(step)
-    return ChainState(arrays_of(groups), step, 0)
+    walkers = arrays_of(groups)
+    require_sound_walkers(walkers, schedule.n_walkers, f"after equilibration (component {schedule.component + 1})")
+    return ChainState(walkers, step, 0)
 
 
 def next_block(
@@ -98,6 +101,8 @@ def next_block(
     ------
     Interrupted
         When ``stop`` was set before the block ended; ``chain`` is still good.
+    NumericalError
+        If positions or measurements are no numbers; ``chain`` is still good.
     """
     groups = groups_of(state, chain.walkers)
 
@@ -106,6 +111,9 @@ def next_block(
             group, chain.step, schedule.measurements_per_block, schedule.sweeps_between, stop
         )
 
-    records = for_each_group(run, groups, schedule.threads)
+    record = merged(for_each_group(run, groups, schedule.threads), schedule.n_walkers)
     after = ChainState(arrays_of(groups), chain.step, chain.blocks_done + 1)
-    return after, merged(records, schedule.n_walkers)
+    when = f"in block {after.blocks_done} (component {schedule.component + 1})"
+    require_sound_walkers(after.walkers, schedule.n_walkers, when)
+    require_sound_block(record, when)
+    return after, record

@@ -124,5 +124,7 @@ class DropletMeasurement:
         """S^-1 <r' r'^T> S^-1 as <x^2>, <y^2>, <xy>, shape (8, 3)."""
         xx, yy, xy = moments
         back = self.state.metric.inverse_linear_map
-        tensor = back @ np.array([[xx, xy], [xy, yy]]).transpose(2, 0, 1) @ back
+        # What is no number is found when the block is looked at, with its walker.
+        with np.errstate(invalid="ignore"):
+            tensor = back @ np.array([[xx, xy], [xy, yy]]).transpose(2, 0, 1) @ back
         return np.stack([tensor[:, 0, 0], tensor[:, 1, 1], tensor[:, 0, 1]], axis=1)
