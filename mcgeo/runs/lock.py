@@ -70,14 +70,23 @@ def _locked(path: Path) -> int:
         try:
             _take(handle, path)
             if _is_named(handle, lock_file):
-                os.ftruncate(handle, 0)
-                os.pwrite(handle, f"process {os.getpid()} on {socket.gethostname()}\n".encode(), 0)
+                _sign(handle, lock_file)
                 return handle
         except BaseException:
             os.close(handle)
             raise
         # Another process has just given the lock back and removed the name.
         os.close(handle)
+
+
+def _sign(handle: int, lock_file: Path) -> None:
+    try:
+        os.ftruncate(handle, 0)
+        os.pwrite(handle, f"process {os.getpid()} on {socket.gethostname()}\n".encode(), 0)
+    except OSError:
+        with suppress(OSError):
+            lock_file.unlink()
+        raise
 
 
 def _take(handle: int, path: Path) -> None:

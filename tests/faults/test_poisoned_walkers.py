@@ -50,7 +50,7 @@ def standing_still(group: Any) -> None:
         (SMALL, LaughlinGroup, standing_still, "generator that stands still"),
         (DROPLET, LaughlinDropletGroup, nowhere, "positions that are no numbers"),
         (DROPLET, LaughlinDropletGroup, far_away, "positions that are no numbers"),
-        (DROPLET, LaughlinDropletGroup, overflown, "second_moments that is no number"),
+        (DROPLET, LaughlinDropletGroup, overflown, "a value of electron_electron that is no number"),
     ],
     ids=lambda value: getattr(value, "__name__", ""),
 )
