@@ -22,7 +22,7 @@ Array = NDArray[np.float64]
 STRUCTURE, CONTROLS, PAIRS = "structure", "controls", "pairs"
 BIN_WIDTH = 0.1
 # Pair distances are a second look at what |rho_q|^2 already holds; they need not be taken every time.
-_MEASUREMENTS_PER_HISTOGRAM = 4
+_MEASUREMENTS_PER_HISTOGRAM = 16
 
 
 def configurations_counted(n_measurements: int) -> int:
