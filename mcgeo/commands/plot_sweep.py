@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import argparse
-import json
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -33,10 +32,9 @@ def draw(arguments: argparse.Namespace) -> tuple[Axes, Mapping[str, Any], dict[s
     grid = whole.fixed(fixed)
     title = ", ".join(_fixed_words(grid.place(key)[1]) for key in fixed)
     axes, table = DRAWN[arguments.what](grid, arguments, title)
-    keys = {axis[0].name: [value_text(value) for value in axis[0].values] for axis in grid.axes}
     made_by = sorted({str(version) for version in grid.columns["version"].ravel() if version})
     liquids = sorted({str(liquid) for liquid in grid.columns["liquid"].ravel() if liquid})
-    source = {"sweep": json.dumps(keys), "rows made by": ", ".join(made_by), "liquids": ", ".join(liquids)}
+    source = {"configuration": grid.configuration, "rows made by": ", ".join(made_by), "liquids": ", ".join(liquids)}
     # The table of the whole sweep is sweep.csv: a figure's must not take its place.
     name = {"sweep": "curves"}.get(arguments.what, arguments.what)
     quantity = "" if arguments.what == "aspects" else f"_{arguments.quantity or _DEFAULT_QUANTITY}"

@@ -30,12 +30,15 @@ class SweepGrid:
         Results: NaN, or empty text, where there is none.
     units : mapping of str to str
         Unit of each column.
+    configuration : str
+        Of the sweep, as JSON.
     """
 
     axes: Sequence[Sequence[SweptColumn]]
     spacings: Sequence[str]
     columns: Mapping[str, NDArray[Any]]
     units: Mapping[str, str]
+    configuration: str
 
     @property
     def free_axes(self) -> list[int]:
@@ -100,7 +103,7 @@ class SweepGrid:
         axes = [list(axis) for axis in self.axes]
         axes[index] = [SweptColumn(column.name, column.unit, column.values[places]) for column in axes[index]]
         columns = {name: np.take(values, places, axis=index) for name, values in self.columns.items()}
-        return SweepGrid(axes, self.spacings, columns, self.units)
+        return SweepGrid(axes, self.spacings, columns, self.units, self.configuration)
 
 
 def error_name(quantity: str) -> str:
@@ -158,6 +161,7 @@ def _contents(file: Any) -> SweepGrid:
         [str(scale.attrs["spacing"]) for scale in scales],
         {name: _values(dataset) for name, dataset in results.items()},
         {name: str(dataset.attrs["units"]) for name, dataset in results.items()},
+        str(file.attrs["config"]),
     )
 
 

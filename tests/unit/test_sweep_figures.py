@@ -57,7 +57,8 @@ def _table():
         np.full(int(kept.sum()), "done"),
         {},
         {name: values[kept] for name, values in columns.items()},
-    )  # fmt: skip
+        {"state": {"kind": "laughlin"}},
+    )
 
 
 @pytest.fixture
@@ -80,6 +81,7 @@ def test_a_grid_is_read_as_it_was_written(folder):
         np.testing.assert_array_equal(grid.columns[name].ravel()[table.positions], table.columns[name])
     assert np.isnan(grid.columns["stretch"][3, 2, 0])
     np.testing.assert_array_equal(grid.axes[2][1].values, ANGLES)
+    assert grid.configuration == '{"state": {"kind": "laughlin"}}'
 
 
 def test_files_that_are_none(tmp_path):
