@@ -14,13 +14,14 @@ from pathlib import Path
 from mcgeo.errors import McgeoError, RunInterrupted
 from mcgeo.runs.executors import Crew
 from mcgeo.runs.signals import StopFlag, stop_on_signals
+from mcgeo.runs.sweep_liquids import liquid_progress, needs_sampling
 from mcgeo.runs.sweep_note import note_run
 from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points, tidy
 from mcgeo.runs.sweep_stop import SharedStopFlag
-from mcgeo.runs.sweep_tasks import Question, Report, find_optima, liquid_progress, needs_sampling, sample_liquid
+from mcgeo.runs.sweep_tasks import Question, Report, find_optima, sample_liquid
 
 _SECONDS_BETWEEN_LOOKS = 0.5
 # Executors that break so often in a row, without one task done, will not do better the next time.

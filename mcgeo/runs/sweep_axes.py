@@ -4,16 +4,16 @@ from __future__ import annotations
 
 import csv
 import io
-import math
+import json
 import re
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 from pydantic_core import PydanticCustomError
 
 from mcgeo.runs.config import UNRELATED_TO_RESULTS
-from mcgeo.runs.config_faults import Remark
+from mcgeo.runs.config_faults import Remark, show
 from mcgeo.runs.named_files import NamedFiles, NotPlainError, read_plain
 from mcgeo.runs.sweep_config import (
     AxisConfig,
@@ -33,6 +33,7 @@ _DIGITS = 12
 _MAX_BYTES = 10_000_000
 _NOT_SWEPT = {
     "sweep": "a sweep cannot hold another",
+    "scan": "a sweep finds optima, which no key of scan changes",
     **{f"sampling.{key}": "no result depends on it" for key in UNRELATED_TO_RESULTS},
 }
 _WORDS = {"true": True, "false": False, "null": None}
@@ -135,7 +136,7 @@ def _axis(keys: AxisConfig, place: Path, files: NamedFiles) -> Axis:
     if isinstance(keys, FileAxisConfig):
         return Axis(tuple(_from_file(keys, place, files)), "file")
     if not isinstance(keys, TogetherAxisConfig):
-        return Axis((_single(keys, place),), keys.spacing if isinstance(keys, RangeAxisConfig) else "list")
+        return _all_different([_single(keys, place)], keys.spacing if isinstance(keys, RangeAxisConfig) else "list")
     found = [_single(single, (*place, "together", i)) for i, single in enumerate(keys.together)]
     for key in found[1:]:
         if len(key.values) != len(found[0].values):
@@ -144,7 +145,19 @@ def _axis(keys: AxisConfig, place: Path, files: NamedFiles) -> Axis:
                 f"{key.name} has {_count(key)}, but {found[0].name}, which changes together with it, has "
                 f"{_count(found[0])}",
             )
-    return Axis(tuple(found), "list")
+    return _all_different(found, "list")
+
+
+def _all_different(keys: Sequence[SweptKey], spacing: str) -> Axis:
+    """The axis, unless it holds the same point twice; a file may, its rows being measured."""
+    seen = set()
+    for position, values in enumerate(zip(*(key.values for key in keys), strict=True)):
+        known = json.dumps([float(v) if type(v) is int else v for v in values], sort_keys=True)
+        if known in seen:
+            listed = ", ".join(f"{key.name} {show(value)}" for key, value in zip(keys, values, strict=True))
+            raise _AxisFault((*keys[0].place, "values", position), f"holds {listed} twice; keep one")
+        seen.add(known)
+    return Axis(tuple(keys), spacing)
 
 
 def _count(key: SweptKey) -> str:
@@ -220,74 +233,3 @@ def _clashes(axes: list[Axis]) -> Iterator[Remark]:
             elif other.path[: len(key.path)] == key.path:
                 yield Remark(key.place, f"{key.name} holds {other.name}, an earlier axis; put that axis after this one")
         earlier.append(key)
-
-
-def replaced(tree: Any, path: Path, value: Any) -> Any:
-    """The tree with another value at a path, copied along it; groups that are missing are made.
-
-    Raises
-    ------
-    KeyError
-        If a list is too short, or something that is no group or list stands on the way.
-    """
-    if not path:
-        return value
-    step = path[0]
-    if isinstance(step, int):
-        if not isinstance(tree, list | tuple) or step >= len(tree):
-            raise KeyError(step)
-        return [*tree[:step], replaced(tree[step], path[1:], value), *tree[step + 1 :]]
-    if tree is None:
-        tree = {}
-    if not isinstance(tree, Mapping):
-        raise KeyError(step)
-    return {**tree, step: replaced(tree.get(step), path[1:], value)}
-
-
-def same_value(a: Any, b: Any) -> bool:
-    """Equal, numbers up to rounding."""
-    if all(isinstance(value, int | float) and not isinstance(value, bool) for value in (a, b)):
-        return math.isclose(a, b, rel_tol=1e-9, abs_tol=0.0)
-    return bool(a == b)
-
-
-class NoSuchPlaceError(Exception):
-    """A swept key that points into something that is no group, or beyond the end of a list."""
-
-    def __init__(self, key: SweptKey) -> None:
-        super().__init__(key.name)
-        self.key = key
-
-
-def indices_at(shape: Sequence[int], position: int) -> tuple[int, ...]:
-    """Positions along the axes of a position in the grid."""
-    indices = []
-    for length in reversed(shape):
-        position, index = divmod(position, length)
-        indices.append(index)
-    return tuple(reversed(indices))
-
-
-def named_values(axes: Sequence[Axis], indices: Sequence[int]) -> Iterator[tuple[str, Any]]:
-    """Swept keys and their values."""
-    for axis, index in zip(axes, indices, strict=True):
-        for key in axis.keys:
-            yield key.name, key.values[index]
-
-
-def data_at(base: Mapping[str, Any], axes: Sequence[Axis], indices: Sequence[int]) -> Any:
-    """The base with the swept keys replaced.
-
-    Raises
-    ------
-    NoSuchPlaceError
-        If a key points beyond the end of a list, or into something that is no group.
-    """
-    data: Any = base
-    for axis, index in zip(axes, indices, strict=True):
-        for key in axis.keys:
-            try:
-                data = replaced(data, key.path, key.values[index])
-            except KeyError:
-                raise NoSuchPlaceError(key) from None
-    return data

@@ -6,7 +6,8 @@ from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 from mcgeo.runs.config_faults import Remark, show
-from mcgeo.runs.sweep_axes import Axis, same_value
+from mcgeo.runs.sweep_axes import Axis
+from mcgeo.runs.sweep_positions import same_value
 
 _BOUNDS = {"above", "below"}
 

@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 from mcgeo.runs.config_faults import Remark, show
-from mcgeo.runs.sweep_axes import Axis, SweptKey, named_values
+from mcgeo.runs.sweep_axes import Axis, SweptKey
+from mcgeo.runs.sweep_positions import named_values
 from mcgeo.runs.yaml_source import Fault, YamlSource
 
 

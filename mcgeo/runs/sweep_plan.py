@@ -22,10 +22,11 @@ from mcgeo.runs.config import Config, resolved, state_identity, validated
 from mcgeo.runs.config_faults import Remark, explain
 from mcgeo.runs.named_files import NamedFiles
 from mcgeo.runs.sampling_config import STRETCH
-from mcgeo.runs.sweep_axes import Axis, NoSuchPlaceError, axes_of, data_at, indices_at, named_values
+from mcgeo.runs.sweep_axes import Axis, axes_of
 from mcgeo.runs.sweep_config import MOST_POINTS, SweepConfig
 from mcgeo.runs.sweep_exclusions import exclusions_of
 from mcgeo.runs.sweep_faults import PointFaults
+from mcgeo.runs.sweep_positions import NoSuchPlaceError, data_at, indices_at, named_values
 from mcgeo.runs.yaml_source import Fault, YamlSource, parse_yaml
 
 _SHOWN_FAULTS = 10

@@ -15,9 +15,9 @@ from mcgeo.errors import ConfigError, StorageError
 from mcgeo.runs.atomic import whole_file
 from mcgeo.runs.sample import LIQUID_FILE
 from mcgeo.runs.sweep import Costs
+from mcgeo.runs.sweep_liquids import LIQUIDS, liquid_progress
 from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_rows import POINTS, row_files
-from mcgeo.runs.sweep_tasks import LIQUIDS, liquid_progress
 
 SHARDS = "shards"
 _NAME = re.compile(r"([1-9]\d*)/([1-9]\d*)")

@@ -14,8 +14,6 @@ from functools import lru_cache
 from pathlib import Path
 from typing import Any, NamedTuple
 
-import h5py
-
 from mcgeo.errors import McgeoError, RunInterrupted, StorageError
 from mcgeo.runs.catalogue import KIND, catalogue_liquid
 from mcgeo.runs.config import config_from_resolved
@@ -26,10 +24,9 @@ from mcgeo.runs.scan import SharedAnswers, optimum, optimum_summary, problem_sum
 from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.signals import StopFlag
 from mcgeo.runs.storage import read_result
+from mcgeo.runs.sweep_liquids import LIQUIDS
 from mcgeo.runs.sweep_rows import RowFile
 from mcgeo.runs.units import with_units
-
-LIQUIDS = "liquids"
 
 _SECONDS_BETWEEN_LOOKS = 0.2
 _LIQUIDS_KEPT = 2
@@ -209,30 +206,3 @@ def _opened_as_of(path: Path, changed: int) -> _Opened:
 def _opened_of_catalogue(name: str, conjugate: bool) -> _Opened:
     found = catalogue_liquid({"kind": KIND, "catalogue": name, "conjugate": conjugate})
     return _Opened(found, found.entry.large.resolved["sampling"]["seed"])
-
-
-class LiquidProgress(NamedTuple):
-    """How far the sampling of a liquid has come: blocks kept, and whether they are all."""
-
-    blocks: int
-    complete: bool
-
-
-def liquid_progress(folder: Path, liquid: str) -> LiquidProgress:
-    """How far a liquid of a sweep's folder is, as of its last checkpoint; a file that cannot be read counts as none."""
-    try:
-        with h5py.File(folder / LIQUIDS / liquid / LIQUID_FILE, "r") as file:
-            return LiquidProgress(len(file["blocks/drift"][0]), bool(file.attrs["complete"]))
-    except (OSError, KeyError, ValueError):
-        return LiquidProgress(0, False)
-
-
-def needs_sampling(folder: Path, liquid: str, state: Keys) -> bool:
-    """Whether optima of a liquid have to wait for its sampling; those of the catalogue never do.
-
-    Parameters
-    ----------
-    state : mapping
-        Resolved keys of ``state``.
-    """
-    return bool(state["kind"] != KIND) and not liquid_progress(folder, liquid).complete

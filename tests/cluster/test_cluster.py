@@ -12,7 +12,7 @@ from mcgeo.cli import main
 from mcgeo.runs import cluster as cluster_module
 from mcgeo.runs.cluster_worker import unfit, versions
 from mcgeo.runs.lock import run_lock
-from mcgeo.runs.sweep_tasks import LIQUIDS, liquid_progress
+from mcgeo.runs.sweep_liquids import LIQUIDS, liquid_progress
 from tests.cluster.conftest import tables
 from tests.cluster.loopback import Loopback, loopback, meanwhile, wait_for
 

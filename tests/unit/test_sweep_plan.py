@@ -12,9 +12,10 @@ import pytest
 
 from mcgeo.errors import ConfigError
 from mcgeo.runs.config import load_config, resolved
-from mcgeo.runs.sweep_axes import key_path, range_values, replaced
+from mcgeo.runs.sweep_axes import key_path, range_values
 from mcgeo.runs.sweep_config import RangeAxisConfig
 from mcgeo.runs.sweep_plan import has_sweep, load_sweep, point_of
+from mcgeo.runs.sweep_positions import replaced
 
 BASE = """\
 state: {kind: laughlin, exponent: 3, electrons: 4}
@@ -288,9 +289,17 @@ FAULTS = {
         ["{key: 'problem.interaction.terms[3].weight', values: [1]}"],
         [("key: ", "problem.interaction.terms[3].weight: there is no such place in the configuration")],
     ),
-    "the torus road": (
-        ["{key: scan.road, values: [plane, torus]}"],
-        [("torus]", "scan.road: must be plane in a sweep, not torus; ")],
+    "what changes no optimum": (
+        ["{key: scan.stretch.points, values: [11, 21]}"],
+        [("scan.stretch", "sweep.axes[0].key: scan.stretch.points cannot take part: a sweep finds optima, which ")],
+    ),
+    "a value twice": (
+        ["{key: problem.mass.ratio, values: [1, 2, 1.0]}"],
+        [("1.0]", "sweep.axes[0].values[2]: holds problem.mass.ratio 1.0 twice; keep one")],
+    ),
+    "a pair twice": (
+        ["together: [{key: state.exponent, values: [3, 3, 3]}, {key: state.electrons, values: [4, 5, 4]}]"],
+        [("3]}, {key", "sweep.axes[0].together[0].values[2]: holds state.exponent 3, state.electrons 4 twice; ")],
     ),
     "no key": (
         ["{key: problem..level, values: [1]}"],
@@ -325,6 +334,12 @@ def test_a_fault_of_the_base_is_said_once_and_without_a_point(write):
     text = sweep_of("{key: problem.mass.ratio, values: [1, 2, 3]}", base=BASE.replace("sweeps", "swepes"))
     ((place, said),) = pointed_at(faults_of(write(text)))
     assert place.startswith("swepes") and said.startswith("sampling.swepes: unknown key") and "(at" not in said
+
+
+def test_the_torus_road_is_not_for_sweeps(write):
+    text = sweep_of("{key: problem.mass.ratio, values: [1, 2]}", base=f"{BASE}scan: {{road: torus}}\n")
+    ((place, said),) = pointed_at(faults_of(write(text)))
+    assert place == "torus}" and said.startswith("scan.road: must be plane in a sweep, not torus; ")
 
 
 def test_a_fault_of_some_points_counts_them(write):
