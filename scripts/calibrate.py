@@ -50,7 +50,6 @@ PROBLEM = {
     "mass": {"ratio": 9.0, "angle_degrees": 0.0},
     "interaction": {"kind": "coulomb", "dielectric": {"ratio": 2.0, "angle_degrees": 50.0}},
 }
-DROPLET_PROBLEM = {"mass": {"ratio": 4.0, "angle_degrees": 30.0}}
 
 
 @dataclass(frozen=True)
@@ -138,15 +137,9 @@ def run(case: Case, seed: int, folder: Path) -> Sampled:
     return dataclasses.replace(result, blocks=dataclasses.replace(result.blocks, means=means))
 
 
-def quantities(result: Sampled, *, with_optimum: bool = True) -> dict[str, Found | FoundTogether]:
-    """Everything with an error that a run hands out, by name; the optimum is what takes time."""
-    is_droplet = isinstance(result, Droplet)
-    found = _droplet_quantities(result) if is_droplet else _liquid_quantities(result)
-    if with_optimum:
-        found |= _optimum_quantities(result, DROPLET_PROBLEM if is_droplet else PROBLEM, _n_samples(result))
-        if is_droplet:
-            # The axis is the mass's by symmetry.
-            del found["angle"]
+def quantities(result: Sampled) -> dict[str, Found | FoundTogether]:
+    """Everything with an error that a run hands out, by name; the optimum is that of liquids on the torus."""
+    found = _droplet_quantities(result) if isinstance(result, Droplet) else _liquid_quantities(result)
     named: dict[str, Found | FoundTogether] = {name: Found(e.value, e.error, n - 1) for name, (e, n) in found.items()}
     if isinstance(result, Liquid):
         occupations = result.occupations
@@ -161,7 +154,7 @@ def quantities(result: Sampled, *, with_optimum: bool = True) -> dict[str, Found
 def _liquid_quantities(liquid: Sampled) -> dict[str, tuple[Estimate, int]]:
     assert isinstance(liquid, Liquid)
     occupations, structure = liquid.occupations, liquid.structure_samples
-    n = _n_samples(liquid)
+    n = len(structure)
     surface = EnergySurface(occupations, Problem(liquid.frame.metric, Coulomb()))
     found = {
         "energy of the cell": (liquid.torus_energy(Coulomb()), n),
@@ -172,12 +165,12 @@ def _liquid_quantities(liquid: Sampled) -> dict[str, tuple[Estimate, int]]:
     for index, m in enumerate(occupations.m[:_OCCUPATIONS]):
         if m >= liquid.states[0].first_occupied:
             found[f"n_{m}"] = (occupations.occupation(index), n)
-    return found
+    return found | _optimum_quantities(liquid, n)
 
 
 def _droplet_quantities(droplet: Droplet) -> dict[str, tuple[Estimate, int]]:
     energies, occupations = droplet.energies, droplet.occupations
-    n = _n_samples(droplet)
+    n = len(occupations.orbital_samples)
     xx, yy, _ = droplet.samples("second_moments").T
     found = {
         "energy": (energies.total, n),
@@ -189,13 +182,8 @@ def _droplet_quantities(droplet: Droplet) -> dict[str, tuple[Estimate, int]]:
     return found
 
 
-def _n_samples(result: Sampled) -> int:
-    return len(result.independent(result.blocks.accepted.mean(axis=0)))
-
-
-def _optimum_quantities(result: Any, problem: Mapping[str, Any], n: int) -> dict[str, tuple[Estimate, int]]:
-    keys = {**result.resolved["problem"], **problem}
-    best = optimum(result, keys)
+def _optimum_quantities(liquid: Liquid, n: int) -> dict[str, tuple[Estimate, int]]:
+    best = optimum(liquid, {**liquid.resolved["problem"], **PROBLEM})
     groups = min(n, _JACKKNIFE_GROUPS)
     minimum = best.minimum
     return {

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mcgeo.estimate.blocking import Blocking, blocking
-from mcgeo.estimate.rank_diagnostics import bulk_samples, halves, rank_r_hat, tail_samples
+from mcgeo.estimate.rank_diagnostics import halves, rank_diagnostics
 from mcgeo.estimate.statistics import integrated_autocorrelation_time
 
 Array = NDArray[np.float64]
@@ -155,11 +155,11 @@ def diagnose(
     chains = np.moveaxis(trace, 2, 1).reshape(n_components, n_walkers, -1)
     samples = chains.size / max(time_in_measurements, 1.0)
     limit = _largest([_limit_of(x) for x in chains])
+    ranks = [rank_diagnostics(x) for x in chains]
     # A mean over components has the error of all of them: the harmonic mean counts.
-    bulk, tail = (
-        n_components**2 / sum(1.0 / count(x) for x in chains) for count in (bulk_samples, tail_samples)
-    )
-    r_hat = _largest([rank_r_hat(x) for x in chains])
+    bulk = n_components**2 / sum(1.0 / found.bulk_samples for found in ranks)
+    tail = n_components**2 / sum(1.0 / found.tail_samples for found in ranks)
+    r_hat = _largest([found.r_hat for found in ranks])
     plateau = _of_components([blocking(x) for x in chains], length.sweeps_between)
     walkers = accepted.mean(axis=1)
     found = _Findings()

@@ -9,6 +9,7 @@ rank normalisation of equation 14, folding and tails (equation numbers from memo
 from __future__ import annotations
 
 import math
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -48,21 +49,6 @@ def _r_hat(chains: Array) -> float:
     return math.sqrt(((n - 1) * within + between) / (n * within)) if within > 0.0 else math.nan
 
 
-def rank_r_hat(chains: Array) -> float:
-    """The larger of rank-normalised split R-hat and of the same of |x - median|, which sees unequal widths.
-
-    1 for chains of one distribution. NaN for fewer than 4 steps, and where chains do not move at all.
-
-    Parameters
-    ----------
-    chains : ndarray, shape (n_chains, n_steps)
-    """
-    if chains.shape[1] < _LEAST_STEPS:
-        return math.nan
-    cut = halves(chains)
-    return max(_r_hat(normal_ranks(cut)), _r_hat(normal_ranks(np.abs(cut - np.median(cut)))))
-
-
 def _effective_samples(chains: Array) -> float:
     """S/tau with Geyer's initial monotone sequence (Stat. Sci. 7, 473 (1992), section 3.3); S where nothing varies."""
     n_chains, n = chains.shape
@@ -84,25 +70,34 @@ def _effective_samples(chains: Array) -> float:
     return chains.size / max(time, 1.0 / math.log10(chains.size))
 
 
-def bulk_samples(chains: Array) -> float:
-    """Effective sample size for the bulk: that of the rank-normalised halves; NaN for fewer than 4 steps.
+class RankDiagnostics(NamedTuple):
+    """What ranks say of several chains; NaN for chains of fewer than 4 steps.
 
-    Parameters
+    Attributes
     ----------
-    chains : ndarray, shape (n_chains, n_steps)
+    r_hat : float
+        The larger of rank-normalised split R-hat and of the same of |x - median|, which sees unequal widths: 1 for
+        chains of one distribution. NaN where chains do not move at all.
+    bulk_samples : float
+        Effective sample size for the bulk: that of the rank-normalised halves.
+    tail_samples : float
+        Effective sample size of the 5 % or the 95 % quantile, whichever is less.
     """
-    return _effective_samples(normal_ranks(halves(chains))) if chains.shape[1] >= _LEAST_STEPS else math.nan
+
+    r_hat: float
+    bulk_samples: float
+    tail_samples: float
 
 
-def tail_samples(chains: Array) -> float:
-    """Effective sample size of the 5 % or the 95 % quantile, whichever is less; NaN for fewer than 4 steps.
-
-    Parameters
-    ----------
-    chains : ndarray, shape (n_chains, n_steps)
-    """
+def rank_diagnostics(chains: Array) -> RankDiagnostics:
+    """Diagnostics of chains of shape (n_chains, n_steps)."""
     if chains.shape[1] < _LEAST_STEPS:
-        return math.nan
+        return RankDiagnostics(math.nan, math.nan, math.nan)
     cut = halves(chains)
-    quantiles = np.quantile(chains, [_TAIL, 1.0 - _TAIL])
-    return min(_effective_samples((cut <= quantile).astype(float)) for quantile in quantiles)
+    low, high = np.quantile(chains, [_TAIL, 1.0 - _TAIL])
+    deviates = normal_ranks(cut)
+    return RankDiagnostics(
+        max(_r_hat(deviates), _r_hat(normal_ranks(np.abs(cut - np.median(cut))))),
+        _effective_samples(deviates),
+        min(_effective_samples((cut <= quantile).astype(float)) for quantile in (low, high)),
+    )

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from mcgeo.estimate.diagnostics import RunLength, diagnose, r_hat_limit
-from mcgeo.estimate.rank_diagnostics import rank_r_hat
+from mcgeo.estimate.rank_diagnostics import rank_diagnostics
 from mcgeo.estimate.statistics import integrated_autocorrelation_time
 from mcgeo.report.text import verdict_text
 from tests.physics.autoregressive import autoregressive
@@ -90,7 +90,7 @@ def test_one_still_walker_is_seen():
 def test_limit_of_r_hat_lets_chains_that_agree_pass(walkers, steps):
     random = np.random.default_rng(6)
     limit = r_hat_limit(steps / 2.0, 2 * walkers)
-    found = [rank_r_hat(random.standard_normal((walkers, steps))) for _ in range(200)]
+    found = [rank_diagnostics(random.standard_normal((walkers, steps))).r_hat for _ in range(200)]
     assert max(found) < limit
     # Without the allowance many short chains would not.
     if steps == 40:
@@ -105,7 +105,7 @@ def test_components_count_together():
     alone = health(one)
     assert found.bulk_samples == pytest.approx(2.0 * alone.bulk_samples, rel=0.2)
     assert found.blocking.error == pytest.approx(alone.blocking.error / math.sqrt(2.0), rel=0.2)
-    assert found.r_hat == max(rank_r_hat(one), rank_r_hat(other))
+    assert found.r_hat == max(rank_diagnostics(one).r_hat, rank_diagnostics(other).r_hat)
 
 
 def test_words():
