@@ -74,7 +74,7 @@ def test_many_problems_of_a_liquid_that_needs_no_sampling_are_divided(tmp_path: 
         "sweep: {axes: [{key: problem.mass.ratio, from: 1, to: 4, points: 100}]}\n"
     )
     plan = load_sweep(tmp_path / "run.yaml")
-    parts = shard_plans(plan, Costs(dict.fromkeys(plan.liquids, 0.0), 0.01), 8)
+    parts = shard_plans(plan, Costs(dict.fromkeys(plan.liquids, 0.0), 0.01, dict.fromkeys(plan.liquids, 0)), 8)
     assert sorted(point for part in parts for point in part.points) == sorted(plan.points)
     assert {len(part.points) for part in parts} <= {12, 13}
 
