@@ -22,7 +22,15 @@ class ConfigError(McgeoError):
 
 
 class GeometryError(McgeoError):
-    """A cell, metric or geometry outside the range that works; the message names the range."""
+    """A cell, metric or geometry outside the range that works; the message names the range.
+
+    Attributes
+    ----------
+    key : str
+        Path of the key of the configuration that it came from, empty where none is known.
+    """
+
+    key = ""
 
 
 class StorageError(McgeoError):

@@ -17,6 +17,7 @@ from mcgeo.kernels._jit import cache_folder
 from mcgeo.report.sweep_text import sweep_plan_text
 from mcgeo.runs.build import available_threads
 from mcgeo.runs.config import json_schema, load_config, resolved
+from mcgeo.runs.places import with_places
 from mcgeo.runs.plan import plan_of
 from mcgeo.runs.sweep_estimate import sweep_summary
 from mcgeo.runs.sweep_plan import has_sweep, load_sweep
@@ -33,6 +34,7 @@ def _rows(summary: dict[str, Any]) -> str:
     return "\n".join(f"{name.ljust(width)}  {value}" for name, value in flat.items())
 
 
+@with_places
 def run_check(arguments: argparse.Namespace) -> tuple[str, int]:
     """``mcgeo check``: the plan of a valid configuration and what it will cost."""
     if has_sweep(arguments.config):

@@ -14,6 +14,7 @@ from mcgeo.report.text import droplet_text, sample_text
 from mcgeo.runs.config import Config, config_from_resolved, load_config
 from mcgeo.runs.droplet import Droplet
 from mcgeo.runs.droplet_summary import droplet_summary
+from mcgeo.runs.places import with_places
 from mcgeo.runs.sample import LIQUID_FILE, sample
 from mcgeo.runs.sample_summary import sample_summary
 from mcgeo.runs.storage import RESULT_SUFFIX, as_liquid, read_result
@@ -55,6 +56,7 @@ def read_config(path: Path, arguments: argparse.Namespace) -> Config:
     return config.model_copy(update={"sampling": config.sampling.model_copy(update={"threads": threads})})
 
 
+@with_places
 def run_sample(arguments: argparse.Namespace) -> Answer:
     """``mcgeo sample``."""
     arguments.config = result_file(arguments.config)

@@ -18,6 +18,7 @@ from mcgeo.runs.catalogue_summary import with_error_parts
 from mcgeo.runs.config import Config, differing_keys, resolved
 from mcgeo.runs.droplet_scan import require_droplet_problem
 from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.places import with_places
 from mcgeo.runs.sample import sample
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.scan import require_reach, scan, scan_summary
@@ -31,6 +32,7 @@ from mcgeo.variational.variation import PROJECTED
 _ENERGY = "[e^2/(4 pi eps l_B) per electron]"
 
 
+@with_places
 def run_scan(arguments: argparse.Namespace) -> Answer:
     """``mcgeo scan``: samples first when a liquid is missing."""
     arguments.config = result_file(arguments.config)

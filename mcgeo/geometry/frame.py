@@ -46,10 +46,12 @@ class TorusFrame:
         """
         imag = self.isotropic.tau.imag
         if imag > largest:
-            raise GeometryError(
+            fault = GeometryError(
                 f"the cell is too elongated for this state: its reduced Im(tau) in the state's metric is {imag:.4g}; "
                 f"at most {largest:g} works; choose a less extreme cell or metric"
             )
+            fault.key = "cell"
+            raise fault
 
     def positions(self, a: NDArray[np.float64], b: NDArray[np.float64]) -> NDArray[np.float64]:
         """Lab positions, shape (..., 2), of fractions a, b of the basis."""

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import math
 import os
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from fractions import Fraction
 from typing import Any
 
+from mcgeo.errors import GeometryError
 from mcgeo.geometry.cell import Cell
 from mcgeo.geometry.frame import TorusFrame
 from mcgeo.geometry.metric import UnimodularMetric
@@ -22,6 +24,16 @@ from mcgeo.states.registry import DROPLET_STATES, TORUS_STATES
 from mcgeo.variational.variation import Variation
 
 Keys = Mapping[str, Any]
+
+
+@contextmanager
+def of_key(key: str) -> Iterator[None]:
+    """Errors of geometry raised within are of this key of the configuration, unless they know a better one."""
+    try:
+        yield
+    except GeometryError as fault:
+        fault.key = fault.key or key
+        raise
 
 
 def metric_from(keys: Keys) -> UnimodularMetric:
@@ -44,11 +56,12 @@ def torus_frame(resolved: Keys) -> TorusFrame:
     """
     state, cell = resolved["state"], resolved["cell"]
     n_flux = state["electrons"] / filling_of(state)
-    if "tau" in cell:
-        lab = Cell.from_tau(complex(*cell["tau"]), int(n_flux))
-    else:
-        lab = Cell.from_shape(cell["shape"], int(n_flux))
-    return TorusFrame.of(lab, metric_from(state["metric"]))
+    with of_key("cell"):
+        if "tau" in cell:
+            lab = Cell.from_tau(complex(*cell["tau"]), int(n_flux))
+        else:
+            lab = Cell.from_shape(cell["shape"], int(n_flux))
+        return TorusFrame.of(lab, metric_from(state["metric"]))
 
 
 def torus_states(resolved: Keys) -> list[TrialState]:
@@ -60,7 +73,9 @@ def torus_states(resolved: Keys) -> list[TrialState]:
         If the cell does not suit the state.
     """
     state = resolved["state"]
-    return TORUS_STATES[state["kind"]](state, torus_frame(resolved))
+    frame = torus_frame(resolved)
+    with of_key("state.points" if state.get("points") else "state.electrons"):
+        return TORUS_STATES[state["kind"]](state, frame)
 
 
 def droplet_state(resolved: Keys) -> DropletState:
@@ -112,12 +127,12 @@ def mass_metric(keys: Keys) -> UnimodularMetric:
 def problem_from(keys: Keys, interaction: Interaction | None = None) -> Problem:
     """The projected problem; ``interaction`` where it has been made before."""
     tilt = keys.get("tilt")
-    return Problem(
-        mass_metric(keys["mass"]),
-        interaction or interaction_from(keys["interaction"]),
-        keys["level"],
-        None if tilt is None else tilted_field(tilt),
-    )
+    with of_key("problem.mass"):
+        mass = mass_metric(keys["mass"])
+    with of_key("problem.interaction"):
+        found = interaction or interaction_from(keys["interaction"])
+    with of_key("problem.tilt"):
+        return Problem(mass, found, keys["level"], None if tilt is None else tilted_field(tilt))
 
 
 def tilted_field(keys: Keys) -> TiltedField:

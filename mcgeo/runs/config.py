@@ -10,11 +10,11 @@ from typing import Any
 from pydantic import Field, ValidationError, ValidationInfo, field_validator, model_validator
 from pydantic_core import PydanticCustomError
 
-from mcgeo.errors import ConfigError
+from mcgeo.errors import ConfigError, GeometryError
 from mcgeo.runs.config_faults import Remark, explain, show
 from mcgeo.runs.config_types import Group
 from mcgeo.runs.geometry_config import CellConfig, GeometryConfig, NamedCellConfig
-from mcgeo.runs.lengths import length_remarks, with_lengths_in_nm
+from mcgeo.runs.lengths import length_remarks, with_lengths_in_nm, without_repeats
 from mcgeo.runs.material_config import MaterialConfig
 from mcgeo.runs.named_files import FILES, NamedFiles
 from mcgeo.runs.problem_config import ProblemConfig, ScanConfig
@@ -169,11 +169,14 @@ def validated(data: Mapping[str, Any], files: NamedFiles | None) -> tuple[Config
     """
     context = {FILES: files}
     try:
-        return Config.model_validate(data, context=context), []
-    except ValidationError as error:
-        # The model looks for contradictions only when all groups are valid; here they are wanted in any case.
-        across = contradictions(with_material(data, context)) if isinstance(data, Mapping) else []
-        return None, explain(error, json_schema()) + across
+        try:
+            return Config.model_validate(data, context=context), []
+        except ValidationError as error:
+            # The model looks for contradictions only when all groups are valid; here they are wanted in any case.
+            across = contradictions(with_material(data, context)) if isinstance(data, Mapping) else []
+            return None, without_repeats(explain(error, json_schema()), across) + across
+    except GeometryError as error:
+        return None, [Remark(("material",), str(error), at_key=True)]
 
 
 def resolved(config: Config) -> dict[str, Any]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from mcgeo.runs.config_faults import Remark
@@ -65,6 +65,13 @@ def _left_in_nm(keys: object, path: Path) -> Iterator[Remark]:
         else:
             message = "needs the magnetic length: give material with field_tesla or density_per_cm2"
             yield Remark((*path, key), message, at_key=True)
+
+
+def without_repeats(remarks: Iterable[Remark], across: Sequence[Remark]) -> list[Remark]:
+    """The remarks without those that a length left in nm brings with it: that NAME_nm is unknown, and NAME missing."""
+    left = {remark.path for remark in across if remark.path and _without_ending(remark.path[-1]) is not None}
+    names = {(*path[:-1], _without_ending(path[-1])) for path in left}
+    return [remark for remark in remarks if remark.path not in left and remark.path not in names]
 
 
 def with_lengths_in_nm(schema: dict[str, Any]) -> dict[str, Any]:
