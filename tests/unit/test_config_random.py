@@ -2,12 +2,18 @@
 
 import copy
 import json
+import math
 import re
+import signal
+from contextlib import contextmanager
+from pathlib import Path
 
 import pytest
-from hypothesis import given, settings
+import yaml
+from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
+from mcgeo.cli import main
 from mcgeo.errors import ConfigError
 from mcgeo.runs.config import config_from_resolved, load_config, resolved
 
@@ -213,3 +219,118 @@ def test_damaged_configurations_are_read_or_refused_in_plain_words(tmp_path_fact
             config_from_resolved(data)
     else:
         assert config_from_resolved(resolved(config)) == config
+
+
+# Those of single runs; a sweep may rightly take long to check.
+REAL = {
+    path.name: path.read_bytes()
+    for path in sorted((Path(__file__).parents[2] / "configs").glob("*.yaml"))
+    if b"\nsweep:" not in path.read_bytes()
+}
+EXTREMES = [
+    0, -1, 1, 2, 3, 7, 10**4, 10**6, 10**9, 2**63, 2**64, 10**18, 10**400, -(10**18), 0.0, -0.0, 1e-320, 1e-300, 1e-12,
+    1e12, 1e300, 1.7e308, math.inf, -math.inf, math.nan, True, None, "", "k" * 2000, "1/3", "0/0", "1/0", "*",
+    "../x.csv", "/dev/zero", "run.yaml", [], {}, [[]], [0.0, 1e300], [1e-300, 1e-300], {"kind": "sum", "terms": []},
+    {"kind": "table", "file": "x.csv"}, {"stretch": 5.0, "angle_degrees": 1e300}, "laughlin", "disk", "coulomb",
+]  # fmt: skip
+ADDED = ["kind", "metric", "file", "target_error", "points", "sweep", "width_nm", "x" * 99]
+SECONDS = 30
+
+
+@st.composite
+def real_with_other_values(draw):
+    """A configuration that comes with the program, with values replaced, removed, added, swapped or doubled."""
+    data = yaml.safe_load(REAL[draw(st.sampled_from(sorted(REAL)))])
+    for _ in range(draw(st.integers(1, 3))):
+        places = list(_nodes(data))
+        if not places:
+            break
+        parent, key = draw(st.sampled_from(places))
+        action = draw(st.sampled_from(["extreme", "extreme", "junk", "remove", "add", "swap", "nest"]))
+        if action == "remove":
+            del parent[key]
+        elif action == "add" and isinstance(parent, dict):
+            parent[draw(st.sampled_from(ADDED))] = copy.deepcopy(draw(st.sampled_from(EXTREMES)))
+        elif action == "swap":
+            other, name = draw(st.sampled_from(places))
+            parent[key], other[name] = copy.deepcopy(other[name]), copy.deepcopy(parent[key])
+        elif action == "nest":
+            parent[key] = {key: copy.deepcopy(parent[key])} if isinstance(key, str) else [parent[key]]
+        else:
+            parent[key] = copy.deepcopy(draw(st.sampled_from(EXTREMES) if action == "extreme" else junk))
+    text = json.dumps(data).replace("-Infinity", "-.inf").replace("Infinity", ".inf").replace("NaN", ".nan")
+    return text.encode()
+
+
+TOKENS = [
+    b"\t", b"\n", b"\r", b"\0", b"\xff", b"\xef\xbb\xbf", b"\xe2\x80\xa8", b":", b": ", b"- ", b"? ", b"{", b"}", b"[",
+    b"]", b",", b"#", b"&a ", b"*a", b"!!int ", b"|", b">", b"'", b'"', b"%", b"---\n", b"...\n", b"<<: ", b"9", b"e9",
+    b"-", b".", b"~", b"\\", b"  ",
+]  # fmt: skip
+
+
+@st.composite
+def real_with_other_bytes(draw):
+    """The bytes of one, cut, doubled, exchanged and grown at any place."""
+    text = REAL[draw(st.sampled_from(sorted(REAL)))]
+    for _ in range(draw(st.integers(1, 4))):
+        start = draw(st.integers(0, len(text)))
+        end = min(len(text), start + draw(st.sampled_from([0, 0, 1, 1, 2, 8, 60, 10_000])))
+        doubled = st.just(2 * text[start:end])
+        put = draw(st.one_of(st.just(b""), st.sampled_from(TOKENS), doubled, st.binary(max_size=3)))
+        text = text[:start] + put + text[end:]
+    return text
+
+
+class Hung(BaseException):
+    """Beyond every handler of errors."""
+
+
+@contextmanager
+def deadline():
+    def ring(number, frame):
+        raise Hung
+
+    earlier = signal.signal(signal.SIGALRM, ring)
+    signal.alarm(SECONDS)
+    try:
+        yield
+    finally:
+        signal.alarm(0)
+        signal.signal(signal.SIGALRM, earlier)
+
+
+def answered_in_plain_words(folder, content, capsys):
+    """`mcgeo check` answers: a plan, or lines with their places; in time, without a traceback or a written file."""
+    folder.mkdir(exist_ok=True)
+    path = folder / "run.yaml"
+    path.write_bytes(content)
+    with deadline():
+        code = main(["check", str(path)])
+    captured = capsys.readouterr()
+    assert [child.name for child in folder.iterdir()] == ["run.yaml"]
+    if code == 0:
+        assert captured.err == "" and captured.out
+        return
+    assert code == 2 and captured.out == ""
+    lines = captured.err.splitlines()
+    assert 1 <= len(lines) <= 51
+    for line in lines:
+        assert re.match(rf"{re.escape(str(path))}:[1-9]\d*:[1-9]\d*: \S", line), line
+        assert not re.search("pydantic|Input should|Traceback|Errno", line), line
+        assert len(line) < 1500
+
+
+def check_many(kind, n_cases, folder, capsys):
+    @settings(max_examples=n_cases, deadline=None, suppress_health_check=list(HealthCheck))
+    @given(kind)
+    def check(content):
+        answered_in_plain_words(folder, content, capsys)
+
+    check()
+
+
+@pytest.mark.parametrize("n_cases", [150, pytest.param(5000, marks=pytest.mark.long)])
+@pytest.mark.parametrize("kind", [real_with_other_values(), real_with_other_bytes()], ids=["values", "bytes"])
+def test_changed_configurations_are_answered_in_plain_words(tmp_path, capsys, kind, n_cases):
+    check_many(kind, n_cases, tmp_path / "alone", capsys)
