@@ -10,8 +10,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import null_space
-from scipy.optimize import lsq_linear
 
 Array = NDArray[np.float64]
 
@@ -68,6 +66,8 @@ class BoundedFit:
             rules = self.rules[:, free]
             constant[free] = np.linalg.lstsq(rules, self.values - self.rules @ constant)[0]
             # Whatever the data add lies in the null space of the rules.
+            from scipy.linalg import null_space
+
             inside = null_space(rules)
             inverse = inside @ np.linalg.solve(inside.T @ normal[np.ix_(free, free)] @ inside, inside.T)
             response[free] = inverse @ weighted[free]
@@ -76,6 +76,9 @@ class BoundedFit:
 
     def _bounds_in_force(self, mean: Array) -> NDArray[np.int_]:
         """-1 where c = 0, 1 where c = c_max, 0 elsewhere; a bounded fit with the rules as heavy rows."""
+        # Here, since it takes as long to load as a small run takes.
+        from scipy.optimize import lsq_linear
+
         rows = np.concatenate([self.basis * self.weight[:, None], self.penalty])
         right = np.concatenate([mean * self.weight, np.zeros(len(self.penalty))])
         scale = _RULE_WEIGHT * np.linalg.norm(rows, axis=0).max() / np.linalg.norm(self.rules, axis=1)

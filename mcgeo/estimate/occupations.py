@@ -21,7 +21,6 @@ from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import lsq_linear
 from scipy.special import eval_laguerre
 
 from mcgeo.estimate.statistics import Estimate, mean_estimate
@@ -199,6 +198,9 @@ def _bounds_in_force(
     design: Array, target: Array, rules: Array, values: Array, penalty: Array, pinned: NDArray[np.bool_]
 ) -> NDArray[np.bool_]:
     """Which n_m >= 0 are met with equality; a bounded fit with the rules as heavy rows."""
+    # Here, since it takes as long to load as a small run takes.
+    from scipy.optimize import lsq_linear
+
     free = ~pinned
     scale = _RULE_WEIGHT / np.linalg.norm(rules, axis=1)
     rows = np.concatenate([design[:, free], np.diag(penalty[free]), rules[:, free] * scale[:, None]])

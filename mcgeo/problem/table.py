@@ -8,14 +8,17 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.interpolate import BSpline, RectBivariateSpline, make_interp_spline
 
 from mcgeo.geometry.metric import ISOTROPIC, UnimodularMetric
 from mcgeo.problem.pair_potential import IsotropicPotential, PairPotential
 from mcgeo.problem.table_text import Table, parse_table
+
+if TYPE_CHECKING:
+    from scipy.interpolate import BSpline, RectBivariateSpline
 
 Array = NDArray[np.float64]
 
@@ -47,6 +50,9 @@ class IsotropicTable(IsotropicPotential):
     _tail: Array = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
+        # Here, since it takes as long to load as a small run takes.
+        from scipy.interpolate import make_interp_spline
+
         q = np.array(self.table.axes[0])
         spline = make_interp_spline(q, q * np.array(self.table.values[0]) / (2.0 * math.pi), k=5)
         last = q[-1]
@@ -94,6 +100,8 @@ class GridTable(PairPotential):
     _spline: RectBivariateSpline = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
+        from scipy.interpolate import RectBivariateSpline
+
         x, y = (np.array(axis) for axis in self.table.axes)
         points = np.stack(np.meshgrid(x, y, indexing="ij"), axis=-1)
         values = np.array(self.table.values)

@@ -5,8 +5,7 @@ from __future__ import annotations
 import sys
 import time
 from types import TracebackType
-
-from tqdm import tqdm
+from typing import Any
 
 _SECONDS_BETWEEN_LINES = 30.0
 
@@ -14,6 +13,13 @@ _SECONDS_BETWEEN_LINES = 30.0
 def say(message: str) -> None:
     """One line on standard error."""
     print(message, file=sys.stderr, flush=True)
+
+
+def _bar(total: int, done: int) -> Any:
+    # Here, since it takes as long to load as a small run takes.
+    from tqdm import tqdm
+
+    return tqdm(total=total, initial=done, unit="block", file=sys.stderr)
 
 
 class Progress:
@@ -25,8 +31,7 @@ class Progress:
         self._first = self._told = done
         self._note = ""
         self._quiet = quiet
-        terminal = sys.stderr.isatty() and not quiet
-        self._bar = tqdm(total=total, initial=done, unit="block", file=sys.stderr) if terminal else None
+        self._bar = _bar(total, done) if sys.stderr.isatty() and not quiet else None
 
     def __enter__(self) -> Progress:
         return self
