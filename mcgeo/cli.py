@@ -177,6 +177,9 @@ def main(argv: Sequence[str] | None = None) -> int:
         where, why = fault.filename or "output", fault.strerror or fault
         print(f"{where}: {why}; choose another place with --out", file=sys.stderr)
         return 2
+    except MemoryError:
+        print("not enough memory for this; lower electrons, walkers, blocks or points", file=sys.stderr)
+        return 2
     except KeyboardInterrupt:
         print("interrupted", file=sys.stderr)
         return 130

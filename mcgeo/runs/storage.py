@@ -22,7 +22,7 @@ from mcgeo.runs.checked_hdf5 import Unexpected
 from mcgeo.runs.ending import blocks_of
 from mcgeo.runs.experiment import result_class
 from mcgeo.runs.liquid import Liquid
-from mcgeo.runs.result_layout import FLAG, FLOAT, INTEGER, WORD, read_config, read_contents
+from mcgeo.runs.result_layout import FLAG, FLOAT, INTEGER, LONGEST_CONFIG, WORD, read_config, read_contents
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.seal import BLOCK_SIZE, check_seal, seal
 from mcgeo.runs.sizes import LARGEST_FILE
@@ -134,6 +134,8 @@ def write_chains(file: Any, chains: Sequence[ChainState]) -> None:
 def write_config(file: Any, keys: Mapping[str, Any]) -> None:
     """Keys of a configuration as one JSON text of fixed length."""
     config = json.dumps(keys, allow_nan=False).encode()
+    if len(config) > LONGEST_CONFIG:
+        raise StorageError(f"configuration and tables take {len(config)} bytes, at most {LONGEST_CONFIG} work")
     file.create_dataset("config", data=config, dtype=h5py.string_dtype("utf-8", len(config)))
 
 
