@@ -9,6 +9,7 @@ does nothing where its work is done.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from contextlib import nullcontext
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -24,7 +25,7 @@ from mcgeo.runs.lock import run_lock
 from mcgeo.runs.production import Production, Standing
 from mcgeo.runs.sample import LIQUID_FILE, held_liquid
 from mcgeo.runs.sampled import Blocks, Sampled
-from mcgeo.runs.signals import stop_on_signals
+from mcgeo.runs.signals import StopFlag, stop_on_signals
 from mcgeo.runs.start import START_FILE, equilibrated_chains, held_start
 from mcgeo.runs.storage import previous_file, read_result, write_result
 from mcgeo.sampling.chain import ChainState
@@ -36,6 +37,11 @@ Keys = dict[str, Any]
 def part_path(folder: Path, part: int, n_parts: int) -> Path:
     """Result file of one part, which counts from 0."""
     return folder / f"part_{part}_of_{n_parts}.h5"
+
+
+def held_parts(folder: Path) -> list[Path]:
+    """Result files of parts in a folder, whatever the division."""
+    return sorted(path for path in folder.glob("part_*_of_*.h5") if path.stem.rpartition("_")[2].isdecimal())
 
 
 def group_range(n_walkers: int, part: int, n_parts: int) -> range:
@@ -57,12 +63,27 @@ def group_range(n_walkers: int, part: int, n_parts: int) -> range:
     return range(part * n_groups // n_parts, (part + 1) * n_groups // n_parts)
 
 
+def require_divisible(keys: Mapping[str, Any], n_parts: int = 1) -> None:
+    """Refuse what cannot run in so many parts.
+
+    Raises
+    ------
+    ConfigError
+        If the seed is left open, if the length is, or if there are fewer groups of walkers than parts.
+    """
+    sampling = keys["sampling"]
+    if sampling["seed"] is None:
+        raise ConfigError(["sampling.seed: must be given for a run in parts, which all draw from it"])
+    if sampling["target_error"] is not None:
+        raise ConfigError(
+            ["sampling.target_error: must be null for a run in parts, none of which knows the error of the whole"]
+        )
+    group_range(sampling["walkers"], 0, n_parts)
+
+
 def _keys(config: Config) -> Keys:
     keys = resolved(config)
-    if keys["sampling"]["seed"] is None:
-        raise ConfigError(["sampling.seed: must be given for a run in parts, which all draw from it"])
-    if keys["sampling"]["target_error"] is not None:
-        raise ConfigError(["sampling.target_error: parts do not know one another's errors; give sweeps alone"])
+    require_divisible(keys)
     return keys
 
 
@@ -72,13 +93,18 @@ def _part_keys(keys: Mapping[str, Any], groups: range) -> Keys:
     return {**keys, "sampling": {**keys["sampling"], "walkers": walkers}}
 
 
-def equilibrate(config: Config, folder: Path, *, quiet: bool = False) -> None:
+def equilibrate(config: Config, folder: Path, *, quiet: bool = False, stop: StopFlag | None = None) -> None:
     """All walkers in equilibrium and their step tuned and frozen, in a file in ``folder``.
+
+    Parameters
+    ----------
+    stop : StopFlag, optional
+        Set by the caller to end early; signals are then the caller's concern.
 
     Raises
     ------
     ConfigError
-        If the seed or the length of the run is left open.
+        As `require_divisible`.
     StorageError
         If the file cannot be written, or is being written by another process.
     RunInterrupted
@@ -86,17 +112,24 @@ def equilibrate(config: Config, folder: Path, *, quiet: bool = False) -> None:
     """
     keys = _keys(config)
     path = folder / START_FILE
-    with run_lock(path), stop_on_signals() as stop:
-        equilibrated_chains(path, keys, experiment_of(keys), stop, quiet)
+    with run_lock(path), stop_on_signals() if stop is None else nullcontext(stop) as flag:
+        equilibrated_chains(path, keys, experiment_of(keys), flag, quiet)
 
 
-def sample_part(config: Config, folder: Path, part: int, n_parts: int, *, quiet: bool = False) -> None:
+def sample_part(
+    config: Config, folder: Path, part: int, n_parts: int, *, quiet: bool = False, stop: StopFlag | None = None
+) -> None:
     """Production of one part, which counts from 0, in a file of its own in ``folder``.
+
+    Parameters
+    ----------
+    stop : StopFlag, optional
+        Set by the caller to end early; signals are then the caller's concern.
 
     Raises
     ------
     ConfigError
-        If the seed or the length of the run is left open, or there are fewer groups of walkers than parts.
+        As `require_divisible`.
     StorageError
         If the walkers are not equilibrated, or the part's file cannot be written, is being written by another process
         or belongs to another configuration.
@@ -107,7 +140,7 @@ def sample_part(config: Config, folder: Path, part: int, n_parts: int, *, quiet:
     groups = group_range(keys["sampling"]["walkers"], part, n_parts)
     part_keys = _part_keys(keys, groups)
     path = part_path(folder, part, n_parts)
-    with run_lock(path), stop_on_signals() as stop:
+    with run_lock(path), stop_on_signals() if stop is None else nullcontext(stop) as flag:
         earlier = _held_part(path, part_keys)
         if earlier is not None and earlier.complete:
             return
@@ -116,7 +149,7 @@ def sample_part(config: Config, folder: Path, part: int, n_parts: int, *, quiet:
             standing = Standing.of(earlier)
         else:
             standing = Standing(_start_of(folder, keys, groups, len(experiment.states)))
-        Production(part_keys, path, experiment, standing, quiet=quiet).finish(stop)
+        Production(part_keys, path, experiment, standing, quiet=quiet).finish(flag)
 
 
 def _held_part(path: Path, part_keys: Mapping[str, Any]) -> Sampled | None:
@@ -145,7 +178,7 @@ def merge_parts(config: Config, folder: Path, n_parts: int) -> Sampled:
     Raises
     ------
     ConfigError
-        If the seed or the length of the run is left open, or there are fewer groups of walkers than parts.
+        As `require_divisible`.
     StorageError
         If a part is missing, unfinished or of another configuration, or the file cannot be written.
     """
@@ -157,7 +190,9 @@ def merge_parts(config: Config, folder: Path, n_parts: int) -> Sampled:
         if result is None:
             result = _merged(keys, paths)
             write_result(path, result)
-        for done in (*paths, *map(previous_file, paths), folder / START_FILE):
+        # Those of another division too, which a change of it has left.
+        held = held_parts(folder)
+        for done in (*held, *map(previous_file, held), folder / START_FILE):
             done.unlink(missing_ok=True)
     return result
 

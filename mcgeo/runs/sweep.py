@@ -14,12 +14,13 @@ from pathlib import Path
 from mcgeo.errors import McgeoError, RunInterrupted
 from mcgeo.runs.executors import Crew
 from mcgeo.runs.signals import StopFlag, stop_on_signals
-from mcgeo.runs.sweep_liquids import liquid_progress, needs_sampling
+from mcgeo.runs.sweep_liquids import LIQUIDS, file_progress, liquid_progress, needs_sampling
 from mcgeo.runs.sweep_note import note_run
 from mcgeo.runs.sweep_plan import Point, SweepPlan
 from mcgeo.runs.sweep_progress import SweepProgress
 from mcgeo.runs.sweep_queue import MOST_DEATHS, MOST_HINDRANCES, MOST_WAITS, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points, tidy
+from mcgeo.runs.sweep_steps import WHOLE, Step, first_step
 from mcgeo.runs.sweep_stop import SharedStopFlag
 from mcgeo.runs.sweep_tasks import Question, Report, find_optima, sample_liquid
 
@@ -115,9 +116,14 @@ class _Run:
                 waiting[liquid] = points
             else:
                 self._queue.add_points(liquid, points)
-        self._queue.add_liquids(waiting, costs.liquids)
+        self._queue.add_liquids(waiting, costs.liquids, {liquid: self._first_step(liquid) for liquid in waiting})
         self._n_liquids, self._n_points = len(waiting), sum(map(len, wanted.values()))
         self._seconds = sum(costs.liquids[liquid] for liquid in waiting) + costs.optimum * self._n_points
+
+    def _first_step(self, liquid: str) -> Step:
+        # A sampling that was begun whole is ended whole.
+        begun = file_progress(WHOLE.file(self._folder / LIQUIDS / liquid)).blocks > 0
+        return first_step(1 if begun else self._plan.settings.walker_parts)
 
     def progress(self, quiet: bool) -> SweepProgress:
         """Its progress, to be entered."""
@@ -166,14 +172,16 @@ class _Run:
 
     def _seconds_in_flight(self) -> float:
         """Estimated seconds behind the blocks that running samplings have kept."""
-        liquids = [job.liquid for job in self._in_flight.values() if not job.points]
-        shares = [liquid_progress(self._folder, liquid).blocks / self._costs.blocks[liquid] for liquid in liquids]
-        return sum(share * self._costs.liquids[liquid] for share, liquid in zip(shares, liquids, strict=True))
+        liquids = {job.liquid for job in self._in_flight.values() if not job.points}
+        return sum(self._share(liquid) * self._costs.liquids[liquid] for liquid in liquids)
+
+    def _share(self, liquid: str) -> float:
+        return liquid_progress(self._folder, liquid).blocks / self._costs.blocks[liquid]
 
     def _submit(self, executor: Executor, job: Job) -> Future[Report]:
         if not job.points:
             keys = self._plan.resolved(self._any_point[job.liquid])
-            return executor.submit(sample_liquid, self._place, job.liquid, keys, job.threads, self._sign)
+            return executor.submit(sample_liquid, self._place, job.liquid, job.step, keys, job.threads, self._sign)
         resolved = [self._plan.resolved(point) for point in job.points]
         questions = [
             Question(point.name, keys["problem"], keys["material"])
@@ -222,13 +230,15 @@ class _Run:
         if job.points:
             self._queue.took(job.liquid, report.seconds / len(job.points))
             return
-        self._queue.sampled(job.liquid)
-        self._progress.step(liquids=1, seconds=self._costs.liquids[job.liquid])
+        if self._queue.sampled(job):
+            self._progress.step(liquids=1, seconds=self._costs.liquids[job.liquid])
 
     def _failed(self, job: Job, words: str) -> None:
         points = job.points
         if not points:
             points = self._queue.give_up(job.liquid)
+            if not points:
+                return
             words = f"sampling: {words}"
             self._progress.step(liquids=1, seconds=self._costs.liquids[job.liquid])
         RowFile(job.liquid, failed={point.name: words for point in points}).write(self._folder)
@@ -249,7 +259,7 @@ class _Run:
             self._queue.later(job)
 
     def _died(self, job: Job) -> None:
-        blocks = liquid_progress(self._folder, job.liquid).blocks
+        blocks = file_progress(job.step.file(self._folder / LIQUIDS / job.liquid)).blocks
         deaths = 1 if blocks > job.blocks else job.deaths + 1
         job = replace(job, deaths=deaths, blocks=blocks)
         if job.deaths >= MOST_DEATHS:

@@ -6,7 +6,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, Discriminator, Field, Tag, ValidationInfo, field_validator
 
-from mcgeo.runs.config_types import Group, ListOf, Real, WholeNumber, given_key, rule
+from mcgeo.runs.config_types import Count, Group, ListOf, Real, WholeNumber, given_key, rule
 
 #: Most points of a sweep.
 MOST_POINTS = 1_000_000
@@ -120,6 +120,11 @@ class SweepConfig(Group):
         default=(),
         description="Points left out: those with the given value of every given key, or inside its range, as in "
         "{problem.mass.ratio: {above: 4, below: 9}} [1].",
+    )
+    walker_parts: Count = Field(
+        default=1,
+        description="Parts into which the walkers of every liquid are divided, each for a worker of its own and of at "
+        "least eight walkers. Results do not depend on it [1].",
     )
     scheduler: Annotated[str, AfterValidator(_named)] | None = Field(
         default=None,

@@ -7,6 +7,7 @@ from typing import Any
 
 from mcgeo.errors import ConfigError, GeometryError
 from mcgeo.runs.config_faults import show
+from mcgeo.runs.parts import require_divisible
 from mcgeo.runs.plan import optimum_seconds, sampling_plan
 from mcgeo.runs.sweep import Costs
 from mcgeo.runs.sweep_plan import SweepPlan
@@ -23,13 +24,16 @@ def liquid_plans(plan: SweepPlan) -> dict[str, dict[str, Any]]:
     Raises
     ------
     ConfigError
-        With one line per liquid whose cell does not suit its state, the first ten.
+        With one line per liquid whose cell does not suit its state, or whose walkers cannot be divided, the first ten.
     """
     found, faults = {}, []
     for liquid, points in plan.liquids.items():
         try:
-            found[liquid] = sampling_plan(plan.resolved(points[0]))
-        except GeometryError as fault:
+            keys = plan.resolved(points[0])
+            found[liquid] = sampling_plan(keys)
+            if plan.settings.walker_parts > 1 and found[liquid]["blocks"]:
+                require_divisible(keys, plan.settings.walker_parts)
+        except (GeometryError, ConfigError) as fault:
             values = ", ".join(f"{name} {show(value)}" for name, value in plan.values(points[0]).items())
             faults.append(f"{plan.file}: at {values}: {fault}")
     if faults:

@@ -11,6 +11,7 @@ import h5py
 from mcgeo.kernels.lanes import LANES
 from mcgeo.runs.catalogue import KIND
 from mcgeo.runs.checked_hdf5 import Unexpected
+from mcgeo.runs.parts import held_parts
 from mcgeo.runs.result_layout import read_json
 from mcgeo.runs.sample import LIQUID_FILE
 
@@ -36,9 +37,19 @@ class LiquidProgress(NamedTuple):
 
 
 def liquid_progress(folder: Path, liquid: str) -> LiquidProgress:
-    """How far a liquid of a sweep's folder is, as of its last checkpoint; a file that cannot be read counts as none."""
+    """How far a liquid of a sweep's folder is, as of its last checkpoint; one in parts is as far as its last part."""
+    place = folder / LIQUIDS / liquid
+    whole = file_progress(place / LIQUID_FILE)
+    parts = [] if whole.blocks else [file_progress(path) for path in held_parts(place)]
+    if not parts:
+        return whole
+    return LiquidProgress(min(part.blocks for part in parts), False, sum(part.core_seconds for part in parts))
+
+
+def file_progress(path: Path) -> LiquidProgress:
+    """How far a result file is; one that cannot be read counts as none."""
     try:
-        with h5py.File(folder / LIQUIDS / liquid / LIQUID_FILE, "r") as file:
+        with h5py.File(path, "r") as file:
             sampling = read_json(file)["sampling"]
             cores = min(sampling["threads"] or 1, -(-sampling["walkers"] // LANES))
             seconds = cores * float(file.attrs["seconds"])

@@ -10,6 +10,7 @@ from dataclasses import dataclass, replace
 
 from mcgeo.runs.executors import Crew
 from mcgeo.runs.sweep_plan import Point
+from mcgeo.runs.sweep_steps import WHOLE, Step
 
 # A task that ran when its worker died comes again, from its third start on alone, so that it can be told who is to
 # blame; one that meets a passing hindrance, too.
@@ -27,12 +28,13 @@ _FIRST_POINTS = 8
 
 @dataclass(frozen=True)
 class Job:
-    """One task: a liquid to sample (without points), or points of it.
+    """One task: a step of a liquid's sampling (without points), or points of it.
 
     Attributes
     ----------
     liquid : str
     points : tuple of Point
+    step : Step
     threads : int
     deaths, hindrances, waits : int
         How often a worker died over it, how often it was hindered, and how often another process was at it.
@@ -42,6 +44,7 @@ class Job:
 
     liquid: str
     points: tuple[Point, ...] = ()
+    step: Step = WHOLE
     threads: int = 1
     deaths: int = 0
     hindrances: int = 0
@@ -56,32 +59,56 @@ class Queue:
         self._crew = crew
         self._samplings: deque[Job] = deque()
         self._waiting: dict[str, tuple[Point, ...]] = {}
+        self._steps_left: dict[str, int] = {}
         self._ready: dict[str, deque[Point]] = {}
         self._again: deque[Job] = deque()
         self._later: deque[tuple[float, Job]] = deque()
         self._suspects: deque[Job] = deque()
         self._seconds_per_point: dict[str, float] = {}
 
-    def add_liquids(self, waiting: Mapping[str, Iterable[Point]], costs: Mapping[str, float]) -> None:
-        """Liquids to sample, with their points and their cost."""
+    def add_liquids(
+        self, waiting: Mapping[str, Iterable[Point]], costs: Mapping[str, float], steps: Mapping[str, Step]
+    ) -> None:
+        """Liquids to sample, with their points, their cost and the first step of each."""
         self._waiting.update({liquid: _by_family(points) for liquid, points in waiting.items()})
+        self._steps_left.update(dict.fromkeys(waiting, 1))
         ordered = sorted(waiting, key=lambda liquid: -costs[liquid])
-        self._samplings.extend(Job(liquid) for liquid in ordered)
+        self._samplings.extend(Job(liquid, step=steps[liquid]) for liquid in ordered)
 
     def add_points(self, liquid: str, points: Iterable[Point]) -> None:
         """Points of a liquid that is there."""
         self._ready[liquid] = deque(_by_family(points))
 
-    def sampled(self, liquid: str) -> None:
-        """The liquid is there now."""
-        self.add_points(liquid, self._waiting.pop(liquid))
+    def sampled(self, job: Job) -> bool:
+        """A step of a sampling is done; true if the liquid is there now."""
+        liquid = job.liquid
+        if self._is_given_up(job):
+            return False
+        self._steps_left[liquid] -= 1
+        if self._steps_left[liquid]:
+            return False
+        steps = job.step.next()
+        if not steps:
+            self.add_points(liquid, self._waiting.pop(liquid))
+            return True
+        # What has been begun is ended before other liquids begin.
+        self._steps_left[liquid] = len(steps)
+        self._samplings.extendleft(Job(liquid, step=step) for step in reversed(steps))
+        return False
 
     def give_up(self, liquid: str) -> tuple[Point, ...]:
-        """The points of a liquid that cannot be sampled."""
-        return self._waiting.pop(liquid)
+        """The points of a liquid that cannot be sampled; none when another step of it has been given up before."""
+        points = self._waiting.pop(liquid, ())
+        self._samplings = deque(job for job in self._samplings if not self._is_given_up(job))
+        return points
+
+    def _is_given_up(self, job: Job) -> bool:
+        return not job.points and job.liquid not in self._waiting
 
     def again(self, job: Job) -> None:
         """Put a job back."""
+        if self._is_given_up(job):
+            return
         if not self._alone(job):
             self._again.append(job)
         elif len(job.points) > 1:
@@ -91,6 +118,8 @@ class Queue:
 
     def later(self, job: Job) -> None:
         """Put a job back for a while."""
+        if self._is_given_up(job):
+            return
         self._later.append((time.monotonic() + _SECONDS_OF_A_WAIT, job))
 
     def took(self, liquid: str, seconds_per_point: float) -> None:

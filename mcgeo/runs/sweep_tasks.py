@@ -19,13 +19,14 @@ from mcgeo.runs.catalogue import KIND, catalogue_liquid
 from mcgeo.runs.config import config_from_resolved
 from mcgeo.runs.executors import StopSign
 from mcgeo.runs.lock import FileBusy
-from mcgeo.runs.sample import LIQUID_FILE, sample
+from mcgeo.runs.sample import LIQUID_FILE
 from mcgeo.runs.scan import SharedAnswers, optimum, optimum_summary, problem_summary
 from mcgeo.runs.scannable import Scannable
 from mcgeo.runs.signals import StopFlag
 from mcgeo.runs.storage import read_result
 from mcgeo.runs.sweep_liquids import LIQUIDS
 from mcgeo.runs.sweep_rows import RowFile
+from mcgeo.runs.sweep_steps import Step, take_step
 from mcgeo.runs.units import with_units
 
 _SECONDS_BETWEEN_LOOKS = 0.2
@@ -89,8 +90,8 @@ def _watched(sign: StopSign) -> Iterator[StopFlag]:
         watcher.join()
 
 
-def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, sign: StopSign) -> Report:
-    """Sample a liquid into ``liquids/HASH`` of the sweep's folder, or go on with it.
+def sample_liquid(folder: Path, liquid: str, step: Step, keys: Keys, threads: int, sign: StopSign) -> Report:
+    """Sample a liquid, or do one step of that, into ``liquids/HASH`` of the sweep's folder, or go on with it.
 
     Parameters
     ----------
@@ -102,7 +103,7 @@ def sample_liquid(folder: Path, liquid: str, keys: Keys, threads: int, sign: Sto
     try:
         config = config_from_resolved({**keys, "sampling": {**keys["sampling"], "threads": threads}})
         with _watched(sign) as stop:
-            sample(config, folder / LIQUIDS / liquid, quiet=True, stop=stop)
+            take_step(step, config, folder / LIQUIDS / liquid, stop)
     except RunInterrupted as fault:
         return Report("stopped", str(fault))
     except FileBusy as fault:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
@@ -35,11 +34,8 @@ def tables(folder: Path) -> dict[str, bytes]:
 
 
 @pytest.fixture
-def swept(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Iterator[Path]:
-    """A current folder with the sweep in ``run.yaml``, in which a lost scheduler is given up soon."""
-    import dask
-
+def swept(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
+    """A current folder with the sweep in ``run.yaml``."""
     (tmp_path / "run.yaml").write_text(SWEEP)
     monkeypatch.chdir(tmp_path)
-    with dask.config.set({"distributed.comm.timeouts.connect": "5s"}):
-        yield tmp_path
+    return tmp_path

@@ -128,19 +128,22 @@ def loopback(folder: Path, workers: int = 0) -> Iterator[Loopback]:
 def meanwhile(act: Callable[[], None]) -> Iterator[None]:
     """Do something in a thread of its own beside a sweep; its error ends the sweep and becomes that of the test."""
     faults: list[BaseException] = []
+    over = threading.Event()
 
     def guarded() -> None:
         try:
             act()
         except BaseException as fault:
             faults.append(fault)
-            os.kill(os.getpid(), signal.SIGINT)
+            if not over.is_set():
+                os.kill(os.getpid(), signal.SIGINT)
 
-    thread = threading.Thread(target=guarded)
+    thread = threading.Thread(target=guarded, daemon=True)
     thread.start()
     try:
         yield
+        thread.join(LIMIT)
     finally:
-        thread.join()
+        over.set()
         if faults:
             raise faults[0]

@@ -6,6 +6,7 @@ import os
 import signal
 from pathlib import Path
 
+import dask
 import pytest
 
 from mcgeo.cli import main
@@ -75,9 +76,10 @@ def test_after_the_loss_of_the_scheduler_the_same_command_goes_on(
 
         def kill() -> None:
             wait_for(lambda: cluster.halted, "the halt in the fourth block")
+            dask.config.set({"distributed.comm.timeouts.connect": "2s"})
             cluster.scheduler.send_signal(signal.SIGKILL)
 
-        with meanwhile(kill):
+        with dask.config.set({"distributed.comm.timeouts.connect": "60s"}), meanwhile(kill):
             assert sweep(cluster, "-q") == 4
         assert "has gone; what is done is in out: start a scheduler and workers" in capsys.readouterr().err
         # Its worker ends by itself, with its whole blocks saved.
@@ -109,7 +111,8 @@ def test_ctrl_c_reaches_the_workers(swept: Path, serial: dict[str, bytes], capsy
 
 def test_a_scheduler_that_does_not_answer(swept: Path, capsys: pytest.CaptureFixture[str]) -> None:
     for where in ("missing.json", "tcp://127.0.0.1:1"):
-        assert main(["sweep", "run.yaml", "--scheduler", where]) == 2
+        with dask.config.set({"distributed.comm.timeouts.connect": "1s"}):
+            assert main(["sweep", "run.yaml", "--scheduler", where]) == 2
         said = capsys.readouterr().err
         assert said.startswith(f"{where}: no scheduler answers") and "dask scheduler" in said
     assert not list(swept.glob("run_sweep/*"))
