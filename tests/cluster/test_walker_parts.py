@@ -2,15 +2,23 @@
 
 from __future__ import annotations
 
+import io
 import signal
 from pathlib import Path
 
+import h5py
 import pytest
 
 from mcgeo.cli import main
 from mcgeo.runs.sweep_tasks import liquid_progress
 from tests.cluster.conftest import SWEEP, tables
 from tests.cluster.loopback import loopback, meanwhile, wait_for
+
+
+def numbers(found: dict[str, bytes]) -> tuple[bytes, dict[str, str]]:
+    """All of the tables but the configuration, which says into how many parts."""
+    with h5py.File(io.BytesIO(found["sweep.h5"])) as file:
+        return found["sweep.csv"], {name: repr(file[name][()].tolist()) for name in file}
 
 
 @pytest.fixture
@@ -24,7 +32,7 @@ def test_parts_on_processes(in_parts: Path, serial: dict[str, bytes], monkeypatc
     for workers in (1, 2):
         assert main(["sweep", "run.yaml", "--out", f"out{workers}", "--workers", str(workers), "-q"]) in (0, 3)
         folder = in_parts / f"out{workers}"
-        assert tables(folder) == serial
+        assert numbers(tables(folder)) == numbers(serial)
         assert {path.name for path in folder.glob("liquids/*/*")} == {"liquid.h5"}
 
 
@@ -40,7 +48,7 @@ def test_parts_on_a_cluster_of_which_a_worker_dies(in_parts: Path, serial: dict[
 
         with meanwhile(kill):
             assert main(["sweep", "run.yaml", "--out", "out", "--scheduler", str(cluster.file)]) in (0, 3)
-    assert tables(in_parts / "out") == serial
+    assert numbers(tables(in_parts / "out")) == numbers(serial)
 
 
 def test_a_sampling_begun_whole_is_ended_whole(
@@ -60,7 +68,7 @@ def test_a_sampling_begun_whole_is_ended_whole(
         begun = [path.name for path in (in_parts / "out/liquids").iterdir()]
         assert [liquid_progress(in_parts / "out", liquid).blocks > 0 for liquid in begun] == [True]
         assert main(["sweep", "run.yaml", *command]) in (0, 3)
-    assert tables(in_parts / "out") == serial
+    assert numbers(tables(in_parts / "out")) == numbers(serial)
 
 
 def test_what_cannot_be_divided(in_parts: Path, capsys: pytest.CaptureFixture[str]) -> None:
