@@ -10,7 +10,7 @@ import h5py
 import pytest
 
 from mcgeo.cli import main
-from mcgeo.runs.sweep_tasks import liquid_progress
+from mcgeo.runs.sweep_liquids import liquid_progress
 from tests.cluster.conftest import SWEEP, tables
 from tests.cluster.loopback import loopback, meanwhile, wait_for
 
