@@ -1,10 +1,10 @@
 """Speed of every sampled state in one table: moves, pairs, what an energy costs, and what plain NumPy makes of it.
 
 Times are processor seconds of one thread, the least of several runs; all ratios are within one run of this script.
-``error2_cpu`` is the squared error of the energy per electron times the processor seconds spent on it, moves and
-measurements, at the program's own distance of measurements; ``stretch2_cpu`` the same of the optimum's stretch at mass
-ratio 4. ``roofline`` is the share of the processor's measured rate of fused multiply-adds that the pair factors alone
-make up. ``versus_numpy`` (256 walkers side by side) and ``versus_loop`` (one) are ratios of moves per second,
+``error2_cpu`` is the squared error of the energy per electron times the processor seconds spent on it, moves,
+measurements and regression on control variates, at the program's own distance of measurements; ``stretch2_cpu`` the
+same of the optimum's stretch at mass ratio 4. ``roofline`` is the share of the processor's measured rate of fused
+multiply-adds that the pair factors alone make up. ``versus_numpy`` (256 walkers side by side) and ``versus_loop`` (one) are ratios of moves per second,
 ``versus_emcee`` of effective energies per second, if emcee is installed. Below the states: metrics per second, each
 with the energies of all block samples, and a whole optimum with its response, nothing kept from problem to problem.
 """
@@ -24,8 +24,9 @@ from typing import Any
 import numpy as np
 from baselines import emcee_traces, numpy_moves_per_second
 
+from mcgeo.estimate.control_variates import cleared, control_z
 from mcgeo.estimate.occupations import PairOccupations, fit_occupations
-from mcgeo.estimate.statistics import integrated_autocorrelation_time
+from mcgeo.estimate.statistics import integrated_autocorrelation_time, mean_estimate
 from mcgeo.geometry.metric import UnimodularMetric
 from mcgeo.kernels._jit import lean_kernel
 from mcgeo.kernels.lanes import LANES, aligned_zeros, load, store
@@ -35,7 +36,7 @@ from mcgeo.runs.build import schedule_from
 from mcgeo.runs.config import config_from_resolved, resolved
 from mcgeo.runs.experiment import experiment_of
 from mcgeo.runs.scan import optimum
-from mcgeo.sampling.measurement import STRUCTURE
+from mcgeo.sampling.measurement import CONTROLS, STRUCTURE
 from mcgeo.sampling.tuning import tuned_step
 from mcgeo.sampling.walkers import groups_of, start_walkers
 from mcgeo.states.base import FERMIONS
@@ -49,8 +50,8 @@ _SEA = {"kind": "fermi_sea", "filling": "1/2"}
 _SERIES: list[tuple[dict[str, Any], str, tuple[int, ...], tuple[int, ...], int | None]] = [
     (_LAUGHLIN, "torus", (20, 50, 100, 200, 400), (50, 100), 15),
     (_LAUGHLIN, "disk", (20, 50, 100, 200, 400), (50,), 5),
-    (_MOORE_READ, "torus", (20, 50, 100), (20,), None),
-    (_SEA, "torus", (7, 13, 19, 37), (13,), None),
+    (_MOORE_READ, "torus", (20, 50, 100), (50,), None),
+    (_SEA, "torus", (7, 13, 19, 37), (37,), None),
 ]
 _BASELINE_SIZES = {20, 50}
 _EMCEE_SIZE = 6
@@ -120,7 +121,7 @@ class Case:
     def costs(self, seconds: float) -> tuple[float, float | None]:
         """error2_cpu and stretch2_cpu."""
         measurement, between = self.experiment.measurements[0], schedule_from(self.keys, self.state).sweeps_between
-        n_blocks, n_measurements = 24, 16
+        n_blocks, n_measurements = 64, 16
         stop = threading.Event()
         measurement.block(self.group, self.step, 4, between, stop)
         started = time.thread_time()
@@ -129,15 +130,21 @@ class Case:
         n_measurements = max(n_measurements, int(n_measurements * seconds / once / n_blocks))
         started = time.thread_time()
         records = [measurement.block(self.group, self.step, n_measurements, between, stop) for _ in range(n_blocks)]
+        if STRUCTURE not in records[0].means:
+            spent = time.thread_time() - started
+            trace = np.concatenate([record.trace for record in records], axis=1)
+            return float(trace.var() * integrated_autocorrelation_time(trace) * spent / trace.size), None
+        structure, controls = (np.array([r.means[name] for r in records]) for name in (STRUCTURE, CONTROLS))
+        z = control_z(controls.reshape(-1, controls.shape[-1]))
+        samples = cleared(structure, controls, z).blocks.reshape(-1, structure.shape[-1])
         spent = time.thread_time() - started
-        trace = np.concatenate([record.trace for record in records], axis=1)
-        energy = float(trace.var() * integrated_autocorrelation_time(trace) * spent / trace.size)
-        if STRUCTURE not in records[0].means or self.state.kind != "laughlin":
+        energy = mean_estimate(samples @ measurement.trace_weights).error ** 2 * spent
+        if self.state.kind != "laughlin":
             return energy, None
         norm = np.sqrt(self.state.frame.metric.wavevector_norm_sq(measurement.waves.vectors))
-        occupations = fit_occupations(self.state, norm, np.concatenate([r.means[STRUCTURE] for r in records]))
-        best = find_minimum(EnergySurface(occupations, Problem(UnimodularMetric(math.log(2.0)), Coulomb())))
-        return energy, float(best.stretch.error**2 * spent)
+        occupations = fit_occupations(self.state, norm, samples)
+        optimum = find_minimum(EnergySurface(occupations, Problem(UnimodularMetric(math.log(2.0)), Coulomb())))
+        return energy, float(optimum.stretch.error**2 * spent)
 
 
 def versus_emcee(seconds: float) -> float:
