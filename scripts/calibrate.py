@@ -80,12 +80,12 @@ _DROPLET |= {f"n_{k}": n for k, n in enumerate((0.3431340578, 0.3006365678, 0.27
 CASES = (
     Case("Laughlin 1/3, 6 electrons", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8}, exact=_SIX),
     Case(
-        "the same without control variates", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8},
+        "Laughlin 1/3, 6, without control variates", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8},
         controls=False, exact=_SIX,
     ),
-    Case("the same, few blocks", laughlin(3, 6), {"walkers": 8, "sweeps": 640, "blocks": 16}, exact=_SIX),
+    Case("Laughlin 1/3, 6, eight walkers", laughlin(3, 6), {"walkers": 8, "sweeps": 640, "blocks": 16}, exact=_SIX),
     Case(
-        "the same, slow chains", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8, "step": 1.0}, exact=_SIX
+        "Laughlin 1/3, 6, slow chains", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8, "step": 1.0}, exact=_SIX
     ),
     Case("Laughlin 1/3, 20 electrons", laughlin(3, 20), {"walkers": 16, "sweeps": 240, "blocks": 8}),
     Case(
@@ -294,7 +294,7 @@ def draw(found: Mapping[str, Mapping[str, Array]], path: Path) -> None:
     matplotlib.use("Agg")
     import matplotlib.pyplot as plt
 
-    figure, (left, right) = plt.subplots(1, 2, figsize=(9.0, 3.6), layout="constrained")
+    figure, (left, right) = plt.subplots(1, 2, figsize=(9.5, 3.8), layout="constrained")
     x = np.linspace(-4.5, 4.5, 200)
     left.plot(x, stats.norm.pdf(x), color="black", label="normal")
     n_seeds = len(next(iter(next(iter(found.values())).values())))
@@ -305,14 +305,14 @@ def draw(found: Mapping[str, Mapping[str, Array]], path: Path) -> None:
         for row, many in enumerate(of_kind):
             widths = [z.std(ddof=1) for z in many]
             right.plot(widths, np.full(len(widths), row + offset), ".", color=left.patches[-1].get_edgecolor())
-    left.set(xlabel="(result - truth)/error", ylabel="density", title=f"{n_seeds} seeds of each liquid")
-    left.legend(fontsize="small", frameon=False)
+    left.set(xlabel="(result - truth)/error", ylabel="density", ylim=(0.0, 0.62), title=f"{n_seeds} seeds of each liquid")
+    left.legend(fontsize="small", frameon=False, ncols=2, loc="upper center")
     # Width of n normal deviates: 1 within sqrt(2/n)/2.
     band = 2.0 * math.sqrt(0.5 / n_seeds)
     right.axvspan(1.0 - band, 1.0 + band, color="0.85", zorder=0)
     right.set_yticks(range(len(found)), list(found), fontsize="small")
     right.invert_yaxis()
-    right.set(xlabel="width of the pulls (band: two standard deviations)", xlim=(0.6, 1.4))
+    right.set(xlabel="width of the pulls; band: two sd", xlim=(0.6, 1.4), title="one point per quantity")
     figure.savefig(path, dpi=110)
 
 
@@ -335,12 +335,12 @@ def main(argv: Sequence[str] | None = None) -> int:
     cases = [case for case in CASES if arguments.only in case.name]
     seeds = range(10_000, 10_000 + arguments.seeds)
     found = {case.name: calibration(case, seeds, lambda line: print(line, file=sys.stderr)) for case in cases}
-    print(f"{'liquid':38}  {'quantity':30}  {'mean':>6}  {'width':>6}  {'KS p':>6}")
+    print(f"{'liquid':42}  {'quantity':30}  {'mean':>6}  {'width':>6}  {'KS p':>6}")
     good = True
     for case, name, verdict in rows(found):
         good &= verdict.calibrated
         mark = "" if verdict.calibrated else "  wrong"
-        print(f"{case:38}  {name:30}  {verdict.mean:6.2f}  {verdict.width:6.3f}  {verdict.probability:6.3f}{mark}")
+        print(f"{case:42}  {name:30}  {verdict.mean:6.2f}  {verdict.width:6.3f}  {verdict.probability:6.3f}{mark}")
     _write_csv(found, arguments.out / "calibration.csv")
     draw(found, arguments.out / "calibration.png")
     return 0 if good else 1

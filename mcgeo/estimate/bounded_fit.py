@@ -56,7 +56,13 @@ class BoundedFit:
 
     def linear_fit(self, mean: Array) -> LinearFit:
         """The linear solution with the bounds that are in force at y = ``mean``."""
-        bounds = self._bounds_in_force(mean)
+        return self._with_bounds(self._bounds_in_force(mean))
+
+    def free_fit(self) -> LinearFit:
+        """The linear solution without bounds."""
+        return self._with_bounds(np.zeros(self.basis.shape[1], dtype=int))
+
+    def _with_bounds(self, bounds: NDArray[np.int_]) -> LinearFit:
         held = np.where(bounds > 0, self.largest, 0.0)
         free = bounds == 0
         weighted = self.basis.T * self.weight**2

@@ -23,6 +23,7 @@ and end where the polynomial ends have G(k) under control at all k.
 
 from __future__ import annotations
 
+import dataclasses
 import math
 from dataclasses import dataclass
 from fractions import Fraction
@@ -61,6 +62,8 @@ class DropletOccupations:
         Independent samples of n_l, l = 0, 1, ...; every one obeys the rules.
     pair_samples : ndarray, shape (n_samples, n_momenta)
         Of w_l, from the same blocks.
+    orbital_errors, pair_errors : ndarray, optional
+        Standard errors of single n_l and w_l by a fit without the bounds, at which samples stand still.
     """
 
     n_electrons: int
@@ -68,6 +71,8 @@ class DropletOccupations:
     pair_momenta: NDArray[np.int64]
     orbital_samples: Array
     pair_samples: Array
+    orbital_errors: Array | None = None
+    pair_errors: Array | None = None
 
     @property
     def radius(self) -> float:
@@ -76,11 +81,11 @@ class DropletOccupations:
 
     def orbital(self, index: int) -> Estimate:
         """n_l of the orbital z^index."""
-        return mean_estimate(self.orbital_samples[:, index])
+        return _single(self.orbital_samples[:, index], self.orbital_errors, index)
 
     def pair(self, index: int) -> Estimate:
         """w_l of ``pair_momenta[index]``."""
-        return mean_estimate(self.pair_samples[:, index])
+        return _single(self.pair_samples[:, index], self.pair_errors, index)
 
     def pair_basis(self, norm: Array) -> Array:
         """(N - 1) L_l(k^2) exp(-k^2/2) for |k| of shape (n,): shape (n_momenta, n)."""
@@ -95,6 +100,11 @@ class DropletOccupations:
         """n_b(k) = 2N J_1(kR)/(kR) of the neutralising charge for |k| > 0."""
         x = self.radius * np.asarray(norm, dtype=float)
         return np.asarray(2.0 * self.n_electrons * j1(x) / x)
+
+
+def _single(samples: Array, errors: Array | None, index: int) -> Estimate:
+    found = mean_estimate(samples)
+    return found if errors is None else dataclasses.replace(found, error=float(errors[index]))
 
 
 def fit_droplet_occupations(
@@ -124,16 +134,16 @@ def fit_droplet_occupations(
     # Fermions fill an orbital once. A radius r belongs to l = r^2/2, a distance to l = r^2/4; uniform droplets have nu
     # and 4 nu/N there.
     most = 1.0 if state.statistics == FERMIONS else math.inf
-    orbital_samples = _fitted(
+    orbital_samples, orbital_errors = _fitted(
         _bin_probabilities(orbitals, radial.shape[1], widths[0], 2.0), radial, orbitals,
         _second_differences(orbitals, 2.0 / (_ORBITAL_CURVATURE * float(filling))), (n, state.angular_momentum), most,
     )  # fmt: skip
-    pair_samples = _fitted(
+    pair_samples, pair_errors = _fitted(
         _bin_probabilities(momenta, pairs.shape[1], widths[1], 4.0), pairs, momenta,
         _second_differences(momenta, 0.25 / (_PAIR_CURVATURE * 4.0 * float(filling) / n)),
         (1.0, state.angular_momentum / (n - 1)), 1.0,
     )  # fmt: skip
-    return DropletOccupations(n, filling, momenta, orbital_samples, pair_samples)
+    return DropletOccupations(n, filling, momenta, orbital_samples, pair_samples, orbital_errors, pair_errors)
 
 
 def _bin_probabilities(momenta: NDArray[np.int64], n_bins: int, width: float, scale: float) -> Array:
@@ -150,7 +160,8 @@ def _second_differences(momenta: NDArray[np.int64], scale: float) -> Array:
 
 def _fitted(
     basis: Array, samples: Array, momenta: NDArray[np.int64], penalty: Array, totals: tuple[float, float], most: float
-) -> Array:
+) -> tuple[Array, Array]:
+    """Samples under the rules and bounds, and standard errors without the bounds."""
     mean = samples.mean(axis=0)
     variance = samples.var(axis=0, ddof=1) / len(samples)
     known = variance > 0.0
@@ -160,6 +171,8 @@ def _fitted(
     for _ in range(_PASSES):
         # One count more than there is: an empty bin says no more than that it holds less than about one.
         weight = np.sqrt(counts / (np.maximum(expected, 0.0) + 1.0 / counts))
-        fit = BoundedFit(basis, weight, penalty, rules, np.array(totals), most).linear_fit(mean)
+        problem = BoundedFit(basis, weight, penalty, rules, np.array(totals), most)
+        fit = problem.linear_fit(mean)
         expected = basis @ fit.of(mean[None, :])[0]
-    return fit.of(samples)
+    scatter = problem.free_fit().of(samples).std(axis=0, ddof=1)
+    return fit.of(samples), np.asarray(scatter / math.sqrt(len(samples)))
