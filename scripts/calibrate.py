@@ -85,7 +85,8 @@ CASES = (
     ),
     Case("Laughlin 1/3, 6, eight walkers", laughlin(3, 6), {"walkers": 8, "sweeps": 640, "blocks": 16}, exact=_SIX),
     Case(
-        "Laughlin 1/3, 6, slow chains", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8, "step": 1.0}, exact=_SIX
+        "Laughlin 1/3, 6, slow chains", laughlin(3, 6), {"walkers": 32, "sweeps": 320, "blocks": 8, "step": 1.0},
+        exact=_SIX,
     ),
     Case("Laughlin 1/3, 20 electrons", laughlin(3, 20), {"walkers": 16, "sweeps": 240, "blocks": 8}),
     Case(
@@ -305,7 +306,8 @@ def draw(found: Mapping[str, Mapping[str, Array]], path: Path) -> None:
         for row, many in enumerate(of_kind):
             widths = [z.std(ddof=1) for z in many]
             right.plot(widths, np.full(len(widths), row + offset), ".", color=left.patches[-1].get_edgecolor())
-    left.set(xlabel="(result - truth)/error", ylabel="density", ylim=(0.0, 0.62), title=f"{n_seeds} seeds of each liquid")
+    left.set(xlabel="(result - truth)/error", ylabel="density", ylim=(0.0, 0.62))
+    left.set_title(f"{n_seeds} seeds of each liquid")
     left.legend(fontsize="small", frameon=False, ncols=2, loc="upper center")
     # Width of n normal deviates: 1 within sqrt(2/n)/2.
     band = 2.0 * math.sqrt(0.5 / n_seeds)
