@@ -4,8 +4,9 @@ Times are processor seconds of one thread, the least of several runs; all ratios
 ``error2_cpu`` is the squared error of the energy per electron times the processor seconds spent on it, moves,
 measurements and regression on control variates, at the program's own distance of measurements; ``stretch2_cpu`` the
 same of the optimum's stretch at mass ratio 4. ``roofline`` is the share of the processor's measured rate of fused
-multiply-adds that the pair factors alone make up. ``versus_numpy`` (256 walkers side by side) and ``versus_loop`` (one) are ratios of moves per second,
-``versus_emcee`` of effective energies per second, if emcee is installed. Below the states: metrics per second, each
+multiply-adds that the pair factors alone make up. ``versus_numpy`` (256 walkers side by side) and ``versus_loop``
+(one) are ratios of moves per second, ``versus_emcee`` of effective energies per second, if emcee is installed.
+Below the states: metrics per second, each
 with the energies of all block samples, and a whole optimum with its response, nothing kept from problem to problem.
 """
 
