@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable, Mapping
+from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -174,7 +175,7 @@ def validated(data: Mapping[str, Any], files: NamedFiles | None) -> tuple[Config
         except ValidationError as error:
             # The model looks for contradictions only when all groups are valid; here they are wanted in any case.
             across = contradictions(with_material(data, context)) if isinstance(data, Mapping) else []
-            return None, without_repeats(explain(error, json_schema()), across) + across
+            return None, without_repeats(explain(error, _schema()), across) + across
     except GeometryError as error:
         return None, [Remark(("material",), str(error), at_key=True)]
 
@@ -244,6 +245,12 @@ def _leaves(value: Any, name: str) -> dict[str, Any]:
     if not isinstance(value, Mapping):
         return {name: value}
     return {key: leaf for child in value for key, leaf in _leaves(value[child], f"{name}.{child}").items()}
+
+
+@cache
+def _schema() -> dict[str, Any]:
+    """Made once: points of a sweep may have many faults."""
+    return json_schema()
 
 
 def json_schema() -> dict[str, Any]:
