@@ -112,7 +112,7 @@ class Case:
         groups = groups_of(self.state, start_walkers(self.state, LANES, seed=1))
         self.group = groups[0]
         self.group.advance(self.state.first_step, 30)
-        self.step, self.acceptance = tuned_step(self.state, groups, 8, threads=1)
+        self.step, self.acceptance = tuned_step(self.state, groups, 8, self.group.advance)
 
     def moves_per_second(self, seconds: float) -> float:
         """Proposals per processor second."""

@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import Any
 
 import numba
+from numba.core import event
 from numba.core.caching import FunctionCache, IndexDataCacheFile
 
 _KERNEL_FOLDER = Path(__file__).parent
@@ -124,6 +125,28 @@ def _announce() -> None:
 
 
 _announced: list[bool] = []
+
+
+class _Compilations(event.Listener):
+    """Counts the compilations that are going on; one may contain others."""
+
+    def __init__(self) -> None:
+        self.running = 0
+
+    def on_start(self, event: Any) -> None:
+        self.running += 1
+
+    def on_end(self, event: Any) -> None:
+        self.running -= 1
+
+
+_compilations = _Compilations()
+event.register("numba:compile", _compilations)
+
+
+def compiling() -> bool:
+    """True while a kernel is being compiled, which nothing but the end of the process can cut short."""
+    return _compilations.running > 0
 
 
 def _compiled(function: Callable[..., Any], **options: Any) -> Any:

@@ -17,6 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize
 
+from mcgeo.errors import RunInterrupted
 from mcgeo.estimate.finite_size import torus_energy_of_bulk
 from mcgeo.estimate.noisy_minimum import CurveMinimum, fitted_minimum
 from mcgeo.estimate.statistics import Estimate, mean_estimate
@@ -28,6 +29,7 @@ from mcgeo.runs.config import Config, config_from_resolved, resolved
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.progress import say
 from mcgeo.runs.sample import sample
+from mcgeo.runs.signals import stop_on_signals
 from mcgeo.variational.energy_surface import Surface
 from mcgeo.variational.variation import PROJECTED, RIGID, Variation, kinetic_energy
 
@@ -71,15 +73,19 @@ def torus_road(config: Config, folder: Path, *, overwrite: bool = False, quiet: 
     wanted = keys["scan"]["angle_degrees"]
     angle = math.radians(wanted) if wanted is not None else problem.mass_metric.angle
     span = keys["scan"]["stretch"]
-    points = []
-    for index, stretch in enumerate(np.linspace(span["from"], span["to"], span["points"])):
-        metric = UnimodularMetric(float(stretch), angle)
-        if not quiet:
-            say(f"metric {index + 1} of {span['points']}: stretch {stretch:.4g}")
-        place = folder / f"metric_{index:03d}"
-        liquid = sample(_at_metric(keys, metric, index), place, overwrite=overwrite, quiet=True)
-        assert isinstance(liquid, Liquid)
-        points.append(TorusPoint(float(stretch), metric, liquid, torus_point_energy(liquid, problem, variation)))
+    points: list[TorusPoint] = []
+    with stop_on_signals() as stop:
+        for index, stretch in enumerate(np.linspace(span["from"], span["to"], span["points"])):
+            if stop.is_set():
+                said = f"{index} of {span['points']} metrics are sampled; the same command goes on from there"
+                raise RunInterrupted(f"interrupted: {said}", stop.signal_number)
+            metric = UnimodularMetric(float(stretch), angle)
+            if not quiet:
+                say(f"metric {index + 1} of {span['points']}: stretch {stretch:.4g}")
+            place = folder / f"metric_{index:03d}"
+            liquid = sample(_at_metric(keys, metric, index), place, overwrite=overwrite, quiet=True, stop=stop)
+            assert isinstance(liquid, Liquid)
+            points.append(TorusPoint(float(stretch), metric, liquid, torus_point_energy(liquid, problem, variation)))
     x, y, error = (
         np.array(values)
         for values in zip(*((p.stretch, p.energy.value, p.energy.error) for p in points), strict=True)

@@ -5,8 +5,9 @@ from __future__ import annotations
 import threading
 from dataclasses import dataclass
 
-from mcgeo.sampling.blocks import BlockRecord, Interrupted, Measurement, merged
+from mcgeo.sampling.blocks import BlockRecord, Measurement, merged
 from mcgeo.sampling.soundness import require_sound_block, require_sound_walkers
+from mcgeo.sampling.stopping import advance, sweeps_per_look
 from mcgeo.sampling.tuning import tuned_step
 from mcgeo.sampling.walkers import WalkerArrays, arrays_of, for_each_group, groups_of, start_walkers
 from mcgeo.states.base import SampledState, WalkerGroup
@@ -56,8 +57,6 @@ class ChainState:
 
 
 _LEAST_TUNING_SWEEPS = 8
-# Between two looks at whether the run is to stop.
-_SWEEPS_PER_LOOK = 10
 
 
 def equilibrated(state: SampledState, schedule: Schedule, stop: threading.Event) -> ChainState:
@@ -72,21 +71,17 @@ def equilibrated(state: SampledState, schedule: Schedule, stop: threading.Event)
     first = schedule.step or min(state.first_step, state.largest_step)
     half = schedule.equilibration // 2
 
-    def advance(step: float) -> None:
-        def run(group: WalkerGroup) -> None:
-            for done in range(0, half, _SWEEPS_PER_LOOK):
-                if stop.is_set():
-                    raise Interrupted
-                group.advance(step, min(_SWEEPS_PER_LOOK, half - done))
+    longest = sweeps_per_look(state)
 
-        for_each_group(run, groups, schedule.threads)
+    def run(step: float, n_sweeps: int) -> None:
+        for_each_group(lambda group: advance(group, step, n_sweeps, longest, stop), groups, schedule.threads)
 
-    advance(first)
+    run(first, half)
     step = schedule.step
     if step is None:
         sweeps = max(_LEAST_TUNING_SWEEPS, half // 16)
-        step, _ = tuned_step(state, groups, sweeps, schedule.threads)
-    advance(step)
+        step, _ = tuned_step(state, groups, sweeps, run)
+    run(step, half)
     walkers = arrays_of(groups)
     require_sound_walkers(walkers, schedule.n_walkers, f"after equilibration (component {schedule.component + 1})")
     return ChainState(walkers, step, 0)

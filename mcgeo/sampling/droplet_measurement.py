@@ -16,7 +16,8 @@ from mcgeo.kernels.droplet_counts import (
     coulomb_sums,
 )
 from mcgeo.kernels.lanes import LANES
-from mcgeo.sampling.blocks import BlockRecord, Interrupted
+from mcgeo.sampling.blocks import BlockRecord
+from mcgeo.sampling.stopping import advance, sweeps_per_look
 from mcgeo.states.base import WalkerGroup
 from mcgeo.states.droplet import DropletState
 
@@ -92,12 +93,11 @@ class DropletMeasurement:
         moments = np.zeros((3, LANES))
         counts = np.zeros((self.n_bins, LANES), dtype=np.int64)
         pairs = np.zeros((self.n_pair_bins, LANES), dtype=np.int64)
+        longest = sweeps_per_look(self.state)
         group.refresh()
         group.accepted[:] = 0.0
         for k in range(n_measurements):
-            if stop.is_set():
-                raise Interrupted
-            group.advance(step, sweeps_between)
+            advance(group, step, sweeps_between, longest, stop)
             coulomb_sums(group.a, group.b, inverse_metric, background.radius, sums[k])
             add_second_moments(group.a, group.b, moments)
             add_radial_counts(group.a, group.b, RADIAL_BIN_WIDTH, counts)

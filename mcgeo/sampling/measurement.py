@@ -14,7 +14,8 @@ from mcgeo.kernels.lanes import LANES
 from mcgeo.kernels.pair_histogram import add_pair_counts
 from mcgeo.kernels.stein import POWERS, SteinTables, add_controls, stein_tables
 from mcgeo.kernels.structure import WaveTables, add_structure_factor, wave_sums, wave_tables
-from mcgeo.sampling.blocks import BlockRecord, Interrupted
+from mcgeo.sampling.blocks import BlockRecord
+from mcgeo.sampling.stopping import advance, sweeps_per_look
 from mcgeo.states.base import TrialState, WalkerGroup
 
 Array = NDArray[np.float64]
@@ -75,12 +76,11 @@ class TorusMeasurement:
         scratch = density_scratch(self.densities, n)
         trace = np.empty((n_measurements, LANES))
         forces = None
+        longest = sweeps_per_look(self.state)
         group.refresh()
         group.accepted[:] = 0.0
         for k in range(n_measurements):
-            if stop.is_set():
-                raise Interrupted
-            group.advance(step, sweeps_between)
+            advance(group, step, sweeps_between, longest, stop)
             sums.scalar[:] = 0.0
             add_structure_factor(self.tables, group.a, group.b, sums)
             trace[k] = sums.scalar[0]

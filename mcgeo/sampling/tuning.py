@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 from mcgeo.kernels.lanes import LANES
-from mcgeo.sampling.walkers import for_each_group
 from mcgeo.states.base import SampledState, WalkerGroup
 
 _ROUNDS = 16
@@ -14,23 +13,20 @@ _GAIN = 2.0
 
 
 def tuned_step(
-    state: SampledState, groups: Sequence[WalkerGroup], sweeps_per_round: int, threads: int
+    state: SampledState, groups: Sequence[WalkerGroup], sweeps_per_round: int, run: Callable[[float, int], None]
 ) -> tuple[float, float]:
     """Side of the square proposal at which the state's best acceptance is met, and the acceptance of the last round.
 
     The logarithm of the step follows the excess of acceptance with a gain that falls from round to round (Robbins and
-    Monro, Ann. Math. Stat. 22, 400 (1951)). The step never exceeds the state's largest one.
+    Monro, Ann. Math. Stat. 22, 400 (1951)). The step never
+    exceeds the state's largest one. ``run`` advances all groups with a step by a number of sweeps.
     """
     largest = state.largest_step
     step = min(state.first_step, largest)
     acceptance = 0.0
     for turn in range(_ROUNDS):
         before = sum(float(group.accepted.sum()) for group in groups)
-
-        def advance(group: WalkerGroup, step: float = step) -> None:
-            group.advance(step, sweeps_per_round)
-
-        for_each_group(advance, groups, threads)
+        run(step, sweeps_per_round)
         proposals = len(groups) * LANES * state.n_electrons * state.proposals_per_sweep * sweeps_per_round
         acceptance = (sum(float(group.accepted.sum()) for group in groups) - before) / proposals
         gain = _GAIN / math.sqrt(1.0 + turn)

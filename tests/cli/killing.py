@@ -15,10 +15,19 @@ import h5py
 
 from tests.cli.conftest import contents, python_process
 
-# Forks itself for every run, before it has any thread; the first argument is a list of commands that load the kernels.
+# Forks itself for every run, before it has any thread. The first argument is a list of commands that load the kernels;
+# the second the seconds that the disk takes for a file, so that kills meet half-written ones.
 FORKER = """
 import contextlib, io, json, os, sys, time
 from mcgeo.cli import main
+
+disk = os.fsync
+
+def slow_disk(handle):
+    time.sleep(float(sys.argv[2]))
+    disk(handle)
+
+os.fsync = slow_disk
 
 def run(arguments):
     os.dup2(os.open(os.devnull, os.O_WRONLY), 1)
@@ -53,6 +62,7 @@ for line in sys.stdin:
     print(json.dumps([code[0], time.monotonic() - started]), flush=True)
 """
 KILLED = -9
+_SECONDS_OF_THE_DISK = 0.02
 
 
 class Forker:
@@ -67,7 +77,8 @@ class Forker:
     """
 
     def __init__(self, folder: Path, first: Sequence[Sequence[str]]) -> None:
-        self._process = python_process(folder, "-c", FORKER, json.dumps(first), stdin=subprocess.PIPE)
+        arguments = ["-c", FORKER, json.dumps(first), str(_SECONDS_OF_THE_DISK)]
+        self._process = python_process(folder, *arguments, stdin=subprocess.PIPE)
 
     def __enter__(self) -> Forker:
         assert self._process.stderr is not None

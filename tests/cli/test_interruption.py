@@ -96,3 +96,45 @@ def test_reader_that_goes_away_is_no_error(tmp_path: Path) -> None:
     assert process.wait(timeout=60) == 0
     assert process.stderr.read() == ""
     process.stderr.close()
+
+
+def test_stop_while_kernels_are_compiled_does_not_wait_for_them(tmp_path: Path) -> None:
+    """The process is left at once; a run that had waited would tell of its equilibration."""
+    (tmp_path / "run.yaml").write_text(SMALL)
+    # Compilation that would go on until the process ends.
+    slow = (
+        "import sys, time\n"
+        "from mcgeo.kernels import _jit\n"
+        "from mcgeo.runs import start\n"
+        "from mcgeo.cli import main\n"
+        "def equilibrated(*arguments):\n"
+        "    with _jit.event.trigger_event('numba:compile'):\n"
+        "        print('in the compiler', file=sys.stderr, flush=True)\n"
+        "        while True:\n"
+        "            time.sleep(0.01)\n"
+        "start.equilibrated = equilibrated\n"
+        "sys.exit(main(sys.argv[1:]))\n"
+    )
+    process = python_process(tmp_path, "-c", slow, "sample", "run.yaml", "--out", "stopped")
+    code, out, err = stop_when(process, "in the compiler", signal.SIGTERM)
+    assert code == 143 and out == ""
+    assert "interrupted while kernels were compiled" in err and "Traceback" not in err
+    assert main(["sample", str(tmp_path / "run.yaml"), "--out", str(tmp_path / "stopped"), "-q"]) == 0
+    assert sorted(path.name for path in (tmp_path / "stopped").iterdir()) == ["liquid.h5", "sample.json"]
+
+
+def test_stop_on_the_torus_road_goes_on_at_the_same_metric(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    (tmp_path / "run.yaml").write_text(SMALL.replace("points: 6}", "points: 6}\n  road: torus"))
+    command = ["scan", str(tmp_path / "run.yaml"), "--json", "--out"]
+    process = python_process(tmp_path, "-c", WAIT_IN_FOURTH_BLOCK.replace("== 4", "== 20"), *command, "stopped")
+    code, out, err = stop_when(process, "fourth block", signal.SIGTERM)
+    assert code == 143 and out == "" and "3 whole blocks are in" in err
+    answers = []
+    for folder in ("stopped", "whole"):
+        assert main([*command, str(tmp_path / folder)]) in (0, 3)
+        captured = capsys.readouterr()
+        answers.append(json.loads(captured.out))
+    assert answers[0] == answers[1]
+    for index in range(6):
+        place = f"torus/metric_{index:03d}/liquid.h5"
+        assert contents(tmp_path / "stopped" / place) == contents(tmp_path / "whole" / place)
