@@ -32,7 +32,6 @@ FAULTS: dict[str, tuple[str | bytes, str | None, str]] = {
     "3 10^5 empty lists": (f"a: [{'[],' * 300_000}]\n", "1:59996", MANY),
     "10^5 keys": ("".join(f"k{i}: 1\n" for i in range(90_000)), "10000:8", MANY),
     "one key 2 10^5 times": ("a: 1\n" * 190_000, "10000:4", MANY),
-    "6000 faults": (STATE + "".join(f"k{i}: 1\n" for i in range(6000)), "2:1", "k0: unknown key"),
     "a key of a megabyte": (f"{STATE}? {LONG}\n: 1\n", "2:3", "kkk...: unknown key"),
     "a text of a megabyte": (f"state: {{kind: {LONG}}}\n", "1:15", "must be one of"),
     "a name of a megabyte": (f"{STATE}material: {{name: {LONG}, field_tesla: 2}}\n", "2:18", "must be one of"),
@@ -131,8 +130,8 @@ def test_hostile_configuration_is_refused(child: tuple[Child, Path], fault: str)
 
 def test_many_faults_are_counted(child: tuple[Child, Path]) -> None:
     process, folder = child
-    (folder / "run.yaml").write_text(STATE + "".join(f"k{i}: 1\n" for i in range(6000)))
-    assert process.run("check", "run.yaml").err.splitlines()[-1] == "run.yaml:52:1: 5950 more faults from here on"
+    (folder / "run.yaml").write_text(STATE + "".join(f"k{i}: 1\n" for i in range(1000)))
+    assert process.run("check", "run.yaml").err.splitlines()[-1] == "run.yaml:52:1: 950 more faults from here on"
 
 
 @pytest.mark.parametrize("command", [("check",), ("sample",), ("scan",), ("plot", "energy")])
