@@ -180,6 +180,20 @@ def test_check_tells_points_liquids_time_and_disk(mcgeo: Command) -> None:
     assert not FOLDER.exists()
 
 
+def test_check_of_a_single_run_counts_its_scan(mcgeo: Command) -> None:
+    problem = "problem: {mass: {ratio: 2}, variation: two_metric, level_mixing: 1}\n"
+    found = {}
+    for road in ("plane", "torus"):
+        scan = f"scan: {{road: {road}, stretch: {{from: 0, to: 1, points: 8}}}}\n"
+        Path("run.yaml").write_text(STATE + SAMPLING.replace("480", "48000") + problem + scan)
+        found[road] = json.loads(mcgeo("check", "run.yaml", "--json").out)
+        parts = found[road]["estimated_sampling_seconds"] + found[road]["estimated_scan_seconds"]
+        assert found[road]["estimated_seconds"] == pytest.approx(parts, abs=0.11)
+    assert found["plane"]["estimated_scan_seconds"] > 0.0
+    # The torus road samples every metric by itself.
+    assert found["torus"]["estimated_megabytes"] == pytest.approx(8 * found["plane"]["estimated_megabytes"], abs=0.1)
+
+
 def test_status_reads_the_folder(mcgeo: Command) -> None:
     sweep(mcgeo, ONE_LIQUID.replace("[1, 2, 4]", "[1, 2]"))
     whole = json.loads(mcgeo("sweep", str(FOLDER), "--status", "--json").out)

@@ -20,6 +20,7 @@ from mcgeo.runs.sweep_plan import Point, SweepPlan, load_sweep
 from mcgeo.runs.sweep_progress import SweepProgress, duration
 from mcgeo.runs.sweep_queue import MOST_HINDRANCES, Job, Queue
 from mcgeo.runs.sweep_rows import RowFile, known_points
+from mcgeo.runs.sweep_steps import WHOLE
 from mcgeo.runs.sweep_tasks import Report
 
 SWEEP = """\
@@ -210,7 +211,8 @@ class Fixed(Troubled):
 def filled_queue(crew: Crew, n_liquids: int) -> Queue:
     queue = Queue(crew)
     points = {f"liquid {n}": [Point(n, f"point {n}", f"liquid {n}", "")] for n in range(n_liquids)}
-    queue.add_liquids(points, {liquid: float(len(points) - n) for n, liquid in enumerate(points)})
+    costs = {liquid: float(len(points) - n) for n, liquid in enumerate(points)}
+    queue.add_liquids(points, costs, dict.fromkeys(points, WHOLE))
     return queue
 
 
