@@ -9,7 +9,7 @@ from pydantic import Field, ValidationInfo, field_validator
 from mcgeo.runs.config_types import Count, Group, Positive, Real, WholeNumber, rule
 
 ENERGY, STRETCH = "energy", "stretch"
-_DEFAULT_LIMIT = 32
+DEFAULT_LIMIT = 32
 # Block means of S(q) are a megabyte a block for a middling liquid.
 _MOST_BLOCKS = 1024
 
@@ -63,7 +63,7 @@ class SamplingConfig(Group):
     most_sweeps: Count | None = Field(
         default=None,
         description="Sweeps of each walker after which a run with a target_error ends all the same; null: "
-        f"{_DEFAULT_LIMIT} times sweeps [1].",
+        f"{DEFAULT_LIMIT} times sweeps [1].",
     )
 
     @field_validator("blocks")
@@ -108,12 +108,12 @@ class SamplingConfig(Group):
             if most is not None:
                 raise rule("goes with target_error only; without one the run ends after sweeps")
             return None
-        limit = _DEFAULT_LIMIT * sweeps if most is None else most
+        limit = DEFAULT_LIMIT * sweeps if most is None else most
         if limit < sweeps:
             raise rule(f"must be at least sweeps, which is {sweeps}, not {most}")
         block = -(-sweeps // blocks)
         if -(-limit // block) > _MOST_BLOCKS:
-            told = f"not {most}" if most is not None else f"and its default is {_DEFAULT_LIMIT} times sweeps"
+            told = f"not {most}" if most is not None else f"and its default is {DEFAULT_LIMIT} times sweeps"
             raise rule(
                 f"must be at most {_MOST_BLOCKS} blocks of sweeps/blocks = {block} sweeps, which is "
                 f"{_MOST_BLOCKS * block}, {told}; a file of longer ones is smaller: lower blocks or raise sweeps"

@@ -8,7 +8,7 @@ from typing import Any
 
 from mcgeo.runs.config_faults import Remark
 from mcgeo.runs.config_types import MOST_ELECTRONS
-from mcgeo.runs.sampling_config import SamplingConfig
+from mcgeo.runs.sampling_config import DEFAULT_LIMIT, SamplingConfig
 
 # In memory a result is held about three times while it is written.
 LARGEST_RESULT = 8e9
@@ -33,17 +33,20 @@ def size_remarks(given: Mapping[str, Any]) -> Iterator[Remark]:
     if electrons > MOST_ELECTRONS:
         return
     most = keys["most_sweeps"]
-    if isinstance(most, int) and most > sweeps:
+    if most is None and keys["target_error"] is not None:
+        most = DEFAULT_LIMIT * sweeps
+    if isinstance(most, int | float) and most > sweeps:
         blocks, sweeps = blocks * most / sweeps, most
     # Waves of a half-plane within q_max: A pi q^2 / (2 pi)^2 / 2 with the area A = 2 pi N / nu.
     waves = 0.25 * electrons * _inverse_filling(state) * q_max**2
     between = keys["measure_every"] if isinstance(keys["measure_every"], int) and keys["measure_every"] > 0 else 1
-    size = 8.0 * walkers * (blocks * (waves + _BESIDE_WAVES) + 3.0 * sweeps / between)
+    components = 3.0 if state.get("kind") == "moore_read" else 1.0
+    size = 8.0 * walkers * (blocks * (waves + _BESIDE_WAVES) + components * sweeps / between)
     if size > LARGEST_RESULT:
         yield Remark(
             ("sampling",),
             f"block means of {size / 1e9:.3g} GB, at most {LARGEST_RESULT / 1e9:g} work; "
-            "lower walkers, blocks or sweeps, or measure less often",
+            "lower walkers, blocks, sweeps or most_sweeps, or measure less often",
             at_key=True,
         )
 
