@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import io
 from pathlib import Path
 
+import h5py
 import pytest
 
 from mcgeo.cli import main
@@ -31,6 +33,12 @@ def serial(tmp_path_factory: pytest.TempPathFactory) -> dict[str, bytes]:
 def tables(folder: Path) -> dict[str, bytes]:
     """Content of the tables in a sweep's folder."""
     return {name: (folder / name).read_bytes() for name in TABLES}
+
+
+def numbers(found: dict[str, bytes]) -> tuple[bytes, dict[str, str]]:
+    """All of the tables but the configuration, which says into how many parts."""
+    with h5py.File(io.BytesIO(found["sweep.h5"])) as file:
+        return found["sweep.csv"], {name: repr(file[name][()].tolist()) for name in file}
 
 
 @pytest.fixture

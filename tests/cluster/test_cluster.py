@@ -14,7 +14,7 @@ from mcgeo.runs import cluster as cluster_module
 from mcgeo.runs.cluster_worker import unfit, versions
 from mcgeo.runs.lock import run_lock
 from mcgeo.runs.sweep_liquids import LIQUIDS, liquid_progress
-from tests.cluster.conftest import tables
+from tests.cluster.conftest import SWEEP, numbers, tables
 from tests.cluster.loopback import Loopback, loopback, meanwhile, wait_for
 
 
@@ -46,6 +46,10 @@ def test_two_workers_give_the_bits_of_one_process(
         assert said.count(f"numba {versions()['numba']} instead of 0.1") == 2
         assert not (swept / "out/points").exists()
         assert sweep(cluster) in (0, 3)
+        # And with the walkers of every liquid divided.
+        (swept / "run.yaml").write_text(SWEEP + f"  walker_parts: 2\n  scheduler: {cluster.address}\n")
+        assert main(["sweep", "run.yaml", "--out", "parts"]) in (0, 3)
+    assert numbers(tables(swept / "parts")) == numbers(serial)
     assert tables(swept / "out") == serial
     assert not [path for path in (swept / "out").iterdir() if path.name.startswith(".")]
 

@@ -2,23 +2,15 @@
 
 from __future__ import annotations
 
-import io
 import signal
 from pathlib import Path
 
-import h5py
 import pytest
 
 from mcgeo.cli import main
 from mcgeo.runs.sweep_liquids import liquid_progress
-from tests.cluster.conftest import SWEEP, tables
+from tests.cluster.conftest import SWEEP, numbers, tables
 from tests.cluster.loopback import loopback, meanwhile, wait_for
-
-
-def numbers(found: dict[str, bytes]) -> tuple[bytes, dict[str, str]]:
-    """All of the tables but the configuration, which says into how many parts."""
-    with h5py.File(io.BytesIO(found["sweep.h5"])) as file:
-        return found["sweep.csv"], {name: repr(file[name][()].tolist()) for name in file}
 
 
 @pytest.fixture
@@ -28,7 +20,7 @@ def in_parts(swept: Path) -> Path:
     return swept
 
 
-def test_parts_on_processes(in_parts: Path, serial: dict[str, bytes], monkeypatch: pytest.MonkeyPatch) -> None:
+def test_parts_on_processes(in_parts: Path, serial: dict[str, bytes]) -> None:
     for workers in (1, 2):
         assert main(["sweep", "run.yaml", "--out", f"out{workers}", "--workers", str(workers), "-q"]) in (0, 3)
         folder = in_parts / f"out{workers}"
@@ -36,6 +28,7 @@ def test_parts_on_processes(in_parts: Path, serial: dict[str, bytes], monkeypatc
         assert {path.name for path in folder.glob("liquids/*/*")} == {"liquid.h5"}
 
 
+@pytest.mark.long
 def test_parts_on_a_cluster_of_which_a_worker_dies(in_parts: Path, serial: dict[str, bytes]) -> None:
     with loopback(in_parts / "cluster", workers=1) as cluster:
         # Blocks of a part or of the next one: the fourth comes when one block at least is in a file.
@@ -51,8 +44,9 @@ def test_parts_on_a_cluster_of_which_a_worker_dies(in_parts: Path, serial: dict[
     assert numbers(tables(in_parts / "out")) == numbers(serial)
 
 
+@pytest.mark.long
 def test_a_sampling_begun_whole_is_ended_whole(
-    in_parts: Path, serial: dict[str, bytes], monkeypatch: pytest.MonkeyPatch
+    in_parts: Path, serial: dict[str, bytes]
 ) -> None:
     with loopback(in_parts / "cluster") as cluster:
         (in_parts / "whole.yaml").write_text(SWEEP)
