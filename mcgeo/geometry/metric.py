@@ -162,8 +162,14 @@ class UnimodularMetric:
         return UnimodularMetric(self.stretch, self.angle + angle)
 
     def distance(self, other: UnimodularMetric) -> float:
-        """Geodesic distance arccosh(Tr(g1^-1 g2) / 2); equals |Q1 - Q2| for metrics of one angle."""
-        return self.relative_to(other).stretch
+        """Geodesic distance d = arccosh(Tr(g1^-1 g2) / 2); equals |Q1 - Q2| for metrics of one angle.
+
+        As sinh^2(d/2) = sinh^2((Q1 - Q2)/2) + sinh Q1 sinh Q2 sin^2(theta1 - theta2), which neither cancels for
+        neighbours nor fails where the matrices' entries are too far apart to be added.
+        """
+        radial = math.sinh(0.5 * (self.stretch - other.stretch))
+        turned = math.sqrt(math.sinh(self.stretch)) * math.sqrt(math.sinh(other.stretch))
+        return 2.0 * math.asinh(math.hypot(radial, turned * math.sin(self.angle - other.angle)))
 
     def position_norm_sq(self, positions: ArrayLike) -> Matrix:
         """r.g.r for positions of shape (..., 2)."""

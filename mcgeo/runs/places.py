@@ -11,6 +11,7 @@ from typing import TypeVar
 
 from mcgeo.errors import ConfigError, GeometryError
 from mcgeo.runs.config import Config
+from mcgeo.runs.yaml_nodes import Mark
 from mcgeo.runs.yaml_source import Fault, YamlSource, parse_yaml
 from mcgeo.runs.yaml_source import Path as KeyPath
 
@@ -24,7 +25,8 @@ _YAML = (".yaml", ".yml")
 def with_places(command: Callable[[argparse.Namespace], Result]) -> Callable[[argparse.Namespace], Result]:
     """The command, whose faults ``key.path: message`` and errors of geometry get the place of their key.
 
-    The file is read once more for it, where ``arguments.config`` is a YAML file.
+    The file is read once more for it, where ``arguments.config`` is a YAML file. An error of geometry whose key nobody
+    knows is of the file as a whole.
     """
 
     @functools.wraps(command)
@@ -33,9 +35,11 @@ def with_places(command: Callable[[argparse.Namespace], Result]) -> Callable[[ar
         try:
             return command(arguments)
         except GeometryError as fault:
-            if not fault.key:
+            if path.suffix not in _YAML:
                 raise
-            raise ConfigError(placed([f"{fault.key}: {fault}"], path)) from fault
+            if fault.key:
+                raise ConfigError(placed([f"{fault.key}: {fault}"], path)) from fault
+            raise ConfigError([Fault(Mark(1, 1), (), str(fault)).line(str(path))]) from fault
         except ConfigError as fault:
             raise ConfigError(placed(fault.faults, path)) from fault
 

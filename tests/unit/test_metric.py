@@ -223,3 +223,18 @@ def test_matrices_refused(matrix, message):
 def test_aspect_ratios_refused(aspect_ratio):
     with pytest.raises(GeometryError, match="positive"):
         UnimodularMetric.from_aspect_ratio(aspect_ratio)
+
+
+@pytest.mark.parametrize(("stretch", "other"), [(0.5 * math.log(2.0**63), 0.0), (300.0, 299.0), (354.0, 354.0)])
+def test_distance_of_metrics_beyond_any_matrix(stretch, other):
+    """Of one angle |Q1 - Q2|; at right angles Q1 + Q2."""
+    first = UnimodularMetric(stretch, 0.3)
+    assert first.distance(UnimodularMetric(other, 0.3)) == pytest.approx(stretch - other, rel=1e-12, abs=1e-12)
+    assert first.distance(UnimodularMetric(other, 0.3 + 0.5 * math.pi)) == pytest.approx(stretch + other, rel=1e-12)
+
+
+@pytest.mark.parametrize("step", [1e-12, 1e-9, 1e-3])
+def test_distance_of_neighbours_does_not_cancel(step):
+    """ds = sinh Q 2 d theta for a small turn."""
+    found = UnimodularMetric(1.3, 0.2).distance(UnimodularMetric(1.3, 0.2 + step))
+    assert found == pytest.approx(2.0 * math.sinh(1.3) * step, rel=1e-4)
