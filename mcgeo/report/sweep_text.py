@@ -43,7 +43,7 @@ def sweep_plan_text(plan: Mapping[str, Any]) -> str:
     rows = [
         *((", ".join(axis["keys"]), _axis_words(axis)) for axis in plan["axes"]),
         ("points", str(plan["points"])),
-        ("liquids to sample", str(len(liquids))),
+        ("liquids to sample", str(sum(liquid["to_sample"] for liquid in liquids))),
         *((liquid["liquid"], _liquid_words(liquid)) for liquid in liquids[:_SHOWN_LIQUIDS]),
     ]
     if len(liquids) > _SHOWN_LIQUIDS:
@@ -82,8 +82,9 @@ def _axis_words(axis: Mapping[str, Any]) -> str:
 
 
 def _liquid_words(liquid: Mapping[str, Any]) -> str:
+    time = duration(liquid["estimated_seconds"]) if liquid["to_sample"] else "of the catalogue"
     return (
-        f"{liquid['state']}, {duration(liquid['estimated_seconds'])}, serves {_plural(liquid['points'], 'point')}, "
+        f"{liquid['state']}, {time}, serves {_plural(liquid['points'], 'point')}, "
         f"the first at {_point_words(liquid['first_point'])}"
     )
 

@@ -80,6 +80,7 @@ def sweep_summary(plan: SweepPlan, cores: int) -> dict[str, Any]:
             {
                 "liquid": liquid,
                 "state": plans[liquid]["state"],
+                "to_sample": plans[liquid]["blocks"] > 0,
                 "points": len(points),
                 "first_point": plan.values(points[0]),
                 "estimated_seconds": round(costs.liquids[liquid] / cores, 1),
