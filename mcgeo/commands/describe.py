@@ -9,8 +9,6 @@ import platform
 from importlib.metadata import version
 from typing import Any
 
-import numba
-
 import mcgeo
 from mcgeo.commands.run import as_json
 from mcgeo.kernels._jit import cache_folder
@@ -19,6 +17,7 @@ from mcgeo.runs.build import available_threads
 from mcgeo.runs.config import json_schema, load_config, resolved
 from mcgeo.runs.places import with_places
 from mcgeo.runs.plan import plan_of
+from mcgeo.runs.processor import processor
 from mcgeo.runs.sweep_estimate import sweep_summary
 from mcgeo.runs.sweep_plan import has_sweep, load_sweep
 
@@ -51,18 +50,12 @@ def run_info(arguments: argparse.Namespace) -> tuple[str, int]:
         "mcgeo": mcgeo.__version__,
         "python": platform.python_version(),
         "system": platform.platform(),
-        "processor": numba.config.CPU_NAME or _processor(),
+        "processor": processor()["name"],
         "threads": available_threads(),
         "kernels": os.fspath(cache_folder()),
         "libraries": {name: version(name) for name in _LIBRARIES},
     }
     return as_json(facts) if arguments.json else _rows(facts), 0
-
-
-def _processor() -> str:
-    from llvmlite import binding
-
-    return str(binding.get_host_cpu_name())
 
 
 def run_schema(arguments: argparse.Namespace) -> tuple[str, int]:

@@ -22,6 +22,7 @@ from mcgeo.runs.checked_hdf5 import Unexpected
 from mcgeo.runs.ending import blocks_of
 from mcgeo.runs.experiment import result_class
 from mcgeo.runs.liquid import Liquid
+from mcgeo.runs.processor import processor
 from mcgeo.runs.result_layout import FLAG, FLOAT, INTEGER, LONGEST_CONFIG, WORD, read_config, read_contents
 from mcgeo.runs.sampled import Sampled
 from mcgeo.runs.seal import BLOCK_SIZE, check_seal, seal
@@ -97,6 +98,7 @@ def _fill(file: Any, result: Sampled) -> None:
     file.attrs["format"] = FORMAT
     file.attrs["mcgeo_version"] = mcgeo.__version__
     file.attrs["libraries"] = json.dumps(_versions())
+    file.attrs["processor"] = json.dumps(processor())
     file.attrs.create("seconds", result.seconds, dtype=FLOAT)
     file.attrs.create("complete", result.complete, dtype=FLAG)
     write_config(file, result.resolved)

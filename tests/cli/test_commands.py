@@ -8,6 +8,7 @@ import shutil
 from collections.abc import Callable
 from pathlib import Path
 
+import h5py
 import pytest
 
 from mcgeo.cli import main
@@ -251,3 +252,19 @@ def test_units_of_a_sample_reach_the_results(tmp_path: Path, capsys: pytest.Capt
     assert best["energy_mev"] == pytest.approx(best["energy"] * units["coulomb_energy_mev"], rel=1e-12)
     per_area = units["coulomb_energy_mev"] * units["density_per_cm2"] * 1e-14
     assert best["stiffness_mev_per_nm2"][0][0] == pytest.approx(best["stiffness"][0][0] * per_area, rel=1e-8)
+
+
+def test_result_file_says_what_it_came_from(mcgeo: Command, small: Path) -> None:
+    mcgeo("sample", "run.yaml")
+    info = json.loads(mcgeo("info", "--json").out)
+    with h5py.File(RESULTS / "liquid.h5") as file:
+        found = dict(file.attrs)
+        config = json.loads(file["config"][()])
+    assert found["mcgeo_version"] == info["mcgeo"]
+    libraries = json.loads(found["libraries"])
+    assert libraries == {name: info["libraries"][name] for name in libraries} and "numba" in libraries
+    processor = json.loads(found["processor"])
+    assert processor["name"] == info["processor"] and set(processor["features"]) <= {
+        "fma", "avx", "avx2", "avx512f", "neon", "sve",
+    }  # fmt: skip
+    assert config["state"]["electrons"] == 4 and config["sampling"]["seed"] == 5
