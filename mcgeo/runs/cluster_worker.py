@@ -8,6 +8,7 @@ import threading
 import time
 from collections import Counter
 from collections.abc import Callable, Mapping
+from functools import cache
 from importlib.metadata import version
 from pathlib import Path
 from typing import Any
@@ -25,8 +26,12 @@ _SECONDS_BEFORE_ANOTHER = 1.0
 _WORKING = ("executing", "long-running")
 
 
+@cache
 def versions() -> dict[str, str]:
-    """All that the last bit of a result depends on, short of the processor; of the program itself the sources too."""
+    """All that the last bit of a result depends on, short of the processor; of the program itself the sources too.
+
+    Read once: a process goes on with the sources that it has loaded, whatever becomes of the files.
+    """
     root = Path(mcgeo.__file__).parent
     digest = hashlib.sha256()
     for source in sorted(root.rglob("*.py")):

@@ -163,6 +163,8 @@ class _Opened:
         self._liquid, self._seed = liquid, seed
         self._state = liquid.state_summary()
         self._answers = SharedAnswers()
+        # Worker threads of one process may put questions to the same liquid.
+        self._one_at_a_time = threading.Lock()
 
     @property
     def shared_columns(self) -> dict[str, Any]:
@@ -181,7 +183,8 @@ class _Opened:
 
     def row(self, question: Question) -> dict[str, Any]:
         """The numbers of one point."""
-        found = optimum(self._liquid, question.problem, self._answers)
+        with self._one_at_a_time:
+            found = optimum(self._liquid, question.problem, self._answers)
         problem = problem_summary(found.problem, question.problem)
         summary = {"state": self._state, "optimum": optimum_summary(found)}
         summary = with_units(summary, {"material": question.material})

@@ -73,16 +73,17 @@ class Loopback:
     def address(self) -> str:
         return str(json.loads(self.file.read_text())["address"])
 
-    def worker(self, *, halts: bool = False) -> subprocess.Popen[bytes]:
-        """One more worker process, of one thread."""
+    def worker(self, *, threads: int = 1, halts: bool = False) -> subprocess.Popen[bytes]:
+        """One more worker process."""
         preload = []
         if halts:
             (self.folder / "halt.py").write_text(HALT)
             preload = ["--preload", "halt.py"]
         name = f"worker{len(self.workers)}"
         started = self._started(
-            name, "worker", "--no-nanny", "--nthreads", "1", "--memory-limit", "0", "--local-directory", name, *preload
-        )
+            name, "worker", "--no-nanny", "--nthreads", str(threads), "--memory-limit", "0", "--local-directory", name,
+            *preload,
+        )  # fmt: skip
         self.workers.append(started)
         return started
 

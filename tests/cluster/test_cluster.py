@@ -36,7 +36,9 @@ def begun_liquid(folder: Path) -> Path:
 def test_two_workers_give_the_bits_of_one_process(
     swept: Path, serial: dict[str, bytes], monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    with loopback(swept / "cluster", workers=2) as cluster:
+    with loopback(swept / "cluster", workers=1) as cluster:
+        # Tasks of one process beside each other, in threads.
+        cluster.worker(threads=2)
         wait_for(lambda: cluster.logs().count("Registered to") == 2, "both workers")
         # Other versions here than on the workers: refused before anything is done.
         with monkeypatch.context() as other:
