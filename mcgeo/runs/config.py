@@ -178,6 +178,9 @@ def validated(data: Mapping[str, Any], files: NamedFiles | None) -> tuple[Config
             return None, without_repeats(explain(error, _schema()), across) + across
     except GeometryError as error:
         return None, [Remark(("material",), str(error), at_key=True)]
+    except ArithmeticError:
+        # Only units are computed with here.
+        return None, [Remark(("material",), "masses, permittivity or field are too large or too small", at_key=True)]
 
 
 def resolved(config: Config) -> dict[str, Any]:

@@ -26,6 +26,9 @@ FAULTS = {
     "masses without measure": (
         "check", STATE + "material: {mass: {along_axes: [1e-300, 1e300]}, permittivity: 1, field_tesla: 1}\n",
         ["2:1: material: a metric needs"]),
+    "field of nothing": (
+        "check", STATE + "material: {name: AlAs, field_tesla: 1e-320}\n",
+        ["2:1: material: masses, permittivity or field are too large or too small"]),
     "interaction without background": (
         "scan", STATE + "geometry: {kind: disk}\nproblem: {interaction: {kind: pseudopotentials, values: {1: 1}}}\n",
         ["3:24: problem.interaction: must be an interaction V(r) for a droplet"]),
