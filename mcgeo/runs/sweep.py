@@ -199,8 +199,8 @@ class _Run:
         except BrokenExecutor:
             self._died(job)
             return True
-        except self._crew.fatal as fault:
-            self._failed(job, f"workers died over it: {fault}")
+        except self._crew.fatal:
+            self._failed(job, "workers died over it until the cluster gave it up; is there memory enough for it?")
             return False
         except Exception as fault:
             # Tasks catch all errors of their own: this one is of the way there or back.

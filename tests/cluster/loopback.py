@@ -73,13 +73,13 @@ class Loopback:
     def address(self) -> str:
         return str(json.loads(self.file.read_text())["address"])
 
-    def worker(self, *, threads: int = 1, halts: bool = False) -> subprocess.Popen[bytes]:
-        """One more worker process."""
-        preload = []
-        if halts:
-            (self.folder / "halt.py").write_text(HALT)
-            preload = ["--preload", "halt.py"]
+    def worker(self, *, threads: int = 1, halts: bool = False, first: str = "") -> subprocess.Popen[bytes]:
+        """One more worker process; ``first`` is Python that it runs before anything else."""
         name = f"worker{len(self.workers)}"
+        preload = []
+        if halts or first:
+            (self.folder / f"{name}_first.py").write_text(HALT if halts else first)
+            preload = ["--preload", f"{name}_first.py"]
         started = self._started(
             name, "worker", "--no-nanny", "--nthreads", str(threads), "--memory-limit", "0", "--local-directory", name,
             *preload,
