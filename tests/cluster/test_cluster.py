@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import signal
+import sys
 from pathlib import Path
 
 import dask
@@ -113,6 +114,22 @@ def test_ctrl_c_reaches_the_workers(swept: Path, serial: dict[str, bytes], capsy
         # The worker is free again, and past its halt.
         assert sweep(cluster) in (0, 3)
     assert tables(swept / "out") == serial
+
+
+def test_without_the_extra_it_is_named(
+    swept: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.delitem(sys.modules, "mcgeo.runs.cluster")
+    monkeypatch.delattr("mcgeo.runs.cluster")
+    # So the import system takes it for a module that is not installed.
+    monkeypatch.setitem(sys.modules, "distributed", None)
+    assert main(["sweep", "run.yaml", "--scheduler", "tcp://127.0.0.1:1"]) == 2
+    assert "pip install 'mcgeo[cluster]'" in capsys.readouterr().err
+
+
+def test_workers_are_those_of_one_place(swept: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["sweep", "run.yaml", "--scheduler", "tcp://127.0.0.1:1", "--workers", "2"]) == 2
+    assert "--scheduler and --workers: give one" in capsys.readouterr().err
 
 
 def test_a_scheduler_that_does_not_answer(swept: Path, capsys: pytest.CaptureFixture[str]) -> None:
