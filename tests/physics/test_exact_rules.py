@@ -49,8 +49,8 @@ def test_another_state_is_seen(third: Liquid) -> None:
 
 def test_lost_pairs_are_seen(third: Liquid) -> None:
     counts = third.blocks.counts[PAIRS].copy()
-    # One pair in two hundred.
-    counts[..., :] -= counts // 200
+    # One pair in fifty.
+    counts -= np.random.default_rng(50).binomial(counts, 0.02)
     spoilt = dataclasses.replace(third, blocks=dataclasses.replace(third.blocks, counts={PAIRS: counts}))
     assert abs(spoilt.rules["pair_count"]) > 10.0
     assert spoilt.diagnostics.verdict == "mixing"
