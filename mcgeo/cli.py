@@ -18,7 +18,7 @@ from mcgeo.errors import McgeoError
 
 _EXIT_CODES = """exit codes:
   0 done, 2 usage or configuration, 3 finished but not converged,
-  4 some points of a sweep failed or are missing,
+  4 some points of a sweep failed or are missing, or its workers or scheduler were lost,
   130 or 143 interrupted (whole blocks are kept), 1 a bug
 """
 

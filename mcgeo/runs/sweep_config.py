@@ -123,8 +123,8 @@ class SweepConfig(Group):
     )
     walker_parts: Count = Field(
         default=1,
-        description="Parts into which the walkers of every liquid are divided, each for a worker of its own and of at "
-        "least eight walkers. Results do not depend on it [1].",
+        description="Parts into which the walkers of every liquid are divided by whole groups of eight, each for a "
+        "worker of its own. Results do not depend on it [1].",
     )
     scheduler: Annotated[str, AfterValidator(_named)] | None = Field(
         default=None,
