@@ -27,7 +27,8 @@ from mcgeo.runs.sweep_config import (
 from mcgeo.runs.yaml_nodes import looks_like_number
 from mcgeo.runs.yaml_source import Path
 
-_STEP = re.compile(r"([^.\[\]]+)((?:\[[0-9]+\])*)")
+# A key that no configuration has may hold what breaks lines.
+_STEP = re.compile(r"([A-Za-z0-9_]+)((?:\[[0-9]+\])*)")
 # Digits kept of the values of a range: its rounding would else show in tables and file names.
 _DIGITS = 12
 _MAX_BYTES = 10_000_000

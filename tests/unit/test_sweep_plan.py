@@ -305,6 +305,10 @@ FAULTS = {
         ["{key: problem..level, values: [1]}"],
         [("problem..level", "sweep.axes[0].key: must be a key of the configuration, as problem.mass.ratio, not ")],
     ),
+    "a key that breaks lines": (
+        ["{key: p\u2028roblem.level, values: [1]}"],
+        [("p", "sweep.axes[0].key: must be a key of the configuration, as problem.mass.ratio, not 'p\\u2028")],
+    ),
 }
 
 
