@@ -27,7 +27,7 @@ from mcgeo.geometry.metric import ISOTROPIC
 from mcgeo.problem.interaction import Coulomb
 from mcgeo.problem.problem import Problem
 from mcgeo.runs.catalogue import CatalogueLiquid
-from mcgeo.runs.catalogue_file import N_SAMPLES, CatalogueEntry, CatalogueRun, read_entry, write_catalogue
+from mcgeo.runs.catalogue_file import N_SAMPLES, CatalogueEntry, CatalogueRun, held_names, read_entry, write_catalogue
 from mcgeo.runs.config import config_from_resolved
 from mcgeo.runs.liquid import Liquid
 from mcgeo.runs.sample import LIQUID_FILE, sample
@@ -140,7 +140,10 @@ def catalogue_run(liquid: Liquid, file: Path) -> CatalogueRun:
     samples = found.samples.reshape(-1, N_SAMPLES, len(found.m)).mean(axis=0)
     shown = liquid.norm < _LARGEST_Q
     curve = shell_means(liquid.norm[shown], liquid.structure_samples[:, shown], width=0.0)
-    return CatalogueRun(liquid.resolved, version, libraries, liquid.diagnostics_summary(), found.m, samples, curve)
+    errors = found.free_errors
+    assert errors is not None
+    health = liquid.diagnostics_summary()
+    return CatalogueRun(liquid.resolved, version, libraries, health, found.m, samples, errors, curve)
 
 
 def catalogue_entry(name: str, plan: Plan, work: Path, threads: int) -> CatalogueEntry:
@@ -189,11 +192,12 @@ def main(argv: Sequence[str] | None = None) -> int:
     parser.add_argument("--threads", type=int, default=1)
     parser.add_argument("--quick", action="store_true", help="tiny systems, of which nothing is required")
     arguments = parser.parse_args(argv)
+    kept = held_names(arguments.out) if arguments.out.exists() else []
     entries: dict[str, CatalogueEntry] = {}
     faults: list[str] = []
     for name in CATALOGUE_NAMES:
         if name not in arguments.only:
-            if arguments.out.exists():
+            if name in kept:
                 entries[name] = read_entry(name, arguments.out)
             continue
         plan = quick(PLANS[name]) if arguments.quick else PLANS[name]

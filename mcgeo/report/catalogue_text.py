@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -31,6 +32,7 @@ def origin_rows(summary: Mapping[str, Any]) -> list[tuple[str, str]]:
     rows = [
         (f"error of the {name}", f"{part['statistical']:.2g} statistical, {part['finite_size']:.2g} finite size")
         for name, part in ((name, parts[f"{name}_error"]) for name in ("stretch", "energy"))
+        if math.isfinite(part["finite_size"])
     ]
     large, small = summary["state"]["origin"]["large"], summary["state"]["origin"]["small"]
     return [*rows, ("sampled", _run_words(large)), ("compared with", _run_words(small))]

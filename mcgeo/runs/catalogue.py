@@ -49,18 +49,21 @@ class CatalogueLiquid:
     @cached_property
     def statistical_occupations(self) -> PairOccupations:
         """Pair occupations of the larger system, with the samples of its walkers."""
-        m, samples = self.entry.large.m, self.entry.large.samples
-        return self._asked_for(m, samples)
+        large = self.entry.large
+        return self._asked_for(large.m, large.samples, large.free_errors)
 
     @cached_property
     def occupations(self) -> PairOccupations:
         """The same with samples whose errors hold the finite-size difference; see `samples_with_deviation`."""
-        m, large, small = _on_common_m(self.entry.large, self.entry.small)
-        return self._asked_for(m, samples_with_deviation(large, small.mean(axis=0) - large.mean(axis=0)))
+        large, small = self.entry.large, self.entry.small
+        m = max((large.m, small.m), key=len)
+        deviation = _padded(small.samples.mean(axis=0), len(m)) - _padded(large.samples.mean(axis=0), len(m))
+        samples = samples_with_deviation(_padded(large.samples, len(m)), deviation)
+        return self._asked_for(m, samples, np.hypot(_padded(large.free_errors, len(m)), deviation))
 
-    def _asked_for(self, m: NDArray[np.int64], samples: Array) -> PairOccupations:
+    def _asked_for(self, m: NDArray[np.int64], samples: Array, free_errors: Array) -> PairOccupations:
         entry = self.entry
-        sampled = PairOccupations(entry.label, Fraction(entry.filling), entry.statistics, m, samples)
+        sampled = PairOccupations(entry.label, Fraction(entry.filling), entry.statistics, m, samples, free_errors)
         return conjugate_occupations(sampled) if self.state["conjugate"] else sampled
 
     @property
@@ -120,11 +123,9 @@ def require_sampled_state(state: Mapping[str, Any]) -> None:
         )
 
 
-def _on_common_m(large: CatalogueRun, small: CatalogueRun) -> tuple[NDArray[np.int64], Array, Array]:
-    """m of both, and samples with c_m = 0 where one size has none."""
-    m = max((large.m, small.m), key=len)
-    samples = [np.pad(run.samples, ((0, 0), (0, len(m) - len(run.m)))) for run in (large, small)]
-    return m, samples[0], samples[1]
+def _padded(values: Array, n_m: int) -> Array:
+    """With zeros for the m that one size has not: c_m = 0 is no correlation."""
+    return np.pad(values, [(0, 0)] * (values.ndim - 1) + [(0, n_m - values.shape[-1])])
 
 
 def _origin(run: CatalogueRun) -> dict[str, Any]:

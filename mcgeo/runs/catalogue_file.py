@@ -1,7 +1,7 @@
 """The shipped catalogue: occupations of common liquids at two sizes, in one HDF5 file inside the package.
 
 One group per liquid, named as in ``state.catalogue`` with ``_`` for ``/``; in it the groups ``large`` and ``small``,
-one per size, each with the datasets ``m``, ``samples`` (c_m), ``q``, ``S``, ``S_error`` and where they come from.
+one per size, each with the datasets ``m``, ``samples`` (c_m), ``free_errors``, ``q``, ``S``, ``S_error`` and where they come from.
 ``scripts/make_catalogue.py`` makes the file.
 """
 
@@ -22,6 +22,7 @@ from mcgeo.estimate.statistics import JACKKNIFE_GROUPS
 from mcgeo.estimate.structure_factor import Curve
 from mcgeo.runs.checked_hdf5 import Unexpected, array, dataset, member, require_names, text
 from mcgeo.runs.result_layout import FLOAT, INTEGER
+from mcgeo.runs.state_config import CATALOGUE_NAMES
 from mcgeo.runs.storage import opened_file, written_file
 
 Array = NDArray[np.float64]
@@ -54,6 +55,8 @@ class CatalogueRun:
     m : ndarray of int64, shape (n_m,)
     samples : ndarray, shape (62, n_m)
         Independent samples of c_m.
+    free_errors : ndarray, shape (n_m,)
+        As in `mcgeo.estimate.occupations.PairOccupations`.
     structure : Curve
         S(q) over waves of equal length, in the liquid's own metric.
     """
@@ -64,6 +67,7 @@ class CatalogueRun:
     diagnostics: Mapping[str, Any]
     m: NDArray[np.int64]
     samples: Array
+    free_errors: Array
     structure: Curve
 
     @property
@@ -119,7 +123,8 @@ def _write_run(place: Any, run: CatalogueRun) -> None:
     _write_text(place, "diagnostics", json.dumps(run.diagnostics))
     place.create_dataset("m", data=run.m, dtype=INTEGER)
     curve = run.structure
-    for key, values in (("samples", run.samples), ("q", curve.x), ("S", curve.value), ("S_error", curve.error)):
+    arrays = {"samples": run.samples, "free_errors": run.free_errors, "q": curve.x, "S": curve.value}
+    for key, values in {**arrays, "S_error": curve.error}.items():
         place.create_dataset(key, data=values, dtype=FLOAT)
 
 
@@ -147,6 +152,18 @@ def read_entry(name: str, path: Path | None = None) -> CatalogueEntry:
         return CatalogueEntry(label, filling, statistics, large, small)
 
 
+def held_names(path: Path) -> list[str]:
+    """Which of the catalogue's names a file has entries of.
+
+    Raises
+    ------
+    StorageError
+        If the file is missing, damaged or of another format.
+    """
+    with opened_file(path, FORMAT) as file:
+        return [name for name in CATALOGUE_NAMES if group_name(name) in file]
+
+
 def _run(place: Any) -> CatalogueRun:
     m = array(place, "m", (_length(place, "m", _MOST_M),), INTEGER)
     n_waves = _length(place, "q", _MOST_WAVES)
@@ -158,6 +175,7 @@ def _run(place: Any) -> CatalogueRun:
         json.loads(text(place, "diagnostics", _LONGEST_TEXT)),
         m,
         array(place, "samples", (N_SAMPLES, len(m)), FLOAT),
+        array(place, "free_errors", (len(m),), FLOAT),
         Curve(x, value, error),
     )
 
