@@ -59,7 +59,7 @@ class Plan(NamedTuple):
 
 def _laughlin(exponent: int, seed: int, equilibration: int = 500) -> Plan:
     state = {"kind": "laughlin", "exponent": exponent}
-    return Plan(state, Size(100, 20_000, equilibration), Size(50, 32_000, equilibration), seed)
+    return Plan(state, Size(100, 10_000, equilibration), Size(50, 12_000, equilibration), seed)
 
 
 def _moore_read(filling: str, seed: int) -> Plan:
@@ -70,7 +70,7 @@ def _moore_read(filling: str, seed: int) -> Plan:
 def _sea(filling: str, seed: int) -> Plan:
     # Closed shells of the hexagonal cell; the energy depends on which shell is the last.
     state = {"kind": "fermi_sea", "filling": filling}
-    return Plan(state, Size(61, 400, 100), Size(37, 640, 100), seed)
+    return Plan(state, Size(61, 240, 100), Size(37, 640, 100), seed)
 
 
 PLANS: dict[str, Plan] = {

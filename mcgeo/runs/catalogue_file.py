@@ -1,8 +1,8 @@
 """The shipped catalogue: occupations of common liquids at two sizes, in one HDF5 file inside the package.
 
 One group per liquid, named as in ``state.catalogue`` with ``_`` for ``/``; in it the groups ``large`` and ``small``,
-one per size, each with the datasets ``m``, ``samples`` (c_m), ``free_errors``, ``q``, ``S``, ``S_error`` and where they come from.
-``scripts/make_catalogue.py`` makes the file.
+one per size, each with the datasets ``m``, ``samples`` (c_m), ``free_errors``, ``q``, ``S``, ``S_error`` and where they
+come from. ``scripts/make_catalogue.py`` makes the file.
 """
 
 from __future__ import annotations
