@@ -36,16 +36,16 @@ from mcgeo.runs.storage import as_liquid
 from mcgeo.variational.energy_surface import EnergySurface
 
 SHIPPED = Path(mcgeo.__file__).parent / "runs" / "catalogue.h5"
-_BLOCKS = 8
 _LARGEST_Q = 6.0
 
 
 class Size(NamedTuple):
-    """Electrons, production and equilibration of one sampling."""
+    """Electrons, production and equilibration of one sampling, and the blocks that its production is cut into."""
 
     electrons: int
     sweeps: int
     equilibration: int
+    blocks: int = 8
 
 
 class Plan(NamedTuple):
@@ -57,9 +57,9 @@ class Plan(NamedTuple):
     seed: int
 
 
-def _laughlin(exponent: int, seed: int, equilibration: int = 500) -> Plan:
+def _laughlin(exponent: int, seed: int, sweeps: tuple[int, int], equilibration: int = 500) -> Plan:
     state = {"kind": "laughlin", "exponent": exponent}
-    return Plan(state, Size(100, 10_000, equilibration), Size(50, 12_000, equilibration), seed)
+    return Plan(state, Size(100, sweeps[0], equilibration), Size(50, sweeps[1], equilibration), seed)
 
 
 def _moore_read(filling: str, seed: int) -> Plan:
@@ -67,23 +67,23 @@ def _moore_read(filling: str, seed: int) -> Plan:
     return Plan(state, Size(60, 2000, 160), Size(30, 3200, 160), seed)
 
 
-def _sea(filling: str, seed: int) -> Plan:
+def _sea(filling: str, seed: int, equilibration: int) -> Plan:
     # Closed shells of the hexagonal cell; the energy depends on which shell is the last.
     state = {"kind": "fermi_sea", "filling": filling}
-    return Plan(state, Size(61, 240, 100), Size(37, 640, 100), seed)
+    return Plan(state, Size(61, 240, equilibration), Size(37, 640, 100), seed)
 
 
 PLANS: dict[str, Plan] = {
-    "laughlin-1": _laughlin(1, 2026_11),
-    "laughlin-1/3": _laughlin(3, 2026_13),
-    "laughlin-1/5": _laughlin(5, 2026_15),
-    "laughlin-1/7": _laughlin(7, 2026_17, equilibration=1000),
-    "laughlin-1/2": _laughlin(2, 2026_21),
-    "laughlin-1/4": _laughlin(4, 2026_23),
+    "laughlin-1": _laughlin(1, 2026_11, (20_000, 32_000)),
+    "laughlin-1/3": _laughlin(3, 2026_13, (20_000, 32_000)),
+    "laughlin-1/5": _laughlin(5, 2026_15, (10_000, 12_000)),
+    "laughlin-1/7": _laughlin(7, 2026_17, (10_000, 12_000), equilibration=1000),
+    "laughlin-1/2": _laughlin(2, 2026_21, (10_000, 12_000)),
+    "laughlin-1/4": _laughlin(4, 2026_23, (10_000, 12_000)),
     "moore_read-1/2": _moore_read("1/2", 2026_31),
     "moore_read-1": _moore_read("1", 2026_33),
-    "fermi_sea-1/2": _sea("1/2", 2026_41),
-    "fermi_sea-1/4": _sea("1/4", 2026_43),
+    "fermi_sea-1/2": _sea("1/2", 2026_41, 100),
+    "fermi_sea-1/4": _sea("1/4", 2026_43, 40),
 }
 
 # Coulomb energy per particle of the infinite liquid in level 0, and its uncertainty.
@@ -121,7 +121,7 @@ def sampled_size(state: Mapping[str, Any], size: Size, seed: int, folder: Path, 
         "state": {**state, "electrons": size.electrons},
         "sampling": {
             "walkers": N_SAMPLES,
-            "blocks": _BLOCKS,
+            "blocks": size.blocks,
             "sweeps": size.sweeps,
             "equilibration": size.equilibration,
             "seed": seed,

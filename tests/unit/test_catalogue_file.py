@@ -119,7 +119,8 @@ def test_names_plans_and_file_agree() -> None:
             assert run.resolved["state"].items() >= plan.state.items()
             wanted = getattr(plan, size)
             sampling = run.resolved["sampling"]
-            assert (run.n_electrons, sampling["sweeps"], sampling["equilibration"]) == wanted
+            lengths = (sampling[key] for key in ("sweeps", "equilibration", "blocks"))
+            assert (run.n_electrons, *lengths) == wanted
             assert sampling["seed"] == plan.seed + (size == "large")
 
 
