@@ -77,7 +77,7 @@ PLANS: dict[str, Plan] = {
     "laughlin-1": _laughlin(1, 2026_11, (20_000, 32_000)),
     "laughlin-1/3": _laughlin(3, 2026_13, (20_000, 32_000)),
     "laughlin-1/5": _laughlin(5, 2026_15, (10_000, 12_000)),
-    "laughlin-1/7": _laughlin(7, 2026_17, (10_000, 12_000), equilibration=1000),
+    "laughlin-1/7": _laughlin(7, 2026_17, (20_000, 32_000), equilibration=1000),
     "laughlin-1/2": _laughlin(2, 2026_21, (10_000, 12_000)),
     "laughlin-1/4": _laughlin(4, 2026_23, (10_000, 12_000)),
     "moore_read-1/2": _moore_read("1/2", 2026_31),
