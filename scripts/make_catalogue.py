@@ -1,6 +1,6 @@
 """Make the catalogue of liquids that is shipped inside the package, or parts of it anew.
 
-    python scripts/make_catalogue.py                          all liquids, about an hour of one core
+    python scripts/make_catalogue.py                          all liquids, about 20 minutes of one core
     python scripts/make_catalogue.py --only fermi_sea-1/2     this one; the others are kept as they are
     python scripts/make_catalogue.py --quick --out small.h5   tiny systems, to see that everything works
 
@@ -49,7 +49,7 @@ class Size(NamedTuple):
 
 
 class Plan(NamedTuple):
-    """Keys of the state, the two sizes, and the seed of the larger; the smaller takes the next one."""
+    """Keys of the state, the two sizes, and the seed of the smaller; the larger takes the next one."""
 
     state: Mapping[str, Any]
     large: Size
@@ -67,10 +67,9 @@ def _moore_read(filling: str, seed: int) -> Plan:
     return Plan(state, Size(60, 2000, 160), Size(30, 3200, 160), seed)
 
 
-def _sea(filling: str, seed: int, equilibration: int) -> Plan:
+def _sea(filling: str, seed: int, large: Size, small: Size) -> Plan:
     # Closed shells of the hexagonal cell; the energy depends on which shell is the last.
-    state = {"kind": "fermi_sea", "filling": filling}
-    return Plan(state, Size(61, 240, equilibration), Size(37, 640, 100), seed)
+    return Plan({"kind": "fermi_sea", "filling": filling}, large, small, seed)
 
 
 PLANS: dict[str, Plan] = {
@@ -82,8 +81,8 @@ PLANS: dict[str, Plan] = {
     "laughlin-1/4": _laughlin(4, 2026_23, (10_000, 12_000)),
     "moore_read-1/2": _moore_read("1/2", 2026_31),
     "moore_read-1": _moore_read("1", 2026_33),
-    "fermi_sea-1/2": _sea("1/2", 2026_41, 100),
-    "fermi_sea-1/4": _sea("1/4", 2026_43, 40),
+    "fermi_sea-1/2": _sea("1/2", 2026_41, Size(61, 240, 100), Size(37, 640, 100)),
+    "fermi_sea-1/4": _sea("1/4", 2026_42, Size(37, 640, 100), Size(19, 320, 40)),
 }
 
 # Coulomb energy per particle of the infinite liquid in level 0, and its uncertainty.

@@ -98,8 +98,9 @@ def test_size_of_the_systems_is_in_the_errors(name: str) -> None:
     liquid = liquid_of(name)
     kinds = (liquid.occupations, liquid.statistical_occupations, other_size)
     whole, part, there = (optimum(occupations, PROBLEM).minimum for occupations in kinds)
-    # The stiffness' own error is that at one metric, while the two sizes have theirs at their own optima.
-    for quantity, tolerance in (("energy", 0.01), ("stretch", 0.01), ("gain_isotropic", 0.02), ("stiffness_along", 0.2)):
+    # The error of a stiffness is that at one metric; the sizes have theirs at their own optima.
+    tolerances = {"energy": 0.01, "stretch": 0.01, "gain_isotropic": 0.02, "stiffness_along": 0.2}
+    for quantity, tolerance in tolerances.items():
         found, noise, deviating = (getattr(minimum, quantity) for minimum in (whole, part, there))
         assert found.value == pytest.approx(noise.value, abs=1e-9)
         assert found.error == pytest.approx(math.hypot(noise.error, noise.value - deviating.value), rel=tolerance)
