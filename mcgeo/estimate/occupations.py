@@ -115,8 +115,8 @@ class PairOccupations:
 def largest_m(state: TrialState) -> int:
     """Largest relative angular momentum fitted.
 
-    45, or 15/nu at low filling, where the correlations reach farther, or 3/nu^2 near the crystal (at 1/7 an end at 15/nu
-    raises the energy by 6e-6); but no pair distance 2 sqrt(m) beyond about 1.4 times what folding in the cell
+    45, or 15/nu at low filling, where the correlations reach farther, or 3/nu^2 near the crystal (at 1/7 an end at
+    15/nu raises the energy by 6e-6); but no pair distance 2 sqrt(m) beyond about 1.4 times what folding in the cell
     resolves: there the sum rules and the penalty decide.
     """
     start = state.first_occupied
@@ -219,19 +219,27 @@ def _bounds_in_force(
 def _linear_solution(
     basis: Array, weight: Array, rules: Array, values: Array, penalty: Array, pinned: NDArray[np.bool_]
 ) -> tuple[Array, Array]:
-    """c = response @ (S - offset) + constant with c_m = -1 where pinned and the rules exact (Lagrange multipliers)."""
+    """c = response @ (S - offset) + constant with c_m = -1 where pinned and the rules exact.
+
+    By orthogonal factors in the null space of the rules: normal equations would square the condition of a matrix that
+    spans many decades, and leave the rules wrong by 1e-7 where S(q) is known to 1e-6.
+    """
     free = ~pinned
-    x, c = basis[:, free], rules[:, free]
-    n_free, n_rules = int(free.sum()), len(values)
-    normal = (x * weight[:, None] ** 2).T @ x + np.diag(penalty[free] ** 2)
-    system = np.block([[normal, c.T], [c, np.zeros((n_rules, n_rules))]])
-    # Scaling by the diagonal keeps the system well conditioned: the normal matrix spans many decades.
-    scale = np.concatenate([1.0 / np.sqrt(np.diag(normal)), np.ones(n_rules)])
-    inverse = np.linalg.inv(system * scale[:, None] * scale) * scale[:, None] * scale
-    on_data = inverse[:n_free, :n_free] @ (x * weight[:, None] ** 2).T
-    fixed = -basis[:, pinned].sum(axis=1)
-    response = np.zeros((len(pinned), len(weight)))
+    n_waves = len(weight)
+    design = np.concatenate([basis[:, free] * weight[:, None], np.diag(penalty[free])])
+    scale = 1.0 / np.linalg.norm(design, axis=0)
+    design = design * scale
+    obeyed = rules[:, free] * scale
+    factors, triangle = np.linalg.qr(obeyed.T, mode="complete")
+    n_rules = len(values)
+    along, null = factors[:, :n_rules], factors[:, n_rules:]
+    start = along @ np.linalg.solve(triangle[:n_rules].T, values + rules[:, pinned].sum(axis=1))
+    orthogonal, upper = np.linalg.qr(design @ null)
+    solve = null @ np.linalg.solve(upper, orthogonal.T)
+    on_data = scale[:, None] * solve[:, :n_waves] * weight
+    response = np.zeros((len(pinned), n_waves))
     response[free] = on_data
     constant = np.where(pinned, -1.0, 0.0)
-    constant[free] = inverse[:n_free, n_free:] @ (values + rules[:, pinned].sum(axis=1)) - on_data @ fixed
+    fixed = -basis[:, pinned].sum(axis=1)
+    constant[free] = scale * (start - solve @ (design @ start)) - on_data @ fixed
     return response, constant
