@@ -24,6 +24,7 @@ VERDICT_WORDS = {
 # A minimum this close, in flat coordinates, lies on the line of the curve.
 _ON_LINE = 0.02
 _LEAST_TICKS = 4
+_LEAST_TICK_DISTANCE = 0.115
 _RATIO_LADDERS = (
     (1.0, 2.0, 4.0, 8.0, 16.0, 32.0),
     (1.0, 1.5, 2.0, 3.0, 4.0, 6.0, 8.0, 12.0),
@@ -124,7 +125,7 @@ def _mark_minimum(axes: Axes, stretch: Array, minimum: Minimum, angle_degrees: f
     if on_line:
         stiffness = _stiffness_along(minimum, direction)
         parabola = minimum.energy.value + 0.5 * stiffness.value * (stretch - position) ** 2
-        label = f"stiffness $K={value_with_error(stiffness)}$ {ENERGY_UNIT}"
+        label = f"stiffness $K={value_with_error(stiffness)}$"
         axes.plot(stretch, parabola, color=VERMILION, linewidth=0.9, linestyle="--", label=label)
 
 
@@ -143,8 +144,13 @@ def _aspect_ratio_axis(axes: Axes) -> None:
         ticks = {q: words for q, words in sorted(ratios.items()) if low <= q <= high}
         if len(ticks) >= _LEAST_TICKS:
             break
+    # Ticks nearest to the circle first; those that would run into one already there are left out.
+    kept: dict[float, str] = {}
+    for q in sorted(ticks, key=abs):
+        if all(abs(q - other) > _LEAST_TICK_DISTANCE * (high - low) for other in kept):
+            kept[q] = ticks[q]
     top = axes.secondary_xaxis("top")
-    top.set_xticks(list(ticks), labels=list(ticks.values()))
+    top.set_xticks(list(kept), labels=list(kept.values()))
     top.set_xlabel("aspect ratio $e^Q$")
 
 
@@ -158,6 +164,7 @@ def _findings(minimum: Minimum | None, verdict: str) -> str:
     return (
         f"{words}\n"
         f"$Q^*={value_with_error(minimum.stretch)}$ (ratio {value_with_error(minimum.aspect_ratio)}){angle}\n"
-        f"gain on isotropic hole {value_with_error(minimum.gain_isotropic)} {ENERGY_UNIT}\n"
-        f"gain on hole shaped as the mass {value_with_error(minimum.gain_mass)} {ENERGY_UNIT}"
+        f"gain on isotropic hole {value_with_error(minimum.gain_isotropic)}\n"
+        f"gain on hole shaped as the mass {value_with_error(minimum.gain_mass)}\n"
+        f"gains and stiffness in {ENERGY_UNIT} per electron"
     )

@@ -208,7 +208,9 @@ def test_configurations_that_come_with_the_program_are_valid(mcgeo: Command, pat
     answer = mcgeo("check", str(path), "--json")
     assert answer.code == 0 and answer.err == ""
     plan = json.loads(answer.out)
-    assert plan.get("electrons", plan.get("points")) > 1 and plan["estimated_seconds"] > 0.0
+    assert plan.get("electrons", plan.get("points")) > 1
+    # A liquid of the catalogue costs a few hundredths of a second.
+    assert plan["estimated_seconds"] > 0.0 or "catalogue" in plan
     assert list(Path().iterdir()) == []
 
 
