@@ -68,7 +68,7 @@ def _same_blocks(keys: Mapping[str, Any], earlier: Sampled) -> bool:
 
 
 def continued(path: Path, keys: Keys, earlier: Sampled) -> Keys:
-    """Keys of the run that the file and the configuration make together: the seed drawn, and the longer of two lengths.
+    """Keys of the run, from file and configuration: the seed that was drawn, and the longer of the two lengths.
 
     Raises
     ------

@@ -13,6 +13,8 @@ import numpy as np
 import pytest
 
 from mcgeo.cli import main
+from mcgeo.runs import production
+from mcgeo.sampling.blocks import Interrupted
 
 ROOT = Path(__file__).parents[2]
 
@@ -34,6 +36,19 @@ problem:
 scan:
   stretch: {from: 0.0, to: 0.5, points: 6}
 """
+
+
+def interrupted_after(monkeypatch: pytest.MonkeyPatch, n_blocks: int) -> None:
+    """Have the run stopped, as by a signal, when this many more blocks are done."""
+    advance, left = production.next_block, [n_blocks]
+
+    def next_block(*arguments):
+        if left[0] == 0:
+            raise Interrupted
+        left[0] -= 1
+        return advance(*arguments)
+
+    monkeypatch.setattr(production, "next_block", next_block)
 
 
 class Answer:

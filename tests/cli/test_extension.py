@@ -8,9 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from mcgeo.runs import production
-from mcgeo.sampling.blocks import Interrupted
-from tests.cli.conftest import SMALL, Answer, contents
+from tests.cli.conftest import SMALL, Answer, contents, interrupted_after
 
 Command = Callable[..., Answer]
 
@@ -23,19 +21,6 @@ LIQUIDS = {
     # Rounded up to whole measurements: blocks of 58 asked for, 60 made.
     "rounded": SMALL.replace("sweeps: 480", "sweeps: 460"),
 }
-
-
-def interrupted_after(monkeypatch: pytest.MonkeyPatch, n_blocks: int) -> None:
-    """Have the run stopped, as by a signal, when this many more blocks are done."""
-    advance, left = production.next_block, [n_blocks]
-
-    def next_block(*arguments):
-        if left[0] == 0:
-            raise Interrupted
-        left[0] -= 1
-        return advance(*arguments)
-
-    monkeypatch.setattr(production, "next_block", next_block)
 
 
 @pytest.mark.parametrize("liquid", LIQUIDS)

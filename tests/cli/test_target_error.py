@@ -10,12 +10,10 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from mcgeo.runs import production
 from mcgeo.runs.ending import Ending, Target
 from mcgeo.runs.sampled import Blocks, Sampled
 from mcgeo.runs.storage import read_result
-from mcgeo.sampling.blocks import Interrupted
-from tests.cli.conftest import SMALL, Answer, contents
+from tests.cli.conftest import SMALL, Answer, contents, interrupted_after
 
 Command = Callable[..., Answer]
 
@@ -87,23 +85,10 @@ def test_ends_at_the_first_look_at_which_the_error_is_small_enough(mcgeo: Comman
         assert {name for name in open_end if open_end[name] != fixed_end[name]} == {"config"}
 
 
-def stopped_after(patch: pytest.MonkeyPatch, n_blocks: int) -> None:
-    """Have a run stopped, as by a signal, when it has made this many more blocks."""
-    advance, left = production.next_block, [n_blocks]
-
-    def next_block(*arguments):
-        if left[0] == 0:
-            raise Interrupted
-        left[0] -= 1
-        return advance(*arguments)
-
-    patch.setattr(production, "next_block", next_block)
-
-
 def run_in_pieces(mcgeo: Command, monkeypatch: pytest.MonkeyPatch, pieces: list[int], folder: str) -> None:
     for n_blocks in pieces:
         with monkeypatch.context() as patch:
-            stopped_after(patch, n_blocks)
+            interrupted_after(patch, n_blocks)
             assert mcgeo("sample", "run.yaml", "--out", folder).code == 130
     assert mcgeo("sample", "run.yaml", "--out", folder).code == 0
 
